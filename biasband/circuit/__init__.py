@@ -1,0 +1,1 @@
+"""The circuit: junction laws, bias network, operating point, signal. Arrays in, frozen records out."""

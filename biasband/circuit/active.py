@@ -1,0 +1,110 @@
+"""The active region: one equation in the forward current, solved in a few cheap passes.
+
+With the reverse junction off, both port equations fold into one equation in F = I_S·e^{VBE/VT},
+which is nearly linear in F (the logarithm is small beside the drive), so that Newton's method on F
+converges at once. What does not fit, a scenario near saturation or cut-off, is left to the full
+equations.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from biasband.circuit.junction import Laws
+from biasband.circuit.network import Ports
+from biasband.circuit.scenarios import Array, Values
+
+RESIDUAL = 1e-9
+"""[V] Both port equations hold to this where a scenario is solved."""
+
+_REVERSE_OFF = -20.0
+"""V_BC in units of V_T below which the reverse current, under 2e-9 of I_S, is nothing."""
+
+FIRST_STEPS = 2
+"""Newton steps that a start from nothing needs."""
+
+
+@dataclass(frozen=True)
+class Bias:
+    """Junction voltages [V] and terminal currents [A] of a chunk, and where they solve it."""
+
+    V_BE: Array
+    V_BC: Array
+    I_B: Array
+    I_C: Array
+    solved: NDArray[np.bool_]
+
+    @property
+    def power(self) -> Array:
+        """V_CE·I_C + V_BE·I_B [W]."""
+        return (self.V_BE - self.V_BC) * self.I_C + self.V_BE * self.I_B
+
+
+@dataclass(frozen=True)
+class _Line:
+    """The active region as one equation, `V_BE(F) + z_base·F + z12·G(F) − drive = 0`.
+
+    G = F·(early + creep·F)/(1 − lean·F) is the collector's share of F with the Early effect, its
+    V_BC already eliminated; beside F/β and G the base gives back, and the collector takes, a
+    constant current of leakage.
+    """
+
+    drive: Values
+    base_share: Values
+    z_base: Values
+    early: Values
+    creep: Values
+    lean: Values
+    base_constant: Values
+    collector_constant: Values
+
+
+def _fold(ports: Ports, law: Laws) -> _Line:
+    base_share = 1.0 / law.forward_gain
+    collector_constant = law.saturation_current * law.inverse_reverse_gain + law.leakage
+    base_constant = law.saturation_current * base_share + collector_constant
+    quiet_bc = ports.open_bc + ports.z21 * base_constant - ports.z22 * collector_constant
+    return _Line(
+        drive=ports.open_be + ports.z11 * base_constant - ports.z12 * collector_constant,
+        base_share=base_share,
+        z_base=ports.z11 * base_share,
+        early=1.0 - quiet_bc * law.inverse_early,
+        creep=ports.z21 * base_share * law.inverse_early,
+        lean=ports.z22 * law.inverse_early,
+        base_constant=base_constant,
+        collector_constant=collector_constant,
+    )
+
+
+def _first_forward(ports: Ports, law: Laws, line: _Line) -> Array:
+    """A forward current [A] to start from: V_BE as at the test point, the Early effect half known."""
+    drive = np.maximum(line.drive - law.reference_voltage, law.thermal_voltage)
+    F = drive / (line.z_base + ports.z12)
+    return drive / (line.z_base + ports.z12 * (line.early / (1.0 - line.lean * F)))
+
+
+def active_region(
+    ports: Ports, law: Laws, forward: Array | None = None, *, steps: int = FIRST_STEPS
+) -> tuple[Bias, Array]:
+    """Solve a chunk as if active, from a forward current [A] if given; also the one found.
+
+    `solved` is False where the equation does not hold to 1e-9 V or the reverse junction matters.
+    """
+    line, V_T = _fold(ports, law), law.thermal_voltage
+    F = _first_forward(ports, law, line) if forward is None else forward
+    for step in range(steps + 1):
+        V_BE = law.reference_voltage + V_T * np.log(F / law.reference_current)
+        base, creep, room = line.z_base * F, line.creep * F, 1.0 - line.lean * F
+        G = F * (line.early + creep) / room
+        residual = V_BE + base + ports.z12 * G - line.drive
+        if step < steps:
+            # F times the slope: dG/dF·F is exactly (G + creep·F²)/room.
+            slope = V_T + base + ports.z12 * ((G + creep * F) / room)
+            F = F * np.maximum(1.0 - residual / slope, 0.1)
+    I_B, I_C = F * line.base_share - line.base_constant, G + line.collector_constant
+    V_BC = ports.open_bc - ports.z21 * I_B - ports.z22 * I_C
+    solved = (np.abs(residual) < RESIDUAL) & (V_BC < _REVERSE_OFF * V_T)
+    return Bias(V_BE, V_BC, I_B, I_C, solved), F

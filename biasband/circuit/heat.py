@@ -1,0 +1,180 @@
+"""Self-heating: the junction temperature as part of the solve, and thermal runaway as a status.
+
+T_j is the lowest fixed point of `T_j = T_a + R_θJA·P(T_j)` at or above ambient. Runaway is: no
+fixed point below 250 °C, or a thermal loop gain G = R_θJA·dP/dT_j of one or more anywhere between
+ambient and it.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from biasband.circuit.active import Bias, active_region
+from biasband.circuit.junction import Laws, flow_drift
+from biasband.circuit.network import Ports
+from biasband.circuit.scenarios import Array, Scenarios, Values
+from biasband.circuit.solution import Problem, Status, Trial, isothermal, merged, tangent
+from biasband.constants import HOTTEST_JUNCTION
+from biasband.stage import Transistor
+
+_SECANT_STEPS = 4
+_WARM_STEPS = 1
+
+SETTLED = 1e-6
+"""[K] A junction temperature that moves less than this is settled."""
+
+_SUSPICIOUS_GAIN = 0.25
+"""A loop gain from which the way between ambient and T_j is looked at point by point."""
+
+_NEGLIGIBLE_RISE = 1e-3
+"""[K] A rise below which an average loop gain says nothing."""
+
+_TELLING_MOVE = 1e-4
+"""[K] A move from which a slope can be told from rounding."""
+
+_CLIMB_POINTS = 64
+_BISECTIONS = 32
+
+
+def power_slope(ports: Ports, law: Laws, bias: Bias) -> Array:
+    """dP/dT_j [W/K] at a solved bias, resistors held: the circuit answers with both voltages.
+
+    From the port equations `J·dv + Z·∂i/∂T·dT = 0` and P = V_CE·I_C + V_BE·I_B.
+    """
+    V_BE, V_CE = bias.V_BE, bias.V_BE - bias.V_BC
+    here = tangent(ports, law, V_BE, bias.V_BC)
+    at, drift = here.flow, flow_drift(law, here.flow, V_BE, bias.V_BC)
+    push_be, push_bc = here.solve(
+        ports.z11 * drift.base + ports.z12 * drift.collector,
+        ports.z21 * drift.base + ports.z22 * drift.collector,
+    )
+    power_be = at.collector + at.base + V_CE * at.collector_be + V_BE * at.base_be
+    power_bc = V_CE * at.collector_bc + V_BE * at.base_bc - at.collector
+    return V_CE * drift.collector + V_BE * drift.base - power_be * push_be - power_bc * push_bc
+
+
+@dataclass(frozen=True)
+class Heated:
+    """A bias with its junction temperature [K], and what the way there says about the loop gain.
+
+    `first_rise` is R_θ·P at ambient [K], `gain_cold` and `gain_hot` are G near ambient and near
+    T_j; `settled` is True where ports and temperature both hold.
+    """
+
+    bias: Bias
+    ambient: Values
+    T_j: Array
+    first_rise: Array
+    gain_cold: Array
+    gain_hot: Array
+    settled: NDArray[np.bool_]
+
+    @property
+    def doubtful(self) -> NDArray[np.bool_]:
+        """Where runaway cannot be ruled out by G at both ends and on average between them.
+
+        The average of G over [T_a, T_j] is exactly `1 − R_θ·P(T_a)/(T_j − T_a)`; a G that falls on
+        the way up betrays a stage that ran into saturation.
+        """
+        rise = self.T_j - self.ambient
+        mean = (rise - self.first_rise) / np.maximum(rise, _NEGLIGIBLE_RISE)
+        worst = np.maximum(np.maximum(self.gain_cold, self.gain_hot), mean)
+        falls = self.gain_cold > self.gain_hot + _SUSPICIOUS_GAIN
+        return ~self.settled | (worst > _SUSPICIOUS_GAIN) | falls
+
+
+def settle(ports: Ports, transistor: Transistor, part: Scenarios) -> Trial:
+    """Solve a chunk with its self-heating; without a thermal resistance T_j is the ambient."""
+    problem = Problem.of(ports, transistor, part)
+    if not transistor.thermal_resistance:
+        bias = isothermal(problem, problem.ambient)
+        status = np.where(bias.solved, np.int8(Status.SOLVED), np.int8(Status.UNSOLVED))
+        return Trial.of(ports, bias, T_j=problem.ambient, status=status)
+    heated = _quickly(problem, transistor.thermal_resistance)
+    status = np.full(heated.T_j.shape, Status.SOLVED, dtype=np.int8)
+    doubtful = heated.doubtful
+    if doubtful.any():
+        top = np.where(heated.settled, heated.T_j, HOTTEST_JUNCTION)[doubtful]
+        found = _climb(problem.part(doubtful), transistor.thermal_resistance, top)
+        merged(heated.bias, doubtful, found.bias)
+        heated.T_j[doubtful], status[doubtful] = found.T_j, found.status
+    return Trial.of(ports, heated.bias, T_j=heated.T_j, status=status)
+
+
+def _quickly(problem: Problem, R: float) -> Heated:
+    """Secant steps on T_j − T_a − R_θ·P(T_j) = 0, each solved as if active from the one before.
+
+    The first step is the plain one, T_a + R_θ·P(T_a); the next ones know the loop gain as the
+    slope between two temperatures.
+    """
+    T: Values = problem.ambient
+    bias, forward = active_region(problem.ports, problem.laws(T), steps=_WARM_STEPS)
+    first_rise = wanted = R * bias.power
+    gain = gain_cold = np.zeros_like(wanted)
+    for step in range(_SECANT_STEPS):
+        move = (problem.ambient + wanted - T) / (1.0 - gain)
+        T = T + move
+        bias, forward = active_region(problem.ports, problem.laws(T), forward, steps=_WARM_STEPS)
+        before, wanted = wanted, R * bias.power
+        told = np.abs(move) > _TELLING_MOVE
+        gain = np.where(told, (wanted - before) / np.where(told, move, 1.0), gain)
+        gain_cold = gain if step == 0 else gain_cold
+        settled = bias.solved & (np.abs(problem.ambient + wanted - T) < SETTLED * (1.0 - gain))
+        if settled.all():
+            break
+    settled = settled & (T < HOTTEST_JUNCTION)
+    return Heated(bias, problem.ambient, T, first_rise, gain_cold, gain, settled)
+
+
+@dataclass(frozen=True)
+class Found:
+    """What a climb found: the bias at T_j [K] and a status per scenario."""
+
+    bias: Bias
+    T_j: Array
+    status: NDArray[np.int8]
+
+
+def _climb(problem: Problem, R: float, top: Array) -> Found:
+    """Walk from ambient to `top` [K] (the fixed point, where known, else the hottest junction).
+
+    RUNAWAY where G reaches one at or before the first fixed point, or where there is none;
+    UNSOLVED where the junctions could not be solved on the way.
+    """
+    start = problem.ambient + np.zeros_like(top)
+    low, high, worst = start.copy(), top.copy(), np.full(top.shape, -np.inf)
+    arrived, lost = np.zeros(top.shape, dtype=bool), np.zeros(top.shape, dtype=bool)
+    for share in np.linspace(0.0, 1.0, _CLIMB_POINTS + 1):
+        T = start + (top - start) * share
+        gap, gain, solved = _gap(problem, R, T)
+        on_the_way = ~arrived
+        lost |= on_the_way & ~solved
+        worst[on_the_way] = np.fmax(worst, gain)[on_the_way]
+        arrived |= gap <= SETTLED
+        low[~arrived] = T[~arrived]
+        high[on_the_way & arrived] = T[on_the_way & arrived]
+    T_j = _bisect(problem, R, low, high)
+    bias = isothermal(problem, T_j)
+    status = np.full(top.shape, Status.SOLVED, dtype=np.int8)
+    status[~arrived | (worst >= 1.0)] = Status.RUNAWAY
+    status[lost | ~bias.solved] = Status.UNSOLVED
+    return Found(bias, T_j, status)
+
+
+def _bisect(problem: Problem, R: float, low: Array, high: Array) -> Array:
+    """The junction temperature [K] between `low`, from where it still rises, and `high`."""
+    for _ in range(_BISECTIONS):
+        middle = 0.5 * (low + high)
+        rises = _gap(problem, R, middle)[0] > 0.0
+        low, high = np.where(rises, middle, low), np.where(rises, high, middle)
+    return 0.5 * (low + high)
+
+
+def _gap(problem: Problem, R: float, T: Array) -> tuple[Array, Array, NDArray[np.bool_]]:
+    """How far [K] the junction wants to rise above T, the loop gain there, and where solved."""
+    bias = isothermal(problem, T)
+    gain = R * power_slope(problem.ports, problem.laws(T), bias)
+    return problem.ambient + R * bias.power - T, gain, bias.solved

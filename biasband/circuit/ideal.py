@@ -1,0 +1,43 @@
+"""The ideal transistor: constant V_BE, no Early effect, no leakage, closed form.
+
+So that textbook answers can be checked to the digit; it is in the library, not in the stage file.
+"""
+
+from __future__ import annotations
+
+import numpy as np
+
+from biasband.circuit.network import Ports
+from biasband.circuit.scenarios import Scenarios
+from biasband.circuit.solution import Status, Trial
+from biasband.circuit.topology import Node
+from biasband.constants import ASSUMED_SATURATION_VOLTAGE
+from biasband.stage import IdealTransistor
+
+
+def solve(ports: Ports, transistor: IdealTransistor, part: Scenarios) -> Trial:
+    """Solve a chunk in closed form.
+
+    Active: `I_B = (open_be − V_BE) / (z11 + β·z12)`, `I_C = β·I_B`; cut off (no current) where that
+    is negative. Saturated where V_CE would fall to V_CE(sat): both junction voltages are then
+    held and the currents follow from `i = Z⁻¹·(open − v)`.
+    Source: any text on electronic devices; "common practice".
+    """
+    held = transistor.saturation_voltage
+    V_sat = ASSUMED_SATURATION_VOLTAGE if held is None else held
+    beta = np.broadcast_to(np.asarray(part.gain, dtype=float), (len(part),))
+    V_BE = part.base_emitter_voltage + np.zeros_like(beta)
+    drive = np.maximum(ports.open_be - V_BE, 0.0)
+    I_B = drive / (ports.z11 + beta * ports.z12)
+    I_C = beta * I_B
+    V_BE = np.where(drive > 0.0, V_BE, ports.open_be)
+    V_BC = ports.open_bc - ports.z21 * I_B - ports.z22 * I_C
+    saturated = V_BE - V_BC <= V_sat
+    determinant = ports.z11 * ports.z22 - ports.z12 * ports.z21
+    over_be, over_bc = ports.open_be - V_BE, ports.open_bc - (V_BE - V_sat)
+    with np.errstate(divide="ignore", invalid="ignore"):
+        I_B = np.where(saturated, (ports.z22 * over_be - ports.z12 * over_bc) / determinant, I_B)
+        I_C = np.where(saturated, (ports.z11 * over_bc - ports.z21 * over_be) / determinant, I_C)
+    V_BC = np.where(saturated, V_BE - V_sat, V_BC)
+    status = np.full(beta.shape, Status.SOLVED, dtype=np.int8)
+    return Trial(V_BE, V_BC, ports.voltage(Node.EMITTER, I_B, I_C), I_B, I_C, part.temperature, status)

@@ -1,0 +1,179 @@
+"""The transistor's laws: Ebers–Moll in transport form, Early effect, leakage, temperature.
+
+Sources: Ebers & Moll, "Large-signal behavior of junction transistors", Proc. IRE 42 (1954);
+Gummel & Poon, "An integral charge control model of bipolar transistors", BSTJ 49 (1970), for the
+transport form and the Early factor; the temperature laws as the project's physics states them.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from biasband.circuit.scenarios import Values
+from biasband.constants import (
+    BAND_GAP,
+    BOLTZMANN,
+    ELEMENTARY_CHARGE,
+    REFERENCE_TEMPERATURE,
+    SATURATION_EXPONENT,
+)
+from biasband.stage import Transistor
+
+_VOLT_PER_KELVIN = BOLTZMANN / ELEMENTARY_CHARGE
+
+
+@dataclass(frozen=True)
+class Laws:
+    """The parameters of the junctions at one temperature per scenario, shape (N,) or numbers.
+
+    `reference_voltage` is V_BE [V] at `reference_current` [A], where the forward current I_S·e^{VBE/VT}
+    is that current. `thermal_voltage` V_T [V], `saturation_current` I_S [A], `forward_gain` β_F, `leakage` I_CBO [A];
+    `inverse_early` 1/V_A [1/V] (0: no Early effect), `inverse_reverse_gain` 1/β_R. The `…_slope`
+    fields are relative slopes against the junction temperature, d ln(x)/dT [1/K].
+    """
+
+    temperature: Values
+    reference_voltage: Values
+    reference_current: Values
+    thermal_voltage: Values
+    saturation_current: Values
+    forward_gain: Values
+    leakage: Values
+    inverse_early: float
+    inverse_reverse_gain: float
+    saturation_slope: Values
+    gain_slope: Values
+    leakage_slope: float
+
+
+@dataclass(frozen=True)
+class Flow:
+    """Terminal currents [A] and their slopes against V_BE and V_BC [S].
+
+    `forward` and `reverse` are I_S·e^{VBE/VT} and I_S·e^{VBC/VT} [A].
+    """
+
+    forward: Values
+    reverse: Values
+    base: Values
+    collector: Values
+    base_be: Values
+    base_bc: Values
+    collector_be: Values
+    collector_bc: Values
+
+
+def base_emitter_voltage(transistor: Transistor, at_25: Values, temperature: Values) -> Values:
+    """V_BE [V] at the test current and a junction temperature [K].
+
+    Linear, `vbe_25 + d·(T − T0)`; or the band-gap law,
+    `E_g·(1 − T/T0) + vbe_25·T/T0 − γ·V_T·ln(T/T0)`, whose slope at 0.60 V and 300 K is −1.96 mV/K.
+    """
+    if transistor.base_emitter_drift is not None:
+        return at_25 + transistor.base_emitter_drift * (temperature - REFERENCE_TEMPERATURE)
+    ratio = temperature / REFERENCE_TEMPERATURE
+    curvature = SATURATION_EXPONENT * _VOLT_PER_KELVIN * temperature * np.log(ratio)
+    return BAND_GAP * (1.0 - ratio) + at_25 * ratio - curvature
+
+
+def _base_emitter_slope(transistor: Transistor, at_25: Values, temperature: Values) -> Values:
+    """d vbe/dT [V/K] of the law above."""
+    if transistor.base_emitter_drift is not None:
+        return transistor.base_emitter_drift
+    ratio = temperature / REFERENCE_TEMPERATURE
+    curvature = SATURATION_EXPONENT * _VOLT_PER_KELVIN * (np.log(ratio) + 1.0)
+    return (at_25 - BAND_GAP) / REFERENCE_TEMPERATURE - curvature
+
+
+def laws(
+    transistor: Transistor,
+    *,
+    gain: Values,
+    base_emitter_at_25: Values,
+    leakage_at_25: Values,
+    temperature: Values,
+) -> Laws:
+    """The junction parameters at a junction temperature [K], from figures stated at 25 °C.
+
+    `I_S = I_test / early · exp(−vbe/V_T)`, `β_F = h_FE / early · (T/T0)^(g·T0)`,
+    `I_CBO = I_CBO25 · 2^((T − T0)/D)`, early = 1 + (V_CE,test − vbe_25)/V_A, so that the test
+    point is met with the Early effect too. Valid near the test current: the gain does not fall at
+    low or high current.
+    """
+    V_T = _VOLT_PER_KELVIN * temperature
+    vbe = base_emitter_voltage(transistor, base_emitter_at_25, temperature)
+    slope = _base_emitter_slope(transistor, base_emitter_at_25, temperature)
+    inverse_early = 0.0 if transistor.early_voltage is None else 1.0 / transistor.early_voltage
+    early = 1.0 + ((transistor.test_voltage or 0.0) - base_emitter_at_25) * inverse_early
+    reference_current = transistor.test_current / early
+    exponent = transistor.gain_drift * REFERENCE_TEMPERATURE
+    doublings = (temperature - REFERENCE_TEMPERATURE) / transistor.leakage_doubling
+    return Laws(
+        temperature=temperature,
+        reference_voltage=vbe,
+        reference_current=reference_current,
+        thermal_voltage=V_T,
+        saturation_current=reference_current * np.exp(-vbe / V_T),
+        forward_gain=gain / early * np.exp(exponent * np.log(temperature / REFERENCE_TEMPERATURE)),
+        leakage=leakage_at_25 * np.exp2(doublings),
+        inverse_early=inverse_early,
+        inverse_reverse_gain=1.0 / transistor.reverse_gain,
+        saturation_slope=(vbe / temperature - slope) / V_T,
+        gain_slope=exponent / temperature,
+        leakage_slope=float(np.log(2.0)) / transistor.leakage_doubling,
+    )
+
+
+def flow(law: Laws, V_BE: Values, V_BC: Values) -> Flow:
+    """Terminal currents [A] and their slopes at the junction voltages [V].
+
+        I_C = I_S·(e^{VBE/VT} − e^{VBC/VT})·(1 − VBC/V_A) − (I_S/β_R)·(e^{VBC/VT} − 1) + I_CBO
+        I_B = (I_S/β_F)·(e^{VBE/VT} − 1) + (I_S/β_R)·(e^{VBC/VT} − 1) − I_CBO
+
+    Source: Ebers & Moll 1954; Gummel & Poon 1970 (see the module).
+    """
+    per_volt = 1.0 / law.thermal_voltage
+    I_S = law.saturation_current
+    forward = I_S * np.exp(V_BE * per_volt)
+    reverse = I_S * np.exp(V_BC * per_volt)
+    transport = forward - reverse
+    early = 1.0 - V_BC * law.inverse_early
+    reverse_base = (reverse - I_S) * law.inverse_reverse_gain
+    g_reverse = reverse * per_volt
+    g_base = g_reverse * law.inverse_reverse_gain
+    return Flow(
+        forward=forward,
+        reverse=reverse,
+        base=(forward - I_S) / law.forward_gain + reverse_base - law.leakage,
+        collector=transport * early - reverse_base + law.leakage,
+        base_be=forward * per_volt / law.forward_gain,
+        base_bc=g_base,
+        collector_be=forward * per_volt * early,
+        collector_bc=-g_reverse * early - transport * law.inverse_early - g_base,
+    )
+
+
+@dataclass(frozen=True)
+class FlowDrift:
+    """How the terminal currents move with the junction temperature at fixed voltages [A/K]."""
+
+    base: Values
+    collector: Values
+
+
+def flow_drift(law: Laws, at: Flow, V_BE: Values, V_BC: Values) -> FlowDrift:
+    """∂I_B/∂T and ∂I_C/∂T [A/K] at fixed junction voltages, `at` the flow there."""
+    I_S, slope = law.saturation_current, law.saturation_slope
+    thermal = 1.0 / (law.thermal_voltage * law.temperature)
+    forward_T = at.forward * (slope - V_BE * thermal)
+    reverse_T = at.reverse * (slope - V_BC * thermal)
+    reverse_base_T = (reverse_T - I_S * slope) * law.inverse_reverse_gain
+    leakage_T = law.leakage * law.leakage_slope
+    base_T = (forward_T - I_S * slope - (at.forward - I_S) * law.gain_slope) / law.forward_gain
+    early = 1.0 - V_BC * law.inverse_early
+    return FlowDrift(
+        base=base_T + reverse_base_T - leakage_T,
+        collector=(forward_T - reverse_T) * early - reverse_base_T + leakage_T,
+    )

@@ -1,0 +1,166 @@
+"""The vocabulary: every quantity of a stage, its kind and how it is read.
+
+One row here is one more quantity for requirements, tables, JSON and the Python API. Node voltages
+are real, to the stage's ground; V_CE and the currents are positive in conduction.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterator, Mapping
+from dataclasses import dataclass
+
+import numpy as np
+
+from biasband.circuit import signal
+from biasband.circuit.network import sign, total
+from biasband.circuit.reading import Reading
+from biasband.circuit.scenarios import Array, Values
+from biasband.circuit.topology import Node
+from biasband.quantity import Kind
+
+
+@dataclass(frozen=True)
+class Quantity:
+    """A quantity: how it is read, shape (N,), and by how much ripple moves it either way.
+
+    `ripple` is the half-width [same unit] by which coupled ripple widens the value; zero but for
+    the output. `by_magnitude` says that a requirement is judged by the magnitude.
+    """
+
+    name: str
+    kind: Kind
+    read: Callable[[Reading], Values]
+    ripple: Callable[[Reading], Values] | None = None
+    by_magnitude: bool = False
+
+
+def _node_voltage(node: Node) -> Callable[[Reading], Values]:
+    def read(reading: Reading) -> Values:
+        if node in reading.wiring.ties:
+            return reading.real(reading.rails[reading.wiring.ties[node]])
+        point = reading.quiet if node is reading.wiring.output else reading.point
+        frame = {Node.BASE: point.base, Node.COLLECTOR: point.collector, Node.EMITTER: point.emitter}
+        return reading.real(frame[node])
+
+    return read
+
+
+def _output_ripple_at(node: Node) -> Callable[[Reading], Values]:
+    return lambda reading: reading.coupled_ripple if node is reading.wiring.output else 0.0
+
+
+def _supply_current(reading: Reading) -> Values:
+    """What the positive supply delivers: its wires, and a terminal tied to it."""
+    rail = Node.COLLECTOR_RAIL if reading.stage.polarity == "npn" else Node.EMITTER_RAIL
+    current: Values = 0.0
+    for wire in reading.wiring.wires:
+        if rail is wire.other:
+            current = current - reading.wire_current(wire)
+    point = reading.point
+    into = {Node.COLLECTOR: point.collector_current, Node.EMITTER: -(point.base_current + point.collector_current)}
+    for node, tied in reading.wiring.ties.items():
+        current = current + into[node] if tied is rail else current
+    return sign(reading.stage.polarity) * current
+
+
+def _output_conductance(reading: Reading) -> Values:
+    """Everything that loads the output at signal frequency [S]: its wires and the load."""
+    ohms, output = reading.scenarios.resistances, reading.wiring.output
+    wires = [wire for wire in reading.wiring.wires if output in (wire.node, wire.other)]
+    load = reading.stage.signal.load if reading.stage.signal else None
+    return sum((1.0 / total(wire, ohms) for wire in wires), start=0.0 if load is None else 1.0 / load)
+
+
+def _unbypassed(reading: Reading) -> Values:
+    """The emitter resistance [Ω] that the signal sees."""
+    wires = [wire for wire in reading.coupled.wiring.wires if wire.node is Node.EMITTER]
+    return sum((total(wire, reading.coupled.resistances) for wire in wires if "load" not in wire.parts), start=0.0)
+
+
+def _into_cut_off(reading: Reading) -> Values:
+    """Peak [V] the output can move while the transistor turns off, never beyond its rail."""
+    point, output = reading.quiet, reading.wiring.output
+    if output is Node.EMITTER:
+        swing = (point.base_current + point.collector_current) / _output_conductance(reading)
+        return np.minimum(swing, point.emitter - reading.quiet_rails[Node.EMITTER_RAIL])
+    swing = point.collector_current / _output_conductance(reading)
+    return np.minimum(swing, reading.quiet_rails[Node.COLLECTOR_RAIL] - point.collector)
+
+
+def _into_saturation(reading: Reading) -> Values:
+    """Peak [V] the output can move until V_CE(sat) is reached."""
+    room = reading.quiet.collector_emitter - reading.stage.saturation_voltage
+    if reading.wiring.output is Node.EMITTER:
+        return room
+    r_ac = 1.0 / _output_conductance(reading)
+    return room * r_ac / (r_ac + _unbypassed(reading))
+
+
+def _headroom(up: bool) -> Callable[[Reading], Values]:
+    def read(reading: Reading) -> Values:
+        rises_on_cut_off = reading.wiring.output is Node.COLLECTOR
+        if reading.stage.polarity == "pnp":
+            rises_on_cut_off = not rises_on_cut_off
+        side = _into_cut_off if up is rises_on_cut_off else _into_saturation
+        return side(reading) - reading.coupled_ripple
+
+    return read
+
+
+def _symmetric(reading: Reading) -> Values:
+    return np.minimum(_into_cut_off(reading), _into_saturation(reading)) - reading.coupled_ripple
+
+
+def _supply_feedthrough(reading: Reading) -> Values:
+    return reading.feedthrough_open if reading.stage.signal is None else reading.feedthrough_short
+
+
+def _peak_ripple(reading: Reading) -> Values:
+    return reading.output_per_ripple * reading.stage.supply.ripple_peak
+
+
+_PLAIN = (
+    Quantity("collector_voltage", Kind.VOLTAGE, _node_voltage(Node.COLLECTOR), _output_ripple_at(Node.COLLECTOR)),
+    Quantity("base_voltage", Kind.VOLTAGE, _node_voltage(Node.BASE)),
+    Quantity("emitter_voltage", Kind.VOLTAGE, _node_voltage(Node.EMITTER), _output_ripple_at(Node.EMITTER)),
+    Quantity("collector_emitter_voltage", Kind.VOLTAGE, lambda r: r.point.collector_emitter),
+    Quantity("collector_current", Kind.CURRENT, lambda r: r.point.collector_current),
+    Quantity("base_current", Kind.CURRENT, lambda r: r.point.base_current),
+    Quantity("emitter_current", Kind.CURRENT, lambda r: r.point.base_current + r.point.collector_current),
+    Quantity("supply_current", Kind.CURRENT, _supply_current),
+    Quantity("transistor_power", Kind.POWER, lambda r: r.point.power),
+    Quantity("junction_temperature", Kind.TEMPERATURE, lambda r: r.point.junction_temperature),
+    Quantity("headroom_up", Kind.VOLTAGE, _headroom(up=True)),
+    Quantity("headroom_down", Kind.VOLTAGE, _headroom(up=False)),
+    Quantity("symmetric_peak_swing", Kind.VOLTAGE, _symmetric),
+    Quantity(
+        "voltage_gain", Kind.NUMBER, lambda r: signal.voltage_gain(r.coupled, r.law, r.quiet), by_magnitude=True
+    ),
+    Quantity("input_resistance", Kind.RESISTANCE, lambda r: signal.input_resistance(r.coupled, r.law, r.quiet)),
+    Quantity("output_resistance", Kind.RESISTANCE, lambda r: signal.output_resistance(r.coupled, r.law, r.quiet)),
+    Quantity("supply_feedthrough", Kind.NUMBER, _supply_feedthrough),
+    Quantity("output_ripple", Kind.VOLTAGE, _peak_ripple),
+)
+
+
+def _resistor_power(name: str) -> Quantity:
+    def read(reading: Reading) -> Array:
+        current = reading.wire_current(reading.wire_of(name))
+        return np.asarray(current**2 * reading.scenarios.resistances[name])
+
+    return Quantity(f"resistor_power.{name}", Kind.POWER, read)
+
+
+def _rows(resistor_names: tuple[str, ...]) -> Iterator[Quantity]:
+    yield from _PLAIN
+    yield from map(_resistor_power, resistor_names)
+
+
+def vocabulary(resistor_names: tuple[str, ...]) -> Mapping[str, Quantity]:
+    """Every quantity of a stage with these resistors, by name, in the order of the tables."""
+    return {quantity.name: quantity for quantity in _rows(resistor_names)}
+
+
+def quantity_units(resistor_names: tuple[str, ...]) -> Mapping[str, Kind]:
+    """The kind of every quantity of a stage with these resistors."""
+    return {name: quantity.kind for name, quantity in vocabulary(resistor_names).items()}

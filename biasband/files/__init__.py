@@ -1,0 +1,1 @@
+"""Files in: stage files and series tables, checked while they are read."""

@@ -1,0 +1,145 @@
+"""The fields of a stage file: figures with their unit and range, words, choices.
+
+Each is a type for pydantic. A refusal is a `QuantityError` or, for words, a `Refusal`: both carry
+what is wrong and what is allowed.
+"""
+
+from __future__ import annotations
+
+import re
+from collections.abc import Callable, Collection
+from dataclasses import dataclass
+from typing import Annotated, Any, Literal
+
+from pydantic import AfterValidator, BeforeValidator
+
+from biasband.errors import QuantityError
+from biasband.files.ledger import nearest, shown
+from biasband.quantity import Kind, Toleranced, format_quantity, parse, parse_toleranced
+
+
+class Refusal(ValueError):
+    """A word that is none of the allowed ones."""
+
+    def __init__(self, problem: str, *, allowed: str, hint: str = "") -> None:
+        self.problem, self.allowed, self.hint = problem, allowed, hint
+        super().__init__(problem)
+
+
+@dataclass(frozen=True)
+class SupplyOver:
+    """The target "supply / N"."""
+
+    divisor: float
+
+
+def figure(
+    kind: Kind, *, above: float | None = None, least: float | None = None, below: float | None = None
+) -> BeforeValidator:
+    """Make a reader of figures of a kind, within a range in SI."""
+
+    def read(value: Any) -> float:
+        return within(parse(value, kind), value, kind, above=above, least=least, below=below)
+
+    return BeforeValidator(read)
+
+
+def within(
+    number: float,
+    value: object,
+    kind: Kind,
+    *,
+    above: float | None = None,
+    least: float | None = None,
+    below: float | None = None,
+) -> float:
+    """Return the number where it is in range; raise QuantityError, naming `value`, where it is not."""
+    bounds = (
+        ("above", above, above is None or number > above),
+        ("at least", least, least is None or number >= least),
+        ("below", below, below is None or number < below),
+    )
+    if all(good for _, _, good in bounds):
+        return number
+    wanted = " and ".join(
+        f"{word} {format_quantity(bound, kind, plain=True)}" for word, bound, _ in bounds if bound is not None
+    )
+    raise QuantityError(shown(value), f"not {wanted}", f"a {kind.value} {wanted}")
+
+
+def choice(known: Callable[[], Collection[str]]) -> BeforeValidator:
+    """Make a reader of one word out of those that `known` returns."""
+
+    def read(value: Any) -> str:
+        words = known()
+        if isinstance(value, str) and value in words:
+            return value
+        hint = nearest(value, words) if isinstance(value, str) else ""
+        raise Refusal("unknown", allowed=", ".join(words), hint=hint)
+
+    return BeforeValidator(read)
+
+
+def _toleranced(kind: Kind, *, above: float | None = None) -> BeforeValidator:
+    def read(value: Any) -> Toleranced:
+        figure = parse_toleranced(value, kind)
+        within(figure.value, value, kind, above=above)
+        within(figure.tolerance or 0.0, value, Kind.RATIO, below=1.0)
+        return figure
+
+    return BeforeValidator(read)
+
+
+def _one_line(text: str) -> str:
+    line = " ".join(text.split())
+    if re.search(r"[\x00-\x1f\x7f-\x9f]", line):
+        raise Refusal("control characters in a text", allowed="printable text")
+    return line
+
+
+def _emitter_voltage(value: Any) -> float | SupplyOver:
+    over = re.fullmatch(r"\s*supply\s*/\s*(.*)", value) if isinstance(value, str) else None
+    try:
+        if over:
+            return SupplyOver(within(parse(over[1], Kind.NUMBER), value, Kind.NUMBER, above=0.0))
+        return within(parse(value, Kind.VOLTAGE), value, Kind.VOLTAGE, above=0.0)
+    except QuantityError as error:
+        raise Refusal(error.problem, allowed='a voltage above 0 ("1 V"), or "supply / 9"') from None
+
+
+COLLECTOR_PLACES = ("mid-swing", "max-swing")
+
+
+def _collector(value: Any) -> Any:
+    if value in COLLECTOR_PLACES:
+        return value
+    try:
+        return parse(value, Kind.VOLTAGE)
+    except QuantityError as error:
+        hint = nearest(value, COLLECTOR_PLACES) if isinstance(value, str) else ""
+        allowed = f'{", ".join(COLLECTOR_PLACES)}, or a voltage ("5 V")'
+        raise Refusal(error.problem, allowed=allowed, hint=hint) from None
+
+
+Text = Annotated[str, AfterValidator(_one_line)]
+Volts = Annotated[float, figure(Kind.VOLTAGE)]
+PositiveVolts = Annotated[float, figure(Kind.VOLTAGE, above=0.0)]
+VoltsFromZero = Annotated[float, figure(Kind.VOLTAGE, least=0.0)]
+TolerancedVolts = Annotated[Toleranced, _toleranced(Kind.VOLTAGE)]
+PositiveAmperes = Annotated[float, figure(Kind.CURRENT, above=0.0)]
+AmperesFromZero = Annotated[float, figure(Kind.CURRENT, least=0.0)]
+PositiveWatts = Annotated[float, figure(Kind.POWER, above=0.0)]
+PositiveOhms = Annotated[float, figure(Kind.RESISTANCE, above=0.0)]
+OhmsFromZero = Annotated[float, figure(Kind.RESISTANCE, least=0.0)]
+TolerancedOhms = Annotated[Toleranced, _toleranced(Kind.RESISTANCE, above=0.0)]
+Temperature = Annotated[float, figure(Kind.TEMPERATURE)]
+PositiveKelvins = Annotated[float, figure(Kind.TEMPERATURE_DIFFERENCE, above=0.0)]
+KelvinsPerWatt = Annotated[float, figure(Kind.THERMAL_RESISTANCE, least=0.0)]
+VoltsPerKelvin = Annotated[float, figure(Kind.VOLTAGE_SLOPE)]
+PerKelvin = Annotated[float, figure(Kind.RELATIVE_SLOPE)]
+PerKelvinFromZero = Annotated[float, figure(Kind.RELATIVE_SLOPE, least=0.0)]
+Share = Annotated[float, figure(Kind.RATIO, least=0.0, below=1.0)]
+ProperShare = Annotated[float, figure(Kind.RATIO, above=0.0, below=1.0)]
+PositiveNumber = Annotated[float, figure(Kind.NUMBER, above=0.0)]
+EmitterVoltage = Annotated[float | SupplyOver, BeforeValidator(_emitter_voltage)]
+Collector = Annotated[float | Literal["mid-swing", "max-swing"], BeforeValidator(_collector)]

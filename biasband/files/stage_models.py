@@ -1,0 +1,180 @@
+"""What may stand in each section of a stage file, key by key, for pydantic to check.
+
+A field that is None was not given; what that means is decided where the section becomes a record.
+"""
+
+from __future__ import annotations
+
+from typing import Annotated, Any, Literal, get_args
+
+from pydantic import BaseModel, BeforeValidator, ConfigDict, Discriminator, Tag
+
+from biasband.circuit.topology import TOPOLOGIES
+from biasband.errors import QuantityError
+from biasband.files import figures as f
+from biasband.files.figures import Refusal, choice
+from biasband.files.series_files import load_all
+from biasband.parts.derating import PROFILES
+from biasband.quantity import Kind, parse
+from biasband.stage import Distribution, Method, Polarity, Varies
+
+ONE_FIGURE, RANGE = "<one figure>", "<range>"
+"""Tags that pydantic puts into an error's place, where a figure may also be given as a range."""
+
+
+def _form(value: Any) -> str:
+    return RANGE if isinstance(value, (dict, BaseModel)) else ONE_FIGURE
+
+
+def _drift(value: Any) -> float | Literal["bandgap"]:
+    if value == "bandgap":
+        return "bandgap"
+    try:
+        return parse(value, Kind.VOLTAGE_SLOPE)
+    except QuantityError as error:
+        raise Refusal(error.problem, allowed='"bandgap", or a slope such as "-2 mV/K"') from None
+
+
+Drift = Annotated[float | Literal["bandgap"], BeforeValidator(_drift)]
+
+
+class Section(BaseModel):
+    """A table whose keys are all known, and whose texts and booleans are taken as written."""
+
+    model_config = ConfigDict(frozen=True, extra="forbid", strict=True)
+
+
+class GainRange(Section):
+    """h_FE between two limits, with or without a typical value."""
+
+    min: f.PositiveNumber
+    typ: f.PositiveNumber | None = None
+    max: f.PositiveNumber
+
+
+class VoltageRange(Section):
+    """A positive voltage between two limits, with or without a typical value."""
+
+    min: f.PositiveVolts
+    typ: f.PositiveVolts | None = None
+    max: f.PositiveVolts
+
+
+Gain = Annotated[
+    Annotated[f.PositiveNumber, Tag(ONE_FIGURE)] | Annotated[GainRange, Tag(RANGE)], Discriminator(_form)
+]
+BaseEmitterVoltage = Annotated[
+    Annotated[f.PositiveVolts, Tag(ONE_FIGURE)] | Annotated[VoltageRange, Tag(RANGE)], Discriminator(_form)
+]
+
+
+class StageSection(Section):
+    """[stage]"""
+
+    title: f.Text
+    topology: Annotated[str, choice(lambda: tuple(TOPOLOGIES))]
+    polarity: Annotated[Polarity, choice(lambda: get_args(Polarity))]
+    document: f.Text = ""
+    revision: f.Text = ""
+    designed_by: f.Text = ""
+
+
+class SupplySection(Section):
+    """[supply] and [negative_supply]"""
+
+    voltage: f.TolerancedVolts | None = None
+    tolerance: f.Share | None = None
+    min: f.Volts | None = None
+    nominal: f.Volts | None = None
+    max: f.Volts | None = None
+    ripple_peak: f.VoltsFromZero | None = None
+    ripple_peak_to_peak: f.VoltsFromZero | None = None
+    varies: Annotated[Varies, choice(lambda: get_args(Varies))] = "in use"
+
+
+class AmbientSection(Section):
+    """[ambient]"""
+
+    min: f.Temperature | None = None
+    nominal: f.Temperature | None = None
+    max: f.Temperature | None = None
+
+
+class TransistorSection(Section):
+    """[transistor], or the file that it names"""
+
+    type: f.Text | None = None
+    gain: Gain
+    base_emitter_voltage: BaseEmitterVoltage
+    test_current: f.PositiveAmperes
+    test_voltage: f.PositiveVolts | None = None
+    base_emitter_drift: Drift | None = None
+    gain_drift: f.PerKelvin | None = None
+    leakage: f.AmperesFromZero | None = None
+    leakage_doubling: f.PositiveKelvins | None = None
+    saturation_voltage: f.VoltsFromZero | None = None
+    early_voltage: f.PositiveVolts | None = None
+    reverse_gain: f.PositiveNumber | None = None
+    thermal_resistance: f.KelvinsPerWatt | None = None
+    max_collector_emitter: f.PositiveVolts | None = None
+    max_emitter_base: f.PositiveVolts | None = None
+    max_current: f.PositiveAmperes | None = None
+    max_power: f.PositiveWatts | None = None
+    max_junction: f.Temperature | None = None
+    source: f.Text | None = None
+
+
+class TargetSection(Section):
+    """[target]"""
+
+    collector_current: f.PositiveAmperes
+    emitter_voltage: f.EmitterVoltage | None = None
+    collector: f.Collector | None = None
+    divider_current_ratio: f.PositiveNumber | None = None
+
+
+class SignalSection(Section):
+    """[signal]"""
+
+    load: f.PositiveOhms | None = None
+    source_resistance: f.OhmsFromZero | None = None
+    bypassed: bool = False
+
+
+class ResistorDefaults(Section):
+    """[resistors], without its sub-tables"""
+
+    series: Annotated[str, choice(load_all)] | None = None
+    tolerance: f.Share | None = None
+    tempco: f.PerKelvinFromZero | None = None
+    life_drift: f.Share | None = None
+    power_rating: f.PositiveWatts | None = None
+    distribution: Annotated[Distribution, choice(lambda: get_args(Distribution))] | None = None
+    group: f.Text | None = None
+    tracking: f.PerKelvinFromZero | None = None
+    derate_from: f.Temperature | None = None
+    derate_to: f.Temperature | None = None
+
+
+class ResistorSection(ResistorDefaults):
+    """[resistors.NAME]"""
+
+    value: f.TolerancedOhms | None = None
+
+
+class RequireSection(Section):
+    """[[require]]; its limits are read once the kind of its quantity is known"""
+
+    id: f.Text | None = None
+    quantity: f.Text
+    at_least: Any = None
+    at_most: Any = None
+    judged_by: Annotated[Method, choice(lambda: get_args(Method))] = "corners"
+    yield_at_least: f.ProperShare | None = None
+    reason: f.Text = ""
+
+
+class DeratingSection(Section):
+    """[derating]"""
+
+    profile: Annotated[str, choice(lambda: tuple(PROFILES))]

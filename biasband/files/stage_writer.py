@@ -1,0 +1,80 @@
+"""Writes a stage file again with its resistor values frozen, comments and order kept."""
+
+from __future__ import annotations
+
+import os
+import re
+import tomllib
+from collections.abc import Mapping
+from pathlib import PurePath
+from typing import Any
+
+import tomlkit
+
+from biasband.errors import BiasbandError, UsageError
+from biasband.files.stage_file import read_stage
+
+
+def frozen_text(
+    path: str | os.PathLike[str], values: Mapping[str, str], *, new_path: str | os.PathLike[str] | None = None
+) -> str:
+    """Return the text of a stage file with `value = "…"` set for each resistor in `values`.
+
+    A tolerance behind the old value ("3k3 ± 1 %") stays behind the new one. Where the text is meant
+    for a `new_path` in another folder, transistor.file is rewritten so that it is found from there.
+    Raises: what `read_stage` raises; UsageError where the stage has no resistor of a name;
+    BiasbandError where the layout of the file is beyond rewriting.
+    """
+    source = os.fspath(path)
+    known = [resistor.name for resistor in read_stage(source).resistors]
+    unknown = [name for name in values if name not in known]
+    if unknown:
+        raise UsageError(f"{source} has no resistor {', '.join(unknown)}; allowed: {', '.join(known)}")
+    with open(source, encoding="utf-8-sig", newline="") as file:
+        text = file.read()
+    target = source if new_path is None else os.fspath(new_path)
+    document = tomlkit.parse(text)
+    wanted = tomllib.loads(text)
+    for data in (document, wanted):
+        _freeze(data, values)
+        _point_to_part(data, os.path.dirname(source), os.path.dirname(target))
+    written = tomlkit.dumps(document)
+    # A sign-off rests on this text: what it says is compared with what it was meant to say.
+    if tomllib.loads(written) != wanted:
+        by_hand = ", ".join(f"{name} {value}" for name, value in values.items())
+        raise BiasbandError(f"{source}: this layout cannot be rewritten; set the values by hand: {by_hand}")
+    return written
+
+
+def write_new(path: str | os.PathLike[str], text: str) -> None:
+    """Write a new file; an existing one is never overwritten.
+
+    Raises: UsageError where there is something at the path already, or it cannot be written.
+    """
+    try:
+        with open(path, "x", encoding="utf-8", newline="") as file:
+            file.write(text)
+    except FileExistsError:
+        raise UsageError(f"{path} exists already and was left as it is: choose a new name") from None
+    except FileNotFoundError:
+        raise UsageError(f"{path}: there is no such folder: make it first") from None
+    except (OSError, ValueError) as error:  # ValueError: a NUL in the path
+        reason = getattr(error, "strerror", None) or error
+        raise UsageError(f"{path} cannot be written: {reason}") from None
+
+
+def _freeze(data: Any, values: Mapping[str, str]) -> None:
+    resistors = data.setdefault("resistors", {})
+    for name, value in values.items():
+        own = resistors.setdefault(name, {})
+        tolerance = re.search(r"\s*(±|\+/[-\u2212]).*", str(own.get("value", "")))
+        own["value"] = value + (tolerance[0] if tolerance else "")
+
+
+def _point_to_part(data: Any, old_folder: str, new_folder: str) -> None:
+    """Rewrite transistor.file, relative to a stage file, for a stage file in another folder."""
+    file = data["transistor"].get("file")
+    if file is None or os.path.isabs(file) or os.path.realpath(old_folder) == os.path.realpath(new_folder):
+        return
+    relative = os.path.relpath(os.path.join(old_folder, file), new_folder or os.curdir)
+    data["transistor"]["file"] = PurePath(relative).as_posix()

@@ -1,0 +1,1 @@
+"""Parts that can be bought: preferred series, marking codes, derating. No file is read here."""

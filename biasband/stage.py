@@ -1,0 +1,209 @@
+"""The nouns of a stage: what a stage file says, in SI units, once it has been read.
+
+Every record is frozen and complete: defaults are filled in, alternatives resolved. The supply, the
+transistor and each resistor know whether their variation was *stated*, because a sign-off that
+rests on an unstated variation is inconclusive.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field
+from typing import Literal
+
+from biasband.constants import ASSUMED_SATURATION_VOLTAGE, KELVIN_OFFSET, REFERENCE_TEMPERATURE
+
+Polarity = Literal["npn", "pnp"]
+Varies = Literal["in use", "by board"]
+Method = Literal["corners", "rss", "yield"]
+Distribution = Literal["uniform", "normal", "triangular"]
+
+
+@dataclass(frozen=True, kw_only=True)
+class Limits:
+    """A figure with its limits, in one SI unit: `low <= nominal <= high`.
+
+    `stated` is False where the file gave a single figure and no variation; `typical` is True where
+    it gave a typical value beside the limits (then half the probability lies on each side of it).
+    """
+
+    low: float
+    nominal: float
+    high: float
+    stated: bool = True
+    typical: bool = False
+
+    @classmethod
+    def exactly(cls, value: float, *, stated: bool = True) -> Limits:
+        """Limits that coincide."""
+        return cls(low=value, nominal=value, high=value, stated=stated)
+
+
+@dataclass(frozen=True, kw_only=True)
+class Supply:
+    """A supply rail [V] to the stage's ground; `ripple_peak` [V] comes on top of the limits."""
+
+    voltage: Limits
+    ripple_peak: float = 0.0
+    varies: Varies = "in use"
+
+
+@dataclass(frozen=True, kw_only=True)
+class Transistor:
+    """A data sheet at 25 °C: [A], [V], [V/K], [1/K], [K], [K/W], [W]; absolute values for PNP.
+
+    `base_emitter_drift` None means the band-gap law. A rating that is None is not stated, and what
+    depends on it is not checked; `saturation_voltage` None means that 0.2 V is assumed.
+    """
+
+    gain: Limits
+    base_emitter_voltage: Limits
+    test_current: float
+    label: str = ""
+    test_voltage: float | None = None
+    base_emitter_drift: float | None = -2e-3
+    gain_drift: float = 5e-3
+    leakage: float = 0.0
+    leakage_doubling: float = 10.0
+    saturation_voltage: float | None = None
+    early_voltage: float | None = None
+    reverse_gain: float = 4.0
+    thermal_resistance: float | None = None
+    max_collector_emitter: float | None = None
+    max_emitter_base: float | None = None
+    max_current: float | None = None
+    max_power: float | None = None
+    max_junction: float | None = None
+    source: str = ""
+
+
+@dataclass(frozen=True, kw_only=True)
+class IdealTransistor:
+    """A textbook transistor: constant V_BE, no Early effect, no leakage, no temperature.
+
+    In the library only, never in a stage file, so that published answers can be checked to the
+    digit. Valid in the active region; saturation is a status, with V_CE held at
+    `saturation_voltage`. The gain and V_BE may still vary between limits.
+    """
+
+    gain: Limits
+    base_emitter_voltage: Limits
+    saturation_voltage: float | None = None
+    leakage: float = 0.0
+    thermal_resistance: float | None = None
+    max_collector_emitter: float | None = None
+    max_emitter_base: float | None = None
+    max_current: float | None = None
+    max_power: float | None = None
+    max_junction: float | None = None
+
+
+AnyTransistor = Transistor | IdealTransistor
+
+
+@dataclass(frozen=True, kw_only=True)
+class Resistor:
+    """One resistor of the stage: [Ω], tolerances as fractions, tempco [1/K], rating [W].
+
+    `value` None means that biasband chooses it. `tolerance_stated` is False where the file says
+    nothing about tolerance. Resistors of one `group` share all of their tempco but `tracking`
+    [1/K]. The rating is derated linearly from `derate_from` [K] to zero at `derate_to` [K].
+    """
+
+    name: str
+    value: float | None = None
+    series: str = "E24"
+    tolerance: float = 0.0
+    tolerance_stated: bool = True
+    tempco: float = 0.0
+    life_drift: float = 0.0
+    power_rating: float | None = None
+    group: str | None = None
+    tracking: float | None = None
+    distribution: Distribution = "uniform"
+    derate_from: float = 70.0 + KELVIN_OFFSET
+    derate_to: float = 155.0 + KELVIN_OFFSET
+
+
+@dataclass(frozen=True, kw_only=True)
+class Target:
+    """What the designer aims for.
+
+    `emitter_voltage` [V] or `supply_over` (the N of "supply / N") is the voltage across the emitter
+    resistor, so that it means the same for both polarities; with neither the 1 V rule holds.
+    `collector` is "mid-swing", "max-swing" or a node voltage [V].
+    """
+
+    collector_current: float
+    emitter_voltage: float | None = None
+    supply_over: float | None = None
+    collector: float | Literal["mid-swing", "max-swing"] = "mid-swing"
+    divider_current_ratio: float = 10.0
+
+
+@dataclass(frozen=True, kw_only=True)
+class Signal:
+    """What the capacitors couple: a load [Ω] (None: no load) and a source resistance [Ω]."""
+
+    load: float | None = None
+    source_resistance: float = 0.0
+    bypassed: bool = False
+
+
+@dataclass(frozen=True, kw_only=True)
+class Requirement:
+    """A limit on a quantity, in the quantity's SI unit, and how it is to be judged."""
+
+    id: str
+    quantity: str
+    at_least: float | None = None
+    at_most: float | None = None
+    judged_by: Method = "corners"
+    yield_at_least: float = 0.9973
+    reason: str = ""
+
+
+@dataclass(frozen=True, kw_only=True)
+class FileRecord:
+    """A file that was read, and the SHA-256 of its bytes."""
+
+    path: str
+    sha256: str
+
+
+@dataclass(frozen=True, kw_only=True)
+class Stage:
+    """A one-transistor stage, its surroundings and what is asked of it.
+
+    `resistors` holds exactly those that the topology needs, in the topology's order. `ambient` is
+    in [K].
+    """
+
+    title: str
+    topology: str
+    polarity: Polarity
+    supply: Supply
+    transistor: AnyTransistor
+    resistors: tuple[Resistor, ...]
+    negative_supply: Supply | None = None
+    ambient: Limits = field(default_factory=lambda: Limits.exactly(REFERENCE_TEMPERATURE, stated=False))
+    target: Target | None = None
+    signal: Signal | None = None
+    requirements: tuple[Requirement, ...] = ()
+    derating: str = "full"
+    document: str = ""
+    revision: str = ""
+    designed_by: str = ""
+    files: tuple[FileRecord, ...] = ()
+
+    def resistor(self, name: str) -> Resistor:
+        """The resistor of that name; KeyError where the stage has none."""
+        for resistor in self.resistors:
+            if resistor.name == name:
+                return resistor
+        raise KeyError(name)
+
+    @property
+    def saturation_voltage(self) -> float:
+        """V_CE(sat) [V]: the data sheet's, else the assumed one."""
+        stated = self.transistor.saturation_voltage
+        return ASSUMED_SATURATION_VOLTAGE if stated is None else stated
