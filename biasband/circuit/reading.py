@@ -91,10 +91,14 @@ class Reading:
 
     @cached_property
     def coupled_ripple(self) -> Values:
-        """How far [V] ripple moves the output beyond the quiet point; 0 where it does not couple."""
+        """How far [V] ripple moves the output beyond the quiet point; 0 where it does not couple.
+
+        It is there at its peak or not at all: the output swings through both signs of it.
+        """
         if self.quiet is self.point:
             return 0.0
-        return self.output_per_ripple * np.abs(self.scenarios.ripple)
+        peak = np.where(np.asarray(self.scenarios.ripple) != 0.0, self.stage.supply.ripple_peak, 0.0)
+        return self.output_per_ripple * peak
 
     def real(self, frame_voltage: Values) -> Values:
         """A node voltage [V] to the stage's ground from one in the transistor's frame."""

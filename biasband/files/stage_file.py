@@ -11,7 +11,7 @@ from functools import partial
 from typing import Any
 
 from biasband.circuit.topology import EMITTER_PARTS, TOPOLOGIES, Node, Topology
-from biasband.errors import BadlyWritten, PhysicallyImpossible
+from biasband.errors import BadlyWritten, Fault, PhysicallyImpossible
 from biasband.files.ledger import Ledger, nearest, shown
 from biasband.files.requirement_sections import read_requirements
 from biasband.files.resistor_sections import EMITTER_RESISTOR, Needs, read_resistors
@@ -26,6 +26,7 @@ from biasband.files.stage_sections import (
     read_transistor,
 )
 from biasband.files.toml_file import TomlFile, read_toml
+from biasband.files.toml_lines import line_of
 from biasband.files.validation import check_section
 from biasband.stage import Resistor, Stage, Transistor
 
@@ -152,11 +153,15 @@ def _read_transistor(file: TomlFile, table: object, ledger: Ledger) -> Transisto
     if part is None:
         return None
     ledger.part_file = part
+    if "file" in part.data:
+        line = line_of(part.lines, ("file",))
+        ledger.extend((Fault(part.path, line, "file", "a transistor's file cannot name another"),))
     for key in own:
         if key in part.data:
             problem = f"given here and in {part.path}"
             ledger.add(("transistor", key), problem, allowed="one of the two")
-    return read_transistor({**part.data, **own}, ledger)
+    from_part = {key: value for key, value in part.data.items() if key != "file"}
+    return read_transistor(from_part | own, ledger)
 
 
 def _read_part(name: object, file: TomlFile, ledger: Ledger) -> TomlFile | None:

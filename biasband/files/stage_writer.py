@@ -5,11 +5,12 @@ from __future__ import annotations
 import os
 import re
 import tomllib
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from pathlib import PurePath
 from typing import Any
 
 import tomlkit
+from tomlkit.exceptions import TOMLKitError
 
 from biasband.errors import BiasbandError, UsageError
 from biasband.files.stage_file import read_stage
@@ -33,17 +34,32 @@ def frozen_text(
     with open(source, encoding="utf-8-sig", newline="") as file:
         text = file.read()
     target = source if new_path is None else os.fspath(new_path)
-    document = tomlkit.parse(text)
-    wanted = tomllib.loads(text)
-    for data in (document, wanted):
+
+    def edit(data: Any) -> None:
         _freeze(data, values)
         _point_to_part(data, os.path.dirname(source), os.path.dirname(target))
-    written = tomlkit.dumps(document)
-    # A sign-off rests on this text: what it says is compared with what it was meant to say.
-    if tomllib.loads(written) != wanted:
+
+    if (written := _rewritten(text, edit)) is None:
         by_hand = ", ".join(f"{name} {value}" for name, value in values.items())
         raise BiasbandError(f"{source}: this layout cannot be rewritten; set the values by hand: {by_hand}")
     return written
+
+
+def _rewritten(text: str, edit: Callable[[Any], None]) -> str | None:
+    """The text with its data edited; None where it would then not say what was meant.
+
+    A sign-off rests on this text, and tomlkit loses its way in tables that are written in pieces
+    far apart, so what was written is read again and compared.
+    """
+    wanted = tomllib.loads(text)
+    edit(wanted)
+    try:
+        document = tomlkit.parse(text)
+        edit(document)
+        written = tomlkit.dumps(document)
+        return written if tomllib.loads(written) == wanted else None
+    except (TOMLKitError, ValueError):
+        return None
 
 
 def write_new(path: str | os.PathLike[str], text: str) -> None:

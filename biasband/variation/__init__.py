@@ -1,0 +1,1 @@
+"""What varies: contributors and points of use, corners, RSS, sampled boards, causes."""

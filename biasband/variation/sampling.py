@@ -1,0 +1,183 @@
+"""Monte Carlo: boards drawn at random, each solved at every point of use.
+
+A board holds a requirement when it holds it at all points, so the yield is the share of boards
+that hold it everywhere. Each draw has its own counter-based stream, named after it: adding a
+contributor does not reshuffle the others, two designs can be compared on the same draws, and the
+result is the same bytes for any chunk size.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+from functools import cached_property
+
+import numpy as np
+from numpy.typing import NDArray
+
+from biasband.circuit.operating_point import Region
+from biasband.circuit.scenarios import Array, chunks
+from biasband.stage import Distribution, Stage
+from biasband.variation.contributors import board_axes, group_axis, tempcos
+from biasband.variation.evaluation import Measures, Outcome, evaluate
+from biasband.variation.points_of_use import PointOfUse
+
+CHUNK = 8192
+"""Boards evaluated in one go; a multiple of four, the doubles that one step of the counter gives."""
+
+QUANTILES = (0.00135, 0.5, 0.99865)
+"""The quantiles of every report: ±3σ of a normal distribution, and the median."""
+
+
+@dataclass(frozen=True)
+class Draw:
+    """One random number per board: its stream's name and its distribution."""
+
+    name: str
+    distribution: Distribution = "uniform"
+
+
+def draws(stage: Stage) -> tuple[Draw, ...]:
+    """Every draw of a stage: a resistor's tolerance, drift and tempco are three separate ones."""
+    found = []
+    for resistor in stage.resistors:
+        found.append(Draw(f"{resistor.name}.tolerance", resistor.distribution))
+        found.append(Draw(f"{resistor.name}.life_drift"))
+        found.append(Draw(f"{resistor.name}.tempco"))
+    groups = {r.group for r in stage.resistors if r.group is not None and tempcos(r).common > 0.0}
+    found += [Draw(f"{group_axis(group)}.tempco") for group in sorted(groups)]
+    resistors = {resistor.name for resistor in stage.resistors}
+    rest = [axis.name for axis in board_axes(stage) if axis.name not in resistors]
+    return (*found, *(Draw(name) for name in rest if not name.startswith(group_axis(""))))
+
+
+def coordinates(stage: Stage, rows: slice, *, seed: int) -> dict[str, Array]:
+    """The coordinates of the boards at `rows`, whatever the chunk they are drawn in."""
+    return {draw.name: _shape(draw.distribution, _uniform(draw.name, rows, seed)) for draw in draws(stage)}
+
+
+def _uniform(name: str, rows: slice, seed: int) -> Array:
+    """Uniform numbers in [0, 1) of one stream; the counter gives four doubles a step."""
+    stream = np.random.Philox(np.random.SeedSequence([seed, *name.encode()]))
+    stream.advance(rows.start // 4)
+    skip = rows.start % 4
+    return np.random.Generator(stream).random(rows.stop - rows.start + skip)[skip:]
+
+
+def _shape(distribution: Distribution, u: Array) -> Array:
+    """Coordinates in [−1, 1] from uniform numbers, by the inverse distribution function."""
+    if distribution == "normal":
+        from scipy.special import ndtr, ndtri
+
+        tail = ndtr(-3.0)
+        return np.asarray(ndtri(tail + u * (1.0 - 2.0 * tail)) / 3.0)
+    if distribution == "triangular":
+        return np.where(u < 0.5, np.sqrt(2.0 * u) - 1.0, 1.0 - np.sqrt(2.0 * (1.0 - u)))
+    return 2.0 * u - 1.0
+
+
+@dataclass(frozen=True)
+class Sample:
+    """One figure per board [SI], shape (N,); NaN for a board that did not solve."""
+
+    values: Array
+
+    @cached_property
+    def _solved(self) -> Array:
+        return np.sort(self.values[~np.isnan(self.values)])
+
+    @property
+    def mean(self) -> float:
+        """The mean over solved boards; NaN where there is none."""
+        return float(np.mean(self._solved)) if self._solved.size else float("nan")
+
+    @property
+    def sd(self) -> float:
+        """The standard deviation over solved boards, with N − 1; NaN for fewer than two."""
+        return float(np.std(self._solved, ddof=1)) if self._solved.size > 1 else float("nan")
+
+    def quantile(self, share: float) -> float:
+        """The value that this share of solved boards does not exceed, interpolated linearly."""
+        return float(np.quantile(self._solved, share)) if self._solved.size else float("nan")
+
+
+@dataclass(frozen=True)
+class Spread:
+    """A quantity over all boards: at nominal use, and the lowest and highest each meets in use."""
+
+    nominal_use: Sample
+    lowest_in_use: Sample
+    highest_in_use: Sample
+
+    def inside(self, low: float, high: float) -> float:
+        """The share of all boards that stay between two limits at every point of use."""
+        held = (self.lowest_in_use.values >= low) & (self.highest_in_use.values <= high)
+        return float(np.mean(held))
+
+
+@dataclass(frozen=True)
+class Boards:
+    """The sampled boards: the spread of every measure, and scenarios counted by region."""
+
+    spread: Mapping[str, Spread]
+    boards: int
+    seed: int
+    points: int
+    regions: Mapping[Region, int]
+
+
+def sample(
+    stage: Stage,
+    measures: Measures,
+    points: Sequence[PointOfUse],
+    *,
+    boards: int,
+    seed: int,
+    cut_off: float,
+) -> Boards:
+    """Draw boards and solve each at every point of use, nominal use first."""
+    table = {name: np.empty((3, boards)) for name in measures}
+    regions = np.zeros(len(Region), dtype=np.int64)
+    for rows in chunks(boards, CHUNK):
+        drawn = coordinates(stage, rows, seed=seed)
+        for count, point in enumerate(points):
+            outcome = evaluate(stage, {**drawn, **point.coordinates}, measures, cut_off=cut_off)
+            regions += np.bincount(outcome.region, minlength=len(Region))
+            _gather(table, rows, outcome, first=count == 0)
+    spread = {name: Spread(*(Sample(row) for row in rows_of)) for name, rows_of in table.items()}
+    counted = {region: int(regions[region]) for region in Region if regions[region]}
+    return Boards(spread, boards, seed, len(points), counted)
+
+
+def _gather(table: dict[str, NDArray[np.float64]], rows: slice, outcome: Outcome, *, first: bool) -> None:
+    """Keep nominal use, and the lowest and highest so far; NaN stays, so a failed board shows."""
+    for name, kept in table.items():
+        low, high = outcome.low[name], outcome.high[name]
+        if first:
+            kept[0, rows], kept[1, rows], kept[2, rows] = low, low, high
+        else:
+            np.minimum(kept[1, rows], low, out=kept[1, rows])
+            np.maximum(kept[2, rows], high, out=kept[2, rows])
+
+
+def yield_bound(held: int, boards: int, *, confidence: float = 0.95) -> float:
+    """The one-sided lower Clopper–Pearson bound of a yield: `held` of `boards` passed.
+
+    Source: Clopper & Pearson, "The use of confidence or fiducial limits", Biometrika 26 (1934).
+    """
+    from scipy.special import betaincinv
+
+    if held == 0:
+        return 0.0
+    return float(betaincinv(held, boards - held + 1, 1.0 - confidence))
+
+
+def allowed_failures(boards: int, required: float, *, confidence: float = 0.95) -> int:
+    """How many boards may fail while the bound still reaches the required yield; −1: not even none."""
+    from scipy.special import betainc
+
+    # The bound with f failures reaches `required` when P(X >= held) at that yield is at most 1 - confidence.
+    failures = np.arange(boards)
+    held = boards - failures
+    reaches = betainc(held, failures + 1.0, required) <= 1.0 - confidence
+    return int(np.sum(np.cumprod(reaches))) - 1
