@@ -8,6 +8,7 @@ junction temperature by a scan and `brentq`.
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass
 from math import exp, log
 from typing import cast
@@ -159,6 +160,15 @@ class Twin:
         return (self.v_be - self.v_bc) * self.I_C + self.v_be * self.I_B
 
 
+def rising_root(function: Callable[[float], float], low: float, high: float, V_T: float) -> float:
+    """The root of a rising function, its bracket widened: down by doubling, up by a few V_T at a time."""
+    while function(low) > 0.0:
+        low *= 2.0
+    while function(high) < 0.0:
+        high += 5.0 * V_T
+    return float(optimize.brentq(function, low, high, xtol=1e-15, rtol=1e-15))
+
+
 class Solver:
     """Solves one case at any junction temperature."""
 
@@ -192,18 +202,11 @@ class Solver:
     def at(self, T: float) -> Twin:
         """The one solution at the junction temperature T [K], by nested bracketing."""
         law = junctions(self.case, T)
-        top = 60.0 * law.V_T
 
         def collector_for(v_be: float) -> float:
-            return float(
-                optimize.brentq(lambda v: self.excess(law, v_be, v)[1], -self.reach, top, xtol=1e-15, rtol=1e-15)
-            )
+            return rising_root(lambda v: self.excess(law, v_be, v)[1], -self.reach, max(v_be, 0.0), law.V_T)
 
-        v_be = float(
-            optimize.brentq(
-                lambda v: self.excess(law, v, collector_for(v))[0], -self.reach, top, xtol=1e-15, rtol=1e-15
-            )
-        )
+        v_be = rising_root(lambda v: self.excess(law, v, collector_for(v))[0], -self.reach, 0.0, law.V_T)
         return self._twin(law, v_be, collector_for(v_be), T)
 
     def near(self, T: float, start: Twin) -> Twin:

@@ -1,0 +1,1 @@
+"""Values: ideal resistors from a target, and buyable ones near them."""
