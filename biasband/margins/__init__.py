@@ -1,0 +1,1 @@
+"""Margins: requirements and standing checks held against what varies, and the verdict."""

@@ -1,0 +1,77 @@
+"""Warnings: what a reviewer must know beside the margins."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Mapping
+
+from biasband.circuit.operating_point import Region
+from biasband.constants import ASSUMED_SATURATION_VOLTAGE
+from biasband.margins.records import Evidence
+from biasband.stage import Stage, Transistor
+from biasband.values.choosing import Design
+
+DECADE = 10.0
+HIGH_VOLTAGE = 60.0
+"""[V] DC above which a supply can hurt (common practice; local codes decide)."""
+
+_ROUNDING = 1e-9
+
+
+def warnings_of(design: Design, nominal: Mapping[str, float], evidence: Evidence) -> tuple[str, ...]:
+    """Every warning of a reviewed stage, those about the design first."""
+    stage = design.stage
+    return (
+        *design.warnings,
+        *_regions(evidence),
+        *_outside(evidence),
+        *_assumed(stage),
+        *_far_from_test(stage, nominal),
+        *_dangers(stage),
+    )
+
+
+def _regions(evidence: Evidence) -> Iterator[str]:
+    for region, words in ((Region.SATURATED, "saturate"), (Region.CUT_OFF, "cut off")):
+        count = evidence.corners.regions.get(region, 0)
+        if count:
+            yield f"{count} of {evidence.corners.count} corners {words}"
+
+
+def _outside(evidence: Evidence) -> Iterator[str]:
+    """Sampled values beyond the corner limits: a defect of the corner set, never kept quiet."""
+    for name, spread in evidence.boards.spread.items():
+        found = evidence.corners.ranges[name]
+        low, high = spread.lowest_in_use.quantile(0.0), spread.highest_in_use.quantile(1.0)
+        slack = _ROUNDING * max(abs(found.low.value), abs(found.high.value))
+        if low < found.low.value - slack or high > found.high.value + slack:
+            yield f"{name}: a sampled board lies outside the corner limits, so the corners are not the worst case"
+
+
+def _assumed(stage: Stage) -> Iterator[str]:
+    transistor = stage.transistor
+    if transistor.saturation_voltage is None:
+        yield f"no saturation_voltage given: V_CE(sat) = {ASSUMED_SATURATION_VOLTAGE:g} V assumed (common practice)"
+    if isinstance(transistor, Transistor) and transistor.thermal_resistance is None:
+        yield "no thermal_resistance given: self-heating is left out, the junction is taken at ambient"
+    if isinstance(transistor, Transistor) and transistor.leakage == 0.0:
+        yield "no leakage given: taken as none"
+
+
+def _far_from_test(stage: Stage, nominal: Mapping[str, float]) -> Iterator[str]:
+    """h_FE limits hold only at the test current."""
+    transistor, current = stage.transistor, nominal["collector_current"]
+    if not isinstance(transistor, Transistor) or not current > 0.0:
+        return
+    ratio = current / transistor.test_current
+    if not 1.0 / DECADE < ratio < DECADE:
+        yield (
+            f"the stage runs at {ratio:.3g} times the test current: "
+            "the limits of h_FE and V_BE hold at the test current only"
+        )
+
+
+def _dangers(stage: Stage) -> Iterator[str]:
+    rails = [stage.supply.voltage.high + stage.supply.ripple_peak]
+    rails += [-stage.negative_supply.voltage.low] if stage.negative_supply else []
+    if sum(rails) > HIGH_VOLTAGE:
+        yield f"the supply reaches {sum(rails):.3g} V: above {HIGH_VOLTAGE:g} V DC it can hurt; local codes apply"
