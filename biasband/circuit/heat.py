@@ -126,7 +126,7 @@ def _quickly(problem: Problem, R: float) -> Heated:
         if settled.all():
             break
     settled = settled & (T < HOTTEST_JUNCTION)
-    return Heated(bias, problem.ambient, T, first_rise, gain_cold, gain, settled)
+    return Heated(bias, problem.ambient, np.asarray(T), first_rise, gain_cold, gain, settled)
 
 
 @dataclass(frozen=True)

@@ -28,10 +28,11 @@ _VOLT_PER_KELVIN = BOLTZMANN / ELEMENTARY_CHARGE
 class Laws:
     """The parameters of the junctions at one temperature per scenario, shape (N,) or numbers.
 
-    `reference_voltage` is V_BE [V] at `reference_current` [A], where the forward current I_S·e^{VBE/VT}
-    is that current. `thermal_voltage` V_T [V], `saturation_current` I_S [A], `forward_gain` β_F, `leakage` I_CBO [A];
-    `inverse_early` 1/V_A [1/V] (0: no Early effect), `inverse_reverse_gain` 1/β_R. The `…_slope`
-    fields are relative slopes against the junction temperature, d ln(x)/dT [1/K].
+    `reference_voltage` is V_BE [V] at `reference_current` [A], where the forward current
+    I_S·e^{VBE/VT} is that current. `thermal_voltage` V_T [V], `saturation_current` I_S [A],
+    `forward_gain` β_F, `leakage` I_CBO [A]; `inverse_early` 1/V_A [1/V] (0: no Early effect),
+    `inverse_reverse_gain` 1/β_R. The `…_slope` fields are relative slopes against the junction
+    temperature, d ln(x)/dT [1/K].
     """
 
     temperature: Values

@@ -40,11 +40,13 @@ class Ports:
 
     def part(self, rows: NDArray[np.bool_]) -> Ports:
         """The network of the scenarios at `rows`."""
+        plain = (rows_of(getattr(self, name), rows) for name in _PLAIN_PORTS)
+        open_be, open_bc, z11, z12, z21, z22 = plain
         return Ports(
-            *(rows_of(getattr(self, name), rows) for name in _PLAIN_PORTS),
+            open_be, open_bc, z11, z12, z21, z22,
             node_open={node: rows_of(volts, rows) for node, volts in self.node_open.items()},
             node_z={node: (rows_of(b, rows), rows_of(c, rows)) for node, (b, c) in self.node_z.items()},
-        )
+        )  # fmt: skip
 
     def voltage(self, node: Node, base_current: Values, collector_current: Values) -> Values:
         """Voltage [V] of a terminal while the transistor draws these currents [A]."""

@@ -12,7 +12,9 @@ from dataclasses import dataclass
 import numpy as np
 
 from biasband.circuit import signal
+from biasband.circuit.junction import Laws
 from biasband.circuit.network import sign, total
+from biasband.circuit.operating_point import OperatingPoint
 from biasband.circuit.reading import Reading
 from biasband.circuit.scenarios import Array, Values
 from biasband.circuit.topology import Node
@@ -57,7 +59,8 @@ def _supply_current(reading: Reading) -> Values:
         if rail is wire.other:
             current = current - reading.wire_current(wire)
     point = reading.point
-    into = {Node.COLLECTOR: point.collector_current, Node.EMITTER: -(point.base_current + point.collector_current)}
+    emitted = point.base_current + point.collector_current
+    into = {Node.COLLECTOR: point.collector_current, Node.EMITTER: -emitted}
     for node, tied in reading.wiring.ties.items():
         current = current + into[node] if tied is rail else current
     return sign(reading.stage.polarity) * current
@@ -73,8 +76,9 @@ def _output_conductance(reading: Reading) -> Values:
 
 def _unbypassed(reading: Reading) -> Values:
     """The emitter resistance [Ω] that the signal sees."""
-    wires = [wire for wire in reading.coupled.wiring.wires if wire.node is Node.EMITTER]
-    return sum((total(wire, reading.coupled.resistances) for wire in wires if "load" not in wire.parts), start=0.0)
+    coupled = reading.coupled
+    wires = [w for w in coupled.wiring.wires if w.node is Node.EMITTER and w.other is Node.EMITTER_RAIL]
+    return sum((total(wire, coupled.resistances) for wire in wires), start=0.0)
 
 
 def _into_cut_off(reading: Reading) -> Values:
@@ -111,6 +115,12 @@ def _symmetric(reading: Reading) -> Values:
     return np.minimum(_into_cut_off(reading), _into_saturation(reading)) - reading.coupled_ripple
 
 
+def _of_signal(
+    answer: Callable[[signal.Coupled, Laws, OperatingPoint], Values],
+) -> Callable[[Reading], Values]:
+    return lambda reading: answer(reading.coupled, reading.law, reading.quiet)
+
+
 def _supply_feedthrough(reading: Reading) -> Values:
     return reading.feedthrough_open if reading.stage.signal is None else reading.feedthrough_short
 
@@ -120,7 +130,9 @@ def _peak_ripple(reading: Reading) -> Values:
 
 
 _PLAIN = (
-    Quantity("collector_voltage", Kind.VOLTAGE, _node_voltage(Node.COLLECTOR), _output_ripple_at(Node.COLLECTOR)),
+    Quantity(
+        "collector_voltage", Kind.VOLTAGE, _node_voltage(Node.COLLECTOR), _output_ripple_at(Node.COLLECTOR)
+    ),
     Quantity("base_voltage", Kind.VOLTAGE, _node_voltage(Node.BASE)),
     Quantity("emitter_voltage", Kind.VOLTAGE, _node_voltage(Node.EMITTER), _output_ripple_at(Node.EMITTER)),
     Quantity("collector_emitter_voltage", Kind.VOLTAGE, lambda r: r.point.collector_emitter),
@@ -133,11 +145,9 @@ _PLAIN = (
     Quantity("headroom_up", Kind.VOLTAGE, _headroom(up=True)),
     Quantity("headroom_down", Kind.VOLTAGE, _headroom(up=False)),
     Quantity("symmetric_peak_swing", Kind.VOLTAGE, _symmetric),
-    Quantity(
-        "voltage_gain", Kind.NUMBER, lambda r: signal.voltage_gain(r.coupled, r.law, r.quiet), by_magnitude=True
-    ),
-    Quantity("input_resistance", Kind.RESISTANCE, lambda r: signal.input_resistance(r.coupled, r.law, r.quiet)),
-    Quantity("output_resistance", Kind.RESISTANCE, lambda r: signal.output_resistance(r.coupled, r.law, r.quiet)),
+    Quantity("voltage_gain", Kind.NUMBER, _of_signal(signal.voltage_gain), by_magnitude=True),
+    Quantity("input_resistance", Kind.RESISTANCE, _of_signal(signal.input_resistance)),
+    Quantity("output_resistance", Kind.RESISTANCE, _of_signal(signal.output_resistance)),
     Quantity("supply_feedthrough", Kind.NUMBER, _supply_feedthrough),
     Quantity("output_ripple", Kind.VOLTAGE, _peak_ripple),
 )

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass, fields, replace
+from dataclasses import dataclass, fields
 from enum import IntEnum
 
 import numpy as np
@@ -62,9 +62,13 @@ class Problem:
 
     def part(self, rows: NDArray[np.bool_]) -> Problem:
         """The problem of the scenarios at `rows`."""
-        names = ("gain", "base_emitter_voltage", "leakage", "ambient")
-        return replace(
-            self, ports=self.ports.part(rows), **{name: rows_of(getattr(self, name), rows) for name in names}
+        return Problem(
+            self.ports.part(rows),
+            self.transistor,
+            gain=rows_of(self.gain, rows),
+            base_emitter_voltage=rows_of(self.base_emitter_voltage, rows),
+            leakage=rows_of(self.leakage, rows),
+            ambient=rows_of(self.ambient, rows),
         )
 
 
@@ -74,25 +78,24 @@ class Tangent:
 
     law: Laws
     flow: Flow
-    f1: Array
-    f2: Array
-    j11: Array
-    j12: Array
-    j21: Array
-    j22: Array
-    determinant: Array
+    f1: Values
+    f2: Values
+    j11: Values
+    j12: Values
+    j21: Values
+    j22: Values
+    determinant: Values
 
     @property
     def residual(self) -> Array:
         """The larger of the two residuals [V]."""
-        return np.maximum(np.abs(self.f1), np.abs(self.f2))
+        return np.asarray(np.maximum(np.abs(self.f1), np.abs(self.f2)))
 
     def solve(self, g1: Values, g2: Values) -> tuple[Array, Array]:
         """The voltages (x1, x2) with J·x = g."""
-        return (
-            (self.j22 * g1 - self.j12 * g2) / self.determinant,
-            (self.j11 * g2 - self.j21 * g1) / self.determinant,
-        )
+        x1 = (self.j22 * g1 - self.j12 * g2) / self.determinant
+        x2 = (self.j11 * g2 - self.j21 * g1) / self.determinant
+        return np.asarray(x1), np.asarray(x2)
 
 
 def tangent(ports: Ports, law: Laws, V_BE: Values, V_BC: Values) -> Tangent:
@@ -126,7 +129,7 @@ def active_start(ports: Ports, law: Laws) -> tuple[Array, Array]:
         V_BE = law.reference_voltage + V_T * np.log(law.forward_gain * drive / law.reference_current)
         V_BC = ports.open_bc - ports.z21 * (drive - leakage) - ports.z22 * (gain * drive + leakage)
         gain = law.forward_gain * (1.0 - V_BC * law.inverse_early)
-    return V_BE, np.minimum(V_BC, V_BE - _SATURATED_START)
+    return np.asarray(V_BE), np.asarray(np.minimum(V_BC, V_BE - _SATURATED_START))
 
 
 def limited(step: Array, thermal_voltage: Values) -> Array:
@@ -144,7 +147,8 @@ def newton(ports: Ports, law: Laws, V_BE: Array, V_BC: Array) -> Bias:
         V_BE = V_BE + limited(-d_be, law.thermal_voltage)
         V_BC = V_BC + limited(-d_bc, law.thermal_voltage)
         here = tangent(ports, law, V_BE, V_BC)
-    return Bias(V_BE, V_BC, here.flow.base, here.flow.collector, here.residual < RESIDUAL)
+    I_B, I_C = np.asarray(here.flow.base), np.asarray(here.flow.collector)
+    return Bias(V_BE, V_BC, I_B, I_C, here.residual < RESIDUAL)
 
 
 def patient(problem: Problem, temperature: Values) -> Bias:

@@ -68,74 +68,78 @@ def standing_checks(stage: Stage, *, cut_off: float) -> Standing:
 
 def _checks(stage: Stage, profile: Profile, cut_off: float) -> Iterator[Check | NotMade]:
     words = vocabulary(tuple(r.name for r in stage.resistors))
-    transistor = stage.transistor
-    yield _made_if(
-        transistor.saturation_voltage, "saturation", "transistor.saturation_voltage",
-        lambda volts: Check("saturation", "at_least", words["collector_emitter_voltage"], lambda r: volts),
+    sheet = stage.transistor
+    V_CE, I_C = words["collector_emitter_voltage"], words["collector_current"]
+    yield _check("saturation", "at_least", V_CE, sheet.saturation_voltage, "saturation_voltage")
+    yield Check("cut_off", "at_least", I_C, lambda r: cut_off)
+    power = _power_limit(stage, profile)
+    yield _check(
+        "transistor_power", "at_most", words["transistor_power"], sheet.max_power, "max_power", power
+    )
+    yield _check(
+        "supply_voltage", "at_most", _RAIL_TO_RAIL, sheet.max_collector_emitter, "max_collector_emitter",
+        lambda r, rating: profile.supply_voltage * rating,
     )  # fmt: skip
-    yield Check("cut_off", "at_least", words["collector_current"], lambda r: cut_off)
-    yield _made_if(
-        transistor.max_power, "transistor_power", "transistor.max_power",
-        lambda watts: Check("transistor_power", "at_most", words["transistor_power"], _power_limit(stage, profile, watts)),
+    yield _check(
+        "collector_current", "at_most", I_C, sheet.max_current, "max_current",
+        lambda r, rating: profile.current * rating,
     )  # fmt: skip
-    yield _made_if(
-        transistor.max_collector_emitter, "supply_voltage", "transistor.max_collector_emitter",
-        lambda volts: Check("supply_voltage", "at_most", _RAIL_TO_RAIL, lambda r: profile.supply_voltage * volts),
-    )  # fmt: skip
-    yield _made_if(
-        transistor.max_current, "collector_current", "transistor.max_current",
-        lambda amps: Check("collector_current", "at_most", words["collector_current"], lambda r: profile.current * amps),
-    )  # fmt: skip
-    yield _junction_check(stage, profile, words)
+    yield _junction_check(stage, profile, words["junction_temperature"])
     if stage.signal is not None and stage.signal.bypassed:
-        yield _made_if(
-            transistor.max_emitter_base, "emitter_base_voltage", "transistor.max_emitter_base",
-            lambda volts: Check("emitter_base_voltage", "at_most", _HELD_UP, lambda r: profile.emitter_base_voltage * volts),
+        yield _check(
+            "emitter_base_voltage", "at_most", _HELD_UP, sheet.max_emitter_base, "max_emitter_base",
+            lambda r, rating: profile.emitter_base_voltage * rating,
         )  # fmt: skip
     for resistor in stage.resistors:
-        yield _resistor_check(resistor, profile, words)
+        yield _resistor_check(resistor, profile, words[f"resistor_power.{resistor.name}"])
 
 
-def _made_if(
-    limit: float | None, name: str, key: str, make: Callable[[float], Check]
+LimitOf = Callable[[Reading, float], Values]
+"""The limit in every scenario, from a rating."""
+
+
+def _check(
+    name: str, side: Side, value: Quantity, rating: float | None, key: str, limit: LimitOf = lambda r, x: x
 ) -> Check | NotMade:
-    return NotMade(name, key) if limit is None else make(limit)
+    """A check against a rating of the data sheet, or the reason why it is not made."""
+    if rating is None:
+        return NotMade(name, key if "." in key else f"transistor.{key}")
+    return Check(name, side, value, lambda r: limit(r, rating))
 
 
-def _power_limit(stage: Stage, profile: Profile, max_power: float) -> Callable[[Reading], Values]:
+def _power_limit(stage: Stage, profile: Profile) -> LimitOf:
     """Factor × min(P_tot, (T_j max − T_a)/R_θJA); P_tot alone where either is not stated."""
-    transistor = stage.transistor
-    hottest, per_watt = transistor.max_junction, transistor.thermal_resistance
-    if hottest is None or not per_watt:
-        return lambda r: profile.transistor_power * max_power
-    return lambda r: profile.transistor_power * np.minimum(
-        max_power, (hottest - r.scenarios.temperature) / per_watt
+    hottest, per_watt = stage.transistor.max_junction, stage.transistor.thermal_resistance
+
+    def limit(reading: Reading, max_power: float) -> Values:
+        if hottest is None or not per_watt:
+            return profile.transistor_power * max_power
+        at_ambient = (hottest - reading.scenarios.temperature) / per_watt
+        return profile.transistor_power * np.minimum(max_power, at_ambient)
+
+    return limit
+
+
+def _junction_check(stage: Stage, profile: Profile, value: Quantity) -> Check | NotMade:
+    name, sheet = "junction_temperature", stage.transistor
+    if sheet.thermal_resistance is None:
+        return NotMade(name, "transistor.thermal_resistance")
+    return _check(
+        name, "at_most", value, sheet.max_junction, "max_junction", lambda r, x: profile.junction_limit(x)
     )
 
 
-def _junction_check(stage: Stage, profile: Profile, words: Mapping[str, Quantity]) -> Check | NotMade:
-    if stage.transistor.thermal_resistance is None:
-        return NotMade("junction_temperature", "transistor.thermal_resistance")
-    return _made_if(
-        stage.transistor.max_junction, "junction_temperature", "transistor.max_junction",
-        lambda kelvin: Check(
-            "junction_temperature", "at_most", words["junction_temperature"], lambda r: profile.junction_limit(kelvin)
-        ),
-    )  # fmt: skip
-
-
-def _resistor_check(resistor: Resistor, profile: Profile, words: Mapping[str, Quantity]) -> Check | NotMade:
-    name = f"resistor_power.{resistor.name}"
-
-    def limit(rating: float) -> Callable[[Reading], Values]:
-        return lambda r: profile.resistor_power * derated_rating(
-            rating, r.scenarios.temperature, derate_from=resistor.derate_from, derate_to=resistor.derate_to
+def _resistor_check(resistor: Resistor, profile: Profile, value: Quantity) -> Check | NotMade:
+    def limit(reading: Reading, rating: float) -> Values:
+        return profile.resistor_power * derated_rating(
+            rating,
+            reading.scenarios.temperature,
+            derate_from=resistor.derate_from,
+            derate_to=resistor.derate_to,
         )
 
-    return _made_if(
-        resistor.power_rating, name, f"resistors.{resistor.name}.power_rating",
-        lambda watts: Check(name, "at_most", words[name], limit(watts)),
-    )  # fmt: skip
+    key = f"resistors.{resistor.name}.power_rating"
+    return _check(value.name, "at_most", value, resistor.power_rating, key, limit)
 
 
 _RAIL_TO_RAIL = Quantity(
@@ -154,10 +158,9 @@ def check_margins(stage: Stage, checks: Sequence[Check], evidence: Evidence) -> 
     worst = [evidence.corners.ranges[check.slack.name].low for check in checks]
     box = axes(stage)
     rows = [{axis.name: axis.nominal for axis in box}, *(extreme.coordinates for extreme in worst)]
-    reading = read(stage, realise(stage, {axis.name: np.array([row[axis.name] for row in rows]) for axis in box}))
-    return tuple(
-        _check_margin(check, reading, row, evidence) for row, check in enumerate(checks, start=1)
-    )
+    columns = {axis.name: np.array([row[axis.name] for row in rows]) for axis in box}
+    reading = read(stage, realise(stage, columns))
+    return tuple(_check_margin(check, reading, row, evidence) for row, check in enumerate(checks, start=1))
 
 
 def _check_margin(check: Check, reading: Reading, row: int, evidence: Evidence) -> Margin:

@@ -64,7 +64,9 @@ def _found(quantity: Quantity, side: Side, evidence: Evidence) -> _Side:
     )
 
 
-def _margin(requirement: Requirement, side: Side, limit: float, quantity: Quantity, evidence: Evidence) -> Margin:
+def _margin(
+    requirement: Requirement, side: Side, limit: float, quantity: Quantity, evidence: Evidence
+) -> Margin:
     found = _found(quantity, side, evidence)
     sign = 1.0 if side == "at_least" else -1.0
     at_corners = sign * (found.worst.value - limit)

@@ -21,7 +21,8 @@ def margin_frame(rows: Sequence[Margin]) -> pd.DataFrame:
         "id", "quantity", "limit", "side", "judged_by", "nominal", "corners", "rss", "yield_held",
         "yield_low", "margin", "margin_share", "verdict", "main_cause", "standing",
     )  # fmt: skip
-    return pd.DataFrame([{name: getattr(row, name) for name in columns} for row in rows], columns=list(columns))
+    table = [{name: getattr(row, name) for name in columns} for row in rows]
+    return pd.DataFrame(table, columns=list(columns))
 
 
 def corner_frame(corners: Corners) -> pd.DataFrame:

@@ -134,7 +134,12 @@ def spread(stage: Stage, *, boards: int = BOARDS, seed: int = 1) -> sampling.Boa
     chosen = design(stage).stage
     check_sampling(boards, seed)
     return sampling.sample(
-        chosen, words(chosen), points_of_use(chosen), boards=boards, seed=seed, cut_off=cut_off_current(chosen)
+        chosen,
+        words(chosen),
+        points_of_use(chosen),
+        boards=boards,
+        seed=seed,
+        cut_off=cut_off_current(chosen),
     )
 
 

@@ -41,16 +41,17 @@ def _outside(evidence: Evidence) -> Iterator[str]:
     """Sampled values beyond the corner limits: a defect of the corner set, never kept quiet."""
     for name, spread in evidence.boards.spread.items():
         found = evidence.corners.ranges[name]
-        low, high = spread.lowest_in_use.quantile(0.0), spread.highest_in_use.quantile(1.0)
+        low, high = spread.lowest_in_use.lowest, spread.highest_in_use.highest
         slack = _ROUNDING * max(abs(found.low.value), abs(found.high.value))
         if low < found.low.value - slack or high > found.high.value + slack:
-            yield f"{name}: a sampled board lies outside the corner limits, so the corners are not the worst case"
+            yield f"{name}: a sampled board lies outside the corner limits: the corners miss the worst case"
 
 
 def _assumed(stage: Stage) -> Iterator[str]:
     transistor = stage.transistor
     if transistor.saturation_voltage is None:
-        yield f"no saturation_voltage given: V_CE(sat) = {ASSUMED_SATURATION_VOLTAGE:g} V assumed (common practice)"
+        assumed = f"{ASSUMED_SATURATION_VOLTAGE:g} V assumed (common practice)"
+        yield f"no saturation_voltage given: V_CE(sat) = {assumed}"
     if isinstance(transistor, Transistor) and transistor.thermal_resistance is None:
         yield "no thermal_resistance given: self-heating is left out, the junction is taken at ambient"
     if isinstance(transistor, Transistor) and transistor.leakage == 0.0:
@@ -73,5 +74,7 @@ def _far_from_test(stage: Stage, nominal: Mapping[str, float]) -> Iterator[str]:
 def _dangers(stage: Stage) -> Iterator[str]:
     rails = [stage.supply.voltage.high + stage.supply.ripple_peak]
     rails += [-stage.negative_supply.voltage.low] if stage.negative_supply else []
-    if sum(rails) > HIGH_VOLTAGE:
-        yield f"the supply reaches {sum(rails):.3g} V: above {HIGH_VOLTAGE:g} V DC it can hurt; local codes apply"
+    highest = sum(rails)
+    if highest > HIGH_VOLTAGE:
+        reason = f"above {HIGH_VOLTAGE:g} V DC it can hurt, and local codes apply"
+        yield f"the supply reaches {highest:.3g} V: {reason}"

@@ -25,6 +25,9 @@ DEFAULT_EMITTER_VOLTAGE = 1.0
 STIFF_BASE = 0.1
 """R_B = 0.1·β·R_E for a base fed from ground (common practice)."""
 
+MET = 1e-3
+"""A current met to this share, a voltage met to this share of the supply, is met."""
+
 _PASSES = 50
 _BISECTIONS = 80
 _CURRENTS = (float(np.log(1e-9)), float(np.log(100.0)))
@@ -32,25 +35,34 @@ _INDEPENDENT = 1e-9
 
 
 @dataclass(frozen=True)
+class Miss:
+    """A wish that the fixed resistors leave no freedom for: quantity, what is reached and wished [SI]."""
+
+    quantity: str
+    reached: float
+    wished: float
+
+
+@dataclass(frozen=True)
 class Aim:
-    """Node voltages [V] in the transistor's frame, rails included, and the transistor's need."""
+    """Node voltages [V] in the transistor's frame, rails included, the transistor's need, the misses."""
 
     volts: Mapping[Node, float]
     need: Need
-
-    @property
-    def V_CE(self) -> float:
-        """V_CE [V]."""
-        return self.volts[Node.COLLECTOR] - self.volts[Node.EMITTER]
+    missed: tuple[Miss, ...] = ()
 
 
 @dataclass(frozen=True)
 class _Equation:
-    """`emitter·V_E + collector·V_C = right`."""
+    """`emitter·V_E + collector·V_C = right` [V]."""
 
     emitter: float
     collector: float
     right: float
+
+    def left_over(self, V_E: float, V_C: float) -> float:
+        """By how much [V] the voltages miss the equation."""
+        return self.emitter * V_E + self.collector * V_C - self.right
 
 
 def frame_rails(stage: Stage) -> dict[Node, float]:
@@ -71,7 +83,8 @@ def aim(stage: Stage, target: Target, fixed: Mapping[str, float], device: Device
     if equations.surplus(device, I_C) is not None:
         I_C = _bisect(lambda log_I: equations.surplus(device, float(np.exp(log_I))) or 0.0, *_CURRENTS)
         I_C = float(np.exp(I_C))
-    return equations.solve(device, I_C)
+    aimed = equations.solve(device, I_C)
+    return replace(aimed, missed=tuple(equations.missed(aimed)))
 
 
 class _Equations:
@@ -100,9 +113,22 @@ class _Equations:
         kept: list[_Equation] = []
         for equation in self._given(aimed.need):
             if not _adds(kept, equation):
-                return equation.emitter * V_E + equation.collector * V_C - equation.right
+                return equation.left_over(V_E, V_C)
             kept.append(equation)
         return None
+
+    def missed(self, aimed: Aim) -> Iterator[Miss]:
+        """The wishes that came to nothing, the collector current first."""
+        wished_current = self.target.collector_current
+        if abs(aimed.need.I_C / wished_current - 1.0) > MET:
+            yield Miss("collector_current", aimed.need.I_C, wished_current)
+        V_E, V_C, real = aimed.volts[Node.EMITTER], aimed.volts[Node.COLLECTOR], sign(self.stage.polarity)
+        span = self.span[Node.COLLECTOR_RAIL] - self.span[Node.EMITTER_RAIL]
+        for wish in self._wished(aimed.need):
+            off = wish.left_over(V_E, V_C)
+            if abs(off) > MET * span and Node.EMITTER not in self.wiring.ties:
+                name, volts = ("collector_voltage", V_C) if wish.collector else ("emitter_voltage", V_E)
+                yield Miss(name, real * volts, real * (volts - off))
 
     def _given(self, need: Need) -> Iterator[_Equation]:
         """Ties to a rail, and Kirchhoff's current law where all resistors of a terminal are fixed."""
@@ -127,8 +153,12 @@ class _Equations:
 
     def _terms(self, node: Node, need: Need) -> np.ndarray[tuple[int], np.dtype[np.float64]]:
         """A node's voltage as (share of V_E, share of V_C, constant)."""
-        known = {Node.BASE: (1.0, 0.0, need.V_BE), Node.COLLECTOR: (0.0, 1.0, 0.0), Node.EMITTER: (1.0, 0.0, 0.0)}
-        return np.array(known.get(node) or (0.0, 0.0, self.span[node]))
+        terms = {
+            Node.BASE: (1.0, 0.0, need.V_BE),
+            Node.COLLECTOR: (0.0, 1.0, 0.0),
+            Node.EMITTER: (1.0, 0.0, 0.0),
+        }
+        return np.array(terms.get(node) or (0.0, 0.0, self.span[node]))
 
     def _wished(self, need: Need) -> Iterator[_Equation]:
         """The output's place first, then the emitter's voltage."""
@@ -168,7 +198,8 @@ class _Equations:
         """V_C with I_C·(r_ac + r_e) = V_CE − V_CE(sat): cut-off and saturation equally far."""
         upper, lower, V_sat = *_ends(self.span), self.stage.saturation_voltage
         middle = _Equation(-0.5, 1.0, 0.5 * (upper + V_sat))
-        V_E, _ = _voltages([*self._given(need), middle, _Equation(1.0, 0.0, lower + (self._emitter_voltage() or 0.0))])
+        emitter = _Equation(1.0, 0.0, lower + (self._emitter_voltage() or 0.0))
+        V_E, _ = _voltages([*self._given(need), middle, emitter])
         r_e = self._unbypassed((V_E - lower) / need.I_E)
 
         def imbalance(V_C: float) -> float:
@@ -210,7 +241,8 @@ def fed_from_ground(wiring: Wiring) -> bool:
 def draw(node: Node, wires: list[Wire], need: Need) -> float:
     """What the transistor draws from a terminal [A]; by hand nothing from a divider."""
     stiff = need.stiff and any(wire.other is Node.EMITTER_RAIL for wire in wires)
-    return {Node.BASE: 0.0 if stiff else need.I_B, Node.COLLECTOR: need.I_C, Node.EMITTER: -need.I_E}[node]
+    I_B = 0.0 if stiff else need.I_B
+    return {Node.BASE: I_B, Node.COLLECTOR: need.I_C, Node.EMITTER: -need.I_E}[node]
 
 
 def _loaded(ohms: float, signal: Signal | None) -> float:
@@ -228,7 +260,8 @@ def _adds(kept: list[_Equation], equation: _Equation) -> bool:
     if not kept:
         return True
     first = kept[0]
-    return len(kept) < 2 and abs(first.emitter * equation.collector - first.collector * equation.emitter) > _INDEPENDENT
+    determinant = first.emitter * equation.collector - first.collector * equation.emitter
+    return len(kept) < 2 and abs(determinant) > _INDEPENDENT
 
 
 def _voltages(equations: list[_Equation]) -> tuple[float, float]:

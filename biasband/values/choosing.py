@@ -5,19 +5,19 @@ The choice stands above the margins because a later way of choosing judges by th
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, replace
 
-from biasband.circuit.reading import read
 from biasband.errors import PhysicallyImpossible
 from biasband.parts.series import Series, nearest
+from biasband.quantity import Kind, format_quantity
 from biasband.stage import Stage, Target
+from biasband.values.aim import Miss
 from biasband.values.device import hand, refined
 from biasband.values.ideal import Ideal, Step, ideal
-from biasband.variation.contributors import realise
 
-MET = 1e-3
-"""A target met to this share is met."""
+SNAPPING = 0.1
+"""A target that frozen values miss by less than this share was missed by snapping."""
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -59,20 +59,21 @@ def choose(stage: Stage, series: Mapping[str, Series]) -> Design:
     target = stage.target
     if target is None or len(fixed) == len(stage.resistors):
         parts = tuple(PartChoice(name=name, value=value, chosen=False) for name, value in fixed.items())
-        return Design(stage, parts, ())
+        return Design(stage, parts, tuple(_frozen_away(stage, fixed)))
     by_hand = _hand_steps(stage, target, fixed)
     exact = ideal(stage, target, fixed, refined(stage))
     values, warnings = _snapped(stage, target, fixed, exact, series)
     parts = tuple(
         PartChoice(
-            name=r.name, value=values[r.name], chosen=r.name not in fixed,
-            hand=by_hand.get(r.name), ideal=exact.steps.get(r.name),
-        )  # fmt: skip
+            name=r.name,
+            value=values[r.name],
+            chosen=r.name not in fixed,
+            hand=by_hand.get(r.name),
+            ideal=exact.steps.get(r.name),
+        )
         for r in stage.resistors
     )
-    ohms = {name: step.ohms for name, step in exact.steps.items()}
-    missed = _missed(with_values(stage, {**fixed, **ohms}), target, exact, fixed)
-    return Design(with_values(stage, values), parts, (*missed, *warnings))
+    return Design(with_values(stage, values), parts, (*_missed(exact.aim.missed, fixed), *warnings))
 
 
 def with_values(stage: Stage, values: Mapping[str, float]) -> Stage:
@@ -108,18 +109,23 @@ def _snapped(
     return values, warnings
 
 
-def _missed(ideal_stage: Stage, target: Target, exact: Ideal, fixed: Mapping[str, float]) -> list[str]:
+def _frozen_away(stage: Stage, fixed: Mapping[str, float]) -> Iterator[str]:
+    """Where a stage whose values are all given misses its target by more than snapping explains."""
+    if stage.target is None:
+        return
+    try:
+        exact = ideal(stage, stage.target, fixed, refined(stage))
+    except PhysicallyImpossible:
+        return  # no active point: the review says what region the stage stands in
+    for miss in exact.aim.missed:
+        if abs(miss.reached - miss.wished) > SNAPPING * abs(miss.wished):
+            yield from _missed((miss,), fixed)
+
+
+def _missed(misses: tuple[Miss, ...], fixed: Mapping[str, float]) -> Iterator[str]:
     """What the fixed resistors make the ideal stage miss, and by how much."""
-    if not fixed:
-        return []
-    point = read(ideal_stage, realise(ideal_stage, {})).point
-    reached = float(point.collector_current[0])
-    off = reached / target.collector_current - 1.0
     held = ", ".join(fixed)
-    missed = []
-    if abs(off) > MET:
-        missed.append(
-            f"collector_current: the fixed {held} leave no freedom for it: "
-            f"{reached * 1e3:.4g} mA instead of {target.collector_current * 1e3:.4g} mA ({off:+.1%})"
-        )
-    return missed
+    for miss in misses:
+        kind = Kind.CURRENT if miss.quantity == "collector_current" else Kind.VOLTAGE
+        reached, wished = (format_quantity(value, kind) for value in (miss.reached, miss.wished))
+        yield f"{miss.quantity}: the fixed {held} leave no freedom for {wished}: the ideal stage has {reached}"

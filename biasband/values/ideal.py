@@ -56,7 +56,8 @@ def ideal(stage: Stage, target: Target, fixed: Mapping[str, float], device: Devi
         aimed = aim(stage, target, fixed, device)
     except ArithmeticError:
         held = ", ".join(fixed) or "the target"
-        raise _impossible(stage, "resistors", f"no collector current satisfies {held} at this supply") from None
+        problem = f"no collector current satisfies {held} at this supply"
+        raise PhysicallyImpossible((Fault(_file(stage), None, "resistors", problem),)) from None
     steps = {step.resistor: step for step in _Walk(stage, target, fixed, aimed).steps()}
     bad = [step for step in steps.values() if not step.ohms > 0.0]
     if bad:
@@ -64,14 +65,11 @@ def ideal(stage: Stage, target: Target, fixed: Mapping[str, float], device: Devi
     return Ideal(steps, aimed)
 
 
-def _impossible(stage: Stage, key: str, problem: str) -> PhysicallyImpossible:
-    return PhysicallyImpossible((Fault(_file(stage), None, key, problem),))
-
-
 def _negative(stage: Stage, step: Step) -> Fault:
-    place = f"with {step.high:.3g} V on one side, {step.low:.3g} V on the other and {step.current:.3g} A through it"
-    problem = f"would have to be {step.ohms:.4g} ohm, {place}"
-    return Fault(_file(stage), None, f"resistors.{step.resistor}", problem, hint="move the target or the fixed values")
+    ends = f"{step.high_node} at {step.high:.3g} V, {step.low_node} at {step.low:.3g} V"
+    problem = f"would have to be {step.ohms:.4g} ohm: {ends}, {step.current:.3g} A through it"
+    key = f"resistors.{step.resistor}"
+    return Fault(_file(stage), None, key, problem, hint="move the target or the fixed values")
 
 
 def _file(stage: Stage) -> str:
@@ -142,8 +140,3 @@ class _Walk:
             resistor=name, ohms=ohms, high_node=ends[0], high=real[ends[0]], low_node=ends[1],
             low=real[ends[1]], current=abs(current), beside=beside, rule=rule,
         )  # fmt: skip
-
-
-def ideal_stage_values(stage: Stage, target: Target, fixed: Mapping[str, float], device: Device) -> dict[str, float]:
-    """All resistors [Ω] of the ideal stage: the fixed ones and the designed ones."""
-    return {**fixed, **{name: step.ohms for name, step in ideal(stage, target, fixed, device).steps.items()}}

@@ -16,11 +16,14 @@ from biasband.circuit.operating_point import Region
 from biasband.circuit.scenarios import Array
 from biasband.stage import Stage
 from biasband.variation.contributors import RIPPLE, Axis, axes, realise
-from biasband.variation.evaluation import Measures, evaluate
-from biasband.variation.interior import Start, search
+from biasband.variation.evaluation import Measures, Outcome, evaluate
+from biasband.variation.interior import Climbs, search
 
 _STARTS_SPLIT_BY = ("gain", "temperature")
 """The axes along which extremes wander: the best vertex on either side of each is a start."""
+
+_EQUAL = 1e-9
+"""Extremes that differ relatively by less are the same, found twice."""
 
 
 @dataclass(frozen=True)
@@ -65,21 +68,11 @@ def corners(stage: Stage, measures: Measures, *, cut_off: float) -> Corners:
     vertices = _vertices(box)
     points = np.vstack([vertices, [_middle(axis) for axis in box]])
     outcome = evaluate(stage, _columns(box, points), measures, cut_off=cut_off)
+    found = search(stage, box, _starts(box, points, measures, outcome), measures, cut_off=cut_off)
     regions = outcome.region[:-1]
-    starts = [
-        start
-        for name in measures
-        for sign, values in ((-1.0, outcome.low[name]), (1.0, outcome.high[name]))
-        for start in _starts(box, points, name, sign, values)
-    ]
-    best = search(stage, box, starts, measures, cut_off=cut_off)
-    ranges = {
-        name: Range(_extreme(stage, box, best[name, -1.0]), _extreme(stage, box, best[name, 1.0]))
-        for name in measures
-    }
     present = [Region(code) for code in np.unique(regions)]
     return Corners(
-        ranges,
+        ranges=_ranges(stage, box, measures, found),
         count=len(vertices),
         regions={region: int(np.sum(regions == region)) for region in present},
         region_at={r: values_at(stage, _point(box, points[np.argmax(regions == r)])) for r in present},
@@ -96,11 +89,7 @@ def _vertices(box: tuple[Axis, ...]) -> Array:
     if not box:
         return np.zeros((1, 0))
     sides = np.indices((2,) * len(box)).reshape(len(box), -1).T
-    return 2.0 * sides - 1.0
-
-
-def _columns(box: tuple[Axis, ...], points: Array) -> dict[str, Array]:
-    return {axis.name: points[:, k] for k, axis in enumerate(box)}
+    return np.asarray(2.0 * sides - 1.0, dtype=np.float64)
 
 
 def _middle(axis: Axis) -> float:
@@ -108,22 +97,56 @@ def _middle(axis: Axis) -> float:
     return -1.0 if axis.name == RIPPLE else axis.nominal
 
 
+def _columns(box: tuple[Axis, ...], points: Array) -> dict[str, Array]:
+    return {axis.name: points[:, k] for k, axis in enumerate(box)}
+
+
 def _point(box: tuple[Axis, ...], row: Array) -> dict[str, float]:
     return {axis.name: float(value) for axis, value in zip(box, row, strict=True)}
 
 
-def _starts(box: tuple[Axis, ...], points: Array, name: str, sign: float, values: Array) -> list[Start]:
-    """The best vertex on either side of the axes along which extremes wander, then the middle of the box."""
-    score = np.where(np.isnan(values), -np.inf, sign * values)
-    found = {int(np.argmax(score[:-1]))}
-    for k, axis in enumerate(box):
-        if axis.name in _STARTS_SPLIT_BY:
-            found |= {int(np.argmax(np.where(points[:, k] == side, score, -np.inf))) for side in (-1.0, 1.0)}
-    rows = sorted(found, key=lambda row: -score[row])
-    return [Start(name, sign, float(values[row]), points[row]) for row in (*rows, -1)]
+def _starts(box: tuple[Axis, ...], points: Array, measures: Measures, outcome: Outcome) -> Climbs:
+    """For each measure, downward and upward: the best vertices first, then the middle of the box."""
+    rows, measure, sign, score = [], [], [], []
+    for k, name in enumerate(measures):
+        for side, values in ((-1.0, outcome.low[name]), (1.0, outcome.high[name])):
+            scored = np.where(np.isnan(values), -np.inf, side * values)
+            starts = [*_best_vertices(box, points, scored), len(points) - 1]
+            rows += starts
+            measure += [k] * len(starts)
+            sign += [side] * len(starts)
+            score += [scored[row] for row in starts]
+    return Climbs(np.array(measure), np.array(sign), points[rows], np.array(score))
 
 
-def _extreme(stage: Stage, box: tuple[Axis, ...], start: Start) -> Extreme:
-    coordinates = _point(box, start.point)
-    interior = any(abs(value) < 1.0 for value in coordinates.values())
-    return Extreme(start.value, coordinates, values_at(stage, coordinates), interior)
+def _best_vertices(box: tuple[Axis, ...], points: Array, scored: Array) -> list[int]:
+    """The best vertex, and the best on either side of the axes along which extremes wander."""
+    best = int(np.argmax(scored[:-1]))
+    others = {
+        int(np.argmax(np.where(points[:, k] == side, scored, -np.inf)))
+        for k, axis in enumerate(box)
+        if axis.name in _STARTS_SPLIT_BY
+        for side in (-1.0, 1.0)
+    }
+    return [best, *sorted(others - {best})]
+
+
+def _ranges(stage: Stage, box: tuple[Axis, ...], measures: Measures, found: Climbs) -> dict[str, Range]:
+    """The best climb of each measure either way; of equals the earlier start wins."""
+    ranges = {}
+    for k, name in enumerate(measures):
+        low, high = (
+            _extreme(stage, box, found.part(np.flatnonzero((found.measure == k) & (found.sign == side))))
+            for side in (-1.0, 1.0)
+        )
+        ranges[name] = Range(low, high)
+    return ranges
+
+
+def _extreme(stage: Stage, box: tuple[Axis, ...], climbs: Climbs) -> Extreme:
+    top = float(np.max(climbs.score))
+    winner = int(np.argmax(climbs.score >= top - _EQUAL * abs(top)))
+    coordinates = _point(box, climbs.point[winner])
+    interior = any(abs(x) < 1.0 for x in coordinates.values())
+    value = climbs.sign[winner] * climbs.score[winner] if np.isfinite(top) else np.nan
+    return Extreme(float(value), coordinates, values_at(stage, coordinates), interior)

@@ -7,21 +7,21 @@ statistical problems", J. ACM 8 (1961), in its simplest form.
 
 from __future__ import annotations
 
-from collections.abc import Sequence
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 
 import numpy as np
+from numpy.typing import NDArray
 
 from biasband.circuit.scenarios import Array
 from biasband.stage import Stage
 from biasband.variation.contributors import Axis
-from biasband.variation.evaluation import Measures, evaluate
+from biasband.variation.evaluation import Measures, Outcome, evaluate
 
 _STEPS = tuple(0.75 * 2.0**-k for k in range(14))
 """Never a sum that leads from a limit to exactly nominal, where ripple is absent."""
 
 _TRIAL_STEPS = 6
-"""A start that none of the first steps (down to 1/32 of half the axis) improves is left alone."""
+"""A start that none of the first steps (down to 1/43 of an axis) improves is left alone."""
 
 _MOVES_PER_STEP = 4
 _WORTHWHILE = 1e-9
@@ -29,74 +29,63 @@ _WORTHWHILE = 1e-9
 
 
 @dataclass(frozen=True)
-class Start:
-    """A point of the box, shape (K,), from which a measure is driven down (−1) or up (+1)."""
+class Climbs:
+    """S climbs through the box: `point` (S, K), the `score` (S,) that each raises, and of what.
 
-    measure: str
-    sign: float
-    value: float
+    `measure` (S,) counts into the measures; a climb raises `sign` × that measure. The score is
+    −inf where the point is not solved.
+    """
+
+    measure: NDArray[np.intp]
+    sign: Array
     point: Array
+    score: Array
 
-    @property
-    def score(self) -> float:
-        """What the search raises; −inf where the point is not solved."""
-        return -np.inf if np.isnan(self.value) else self.sign * self.value
+    def part(self, rows: NDArray[np.intp]) -> Climbs:
+        """The climbs at `rows`."""
+        return Climbs(self.measure[rows], self.sign[rows], self.point[rows], self.score[rows])
+
+
+def scores(outcome: Outcome, names: tuple[str, ...], climbs: Climbs) -> Array:
+    """What each climb scores in its own block of the outcome's scenarios, shape (S, N/S)."""
+    table = np.empty((len(climbs.sign), outcome.region.size // len(climbs.sign)))
+    for row, name in enumerate(names):
+        for sign, values in ((-1.0, outcome.low[name]), (1.0, outcome.high[name])):
+            mine = np.flatnonzero((climbs.measure == row) & (climbs.sign == sign))
+            table[mine] = sign * values.reshape(table.shape)[mine]
+    return np.where(np.isnan(table), -np.inf, table)
 
 
 def search(
-    stage: Stage, box: tuple[Axis, ...], starts: Sequence[Start], measures: Measures, *, cut_off: float
-) -> dict[tuple[str, float], Start]:
-    """The best point found for every (measure, sign); of equals the earlier start wins."""
-    here, moved = list(starts), np.zeros(len(starts), dtype=bool)
-    live = np.ones(len(starts), dtype=bool)
+    stage: Stage, box: tuple[Axis, ...], climbs: Climbs, measures: Measures, *, cut_off: float
+) -> Climbs:
+    """Drive every climb as high as it goes; a climb that nothing improves keeps its start."""
+    point, score = climbs.point.copy(), climbs.score.copy()
+    moved, live = np.zeros(len(score), dtype=bool), np.ones(len(score), dtype=bool)
     for count, step in enumerate(_STEPS if box else ()):
+        rows = np.flatnonzero(live)
         for _ in range(_MOVES_PER_STEP):
-            rows = np.flatnonzero(live)
             if not rows.size:
                 break
-            better = _improve(stage, box, [here[row] for row in rows], step, measures, cut_off)
-            changed = [b is not here[row] for row, b in zip(rows, better, strict=True)]
-            for row, start in zip(rows, better, strict=True):
-                here[row] = start
-            moved[rows] |= changed
-            if not any(changed):
-                break
+            here = Climbs(climbs.measure[rows], climbs.sign[rows], point[rows], score[rows])
+            better = _neighbours(stage, box, here, step, measures, cut_off)
+            rounding = _WORTHWHILE * np.abs(np.nan_to_num(better.score, neginf=0.0))
+            gained = better.score > here.score + rounding
+            rows, better = rows[gained], better.part(np.flatnonzero(gained))
+            point[rows], score[rows], moved[rows] = better.point, better.score, True
         if count >= _TRIAL_STEPS:
             live &= moved
-    best: dict[tuple[str, float], Start] = {}
-    for start in here:
-        key = (start.measure, start.sign)
-        if key not in best or start.score > best[key].score + _WORTHWHILE * abs(start.value):
-            best[key] = start
-    return best
+    return Climbs(climbs.measure, climbs.sign, point, score)
 
 
-def _improve(
-    stage: Stage,
-    box: tuple[Axis, ...],
-    starts: Sequence[Start],
-    step: float,
-    measures: Measures,
-    cut_off: float,
-) -> list[Start]:
-    """Each start moved to its best neighbour one step away, or the start itself."""
+def _neighbours(
+    stage: Stage, box: tuple[Axis, ...], here: Climbs, step: float, measures: Measures, cut_off: float
+) -> Climbs:
+    """Each climb at the best of the points one step away along an axis."""
     directions = np.concatenate([np.eye(len(box)), -np.eye(len(box))]) * step
-    tried = np.clip(np.stack([s.point for s in starts])[:, None, :] + directions, -1.0, 1.0)
+    tried = np.clip(here.point[:, None, :] + directions, -1.0, 1.0)
     columns = {axis.name: tried[:, :, k].ravel() for k, axis in enumerate(box)}
-    wanted = {start.measure: measures[start.measure] for start in starts}
-    outcome = evaluate(stage, columns, wanted, cut_off=cut_off)
-    shape = tried.shape[:2]
-    low = {name: values.reshape(shape) for name, values in outcome.low.items()}
-    high = {name: values.reshape(shape) for name, values in outcome.high.items()}
-    return [
-        _best(start, tried[row], (low if start.sign < 0.0 else high)[start.measure][row])
-        for row, start in enumerate(starts)
-    ]
-
-
-def _best(start: Start, points: Array, values: Array) -> Start:
-    score = np.where(np.isnan(values), -np.inf, start.sign * values)
-    top = int(np.argmax(score))
-    if not score[top] > start.score + _WORTHWHILE * abs(values[top]):
-        return start
-    return replace(start, value=float(values[top]), point=points[top])
+    table = scores(evaluate(stage, columns, measures, cut_off=cut_off), tuple(measures), here)
+    best = np.argmax(table, axis=1)
+    rows = np.arange(len(best))
+    return Climbs(here.measure, here.sign, tried[rows, best], table[rows, best])

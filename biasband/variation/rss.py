@@ -61,4 +61,4 @@ def _reach(values: Array) -> Array:
     centre = values[:, 0]
     moved = (values[:, 1:] - centre[:, None]).reshape(len(values), -1, 2)
     upward = np.maximum(moved.max(axis=2), 0.0) if moved.size else np.zeros((len(values), 0))
-    return centre + np.sqrt(np.sum(upward**2, axis=1))
+    return np.asarray(centre + np.sqrt(np.sum(upward**2, axis=1)))

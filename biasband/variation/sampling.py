@@ -61,7 +61,7 @@ def _uniform(name: str, rows: slice, seed: int) -> Array:
     stream = np.random.Philox(np.random.SeedSequence([seed, *name.encode()]))
     stream.advance(rows.start // 4)
     skip = rows.start % 4
-    return np.random.Generator(stream).random(rows.stop - rows.start + skip)[skip:]
+    return np.asarray(np.random.Generator(stream).random(rows.stop - rows.start + skip)[skip:])
 
 
 def _shape(distribution: Distribution, u: Array) -> Array:
@@ -85,6 +85,16 @@ class Sample:
     @cached_property
     def _solved(self) -> Array:
         return np.sort(self.values[~np.isnan(self.values)])
+
+    @property
+    def lowest(self) -> float:
+        """The lowest of all solved boards; NaN where there is none."""
+        return float(np.fmin.reduce(self.values))
+
+    @property
+    def highest(self) -> float:
+        """The highest of all solved boards; NaN where there is none."""
+        return float(np.fmax.reduce(self.values))
 
     @property
     def mean(self) -> float:
