@@ -7,6 +7,7 @@ ambient and it.
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
@@ -15,12 +16,13 @@ from numpy.typing import NDArray
 from biasband.circuit.active import Bias, active_region
 from biasband.circuit.junction import Laws, flow_drift
 from biasband.circuit.network import Ports
+from biasband.circuit.newton import tangent
 from biasband.circuit.scenarios import Array, Scenarios, Values
-from biasband.circuit.solution import Problem, Status, Trial, isothermal, merged, tangent
+from biasband.circuit.solution import Problem, Status, Trial, isothermal, merged
 from biasband.constants import HOTTEST_JUNCTION
 from biasband.stage import Transistor
 
-_SECANT_STEPS = 4
+_SECANT_STEPS = 6
 _WARM_STEPS = 1
 
 SETTLED = 1e-6
@@ -93,31 +95,35 @@ def settle(ports: Ports, transistor: Transistor, part: Scenarios) -> Trial:
         bias = isothermal(problem, problem.ambient)
         status = np.where(bias.solved, np.int8(Status.SOLVED), np.int8(Status.UNSOLVED))
         return Trial.of(ports, bias, T_j=problem.ambient, status=status)
-    heated = _quickly(problem, transistor.thermal_resistance)
+    R = transistor.thermal_resistance
+    heated = _warm_up(problem, R, lambda T, F: active_region(ports, problem.laws(T), F, steps=_WARM_STEPS))
     status = np.full(heated.T_j.shape, Status.SOLVED, dtype=np.int8)
     doubtful = heated.doubtful
     if doubtful.any():
-        top = np.where(heated.settled, heated.T_j, HOTTEST_JUNCTION)[doubtful]
-        found = _climb(problem.part(doubtful), transistor.thermal_resistance, top)
+        found = _carefully(problem.part(doubtful), R)
         merged(heated.bias, doubtful, found.bias)
         heated.T_j[doubtful], status[doubtful] = found.T_j, found.status
     return Trial.of(ports, heated.bias, T_j=heated.T_j, status=status)
 
 
-def _quickly(problem: Problem, R: float) -> Heated:
-    """Secant steps on T_j − T_a − R_θ·P(T_j) = 0, each solved as if active from the one before.
+Solver = Callable[[Values, Array | None], tuple[Bias, Array | None]]
+"""Solve a chunk at a junction temperature [K], from the forward current found before, if any."""
+
+
+def _warm_up(problem: Problem, R: float, solve: Solver) -> Heated:
+    """Secant steps on T_j − T_a − R_θ·P(T_j) = 0.
 
     The first step is the plain one, T_a + R_θ·P(T_a); the next ones know the loop gain as the
     slope between two temperatures.
     """
     T: Values = problem.ambient
-    bias, forward = active_region(problem.ports, problem.laws(T), steps=_WARM_STEPS)
+    bias, forward = solve(T, None)
     first_rise = wanted = R * bias.power
     gain = gain_cold = np.zeros_like(wanted)
     for step in range(_SECANT_STEPS):
         move = (problem.ambient + wanted - T) / (1.0 - gain)
         T = T + move
-        bias, forward = active_region(problem.ports, problem.laws(T), forward, steps=_WARM_STEPS)
+        bias, forward = solve(T, forward)
         before, wanted = wanted, R * bias.power
         told = np.abs(move) > _TELLING_MOVE
         gain = np.where(told, (wanted - before) / np.where(told, move, 1.0), gain)
@@ -131,11 +137,24 @@ def _quickly(problem: Problem, R: float) -> Heated:
 
 @dataclass(frozen=True)
 class Found:
-    """What a climb found: the bias at T_j [K] and a status per scenario."""
+    """What a careful solve found: the bias at T_j [K] and a status per scenario."""
 
     bias: Bias
     T_j: Array
     status: NDArray[np.int8]
+
+
+def _carefully(problem: Problem, R: float) -> Found:
+    """Solve a chunk by the full equations, and climb where runaway cannot be ruled out."""
+    heated = _warm_up(problem, R, lambda T, F: (isothermal(problem, T), None))
+    T_j, status = heated.T_j, np.full(heated.T_j.shape, Status.SOLVED, dtype=np.int8)
+    doubtful = heated.doubtful
+    if doubtful.any():
+        top = np.where(heated.settled, T_j, HOTTEST_JUNCTION)[doubtful]
+        found = _climb(problem.part(doubtful), R, top)
+        merged(heated.bias, doubtful, found.bias)
+        T_j[doubtful], status[doubtful] = found.T_j, found.status
+    return Found(heated.bias, T_j, status)
 
 
 def _climb(problem: Problem, R: float, top: Array) -> Found:

@@ -14,9 +14,9 @@ import numpy as np
 
 from biasband.circuit.junction import Laws
 from biasband.circuit.network import Ports, Rails, condense, supply_excitation, total
+from biasband.circuit.newton import tangent
 from biasband.circuit.operating_point import OperatingPoint
 from biasband.circuit.scenarios import Array, Values
-from biasband.circuit.solution import tangent
 from biasband.circuit.topology import TERMINALS, Node, Wire, Wiring
 from biasband.stage import Polarity, Signal
 

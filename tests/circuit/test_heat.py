@@ -58,10 +58,10 @@ def test_without_thermal_resistance_the_junction_is_at_ambient() -> None:
 def test_lowest_of_two_fixed_points_is_taken() -> None:
     case = powered(20.0, 1.2e6)
     solver, R = Solver(case), 300.0
-    gaps = {T: case.temperature + R * solver.at(T).power - T for T in (298.15, 370.0, 520.0)}
+    gaps = {T: case.temperature + R * solver.at(T).power - T for T in (298.15, 370.0, 420.0)}
     # By the scalar twin the gap changes sign twice: a fixed point below 370 K, another one above.
     assert gaps[298.15] > 0.0 > gaps[370.0]
-    assert gaps[520.0] > 0.0
+    assert gaps[420.0] > 0.0
     found = warmed(case)
     assert found.point is not None
     assert found.worst_gain < 1.0
@@ -69,7 +69,7 @@ def test_lowest_of_two_fixed_points_is_taken() -> None:
 
 
 def test_stage_without_a_fixed_point_below_250_degrees_is_in_runaway() -> None:
-    case = powered(20.0, 250e3, collector_ohms=10.0)
+    case = replace(powered(20.0, 250e3, collector_ohms=10.0), leakage=0.0)
     assert warmed(case).point is None  # independent: brentq and a scan over T_j
     reading = case.reading()
     assert reading.point.status[0] == Status.RUNAWAY
@@ -79,7 +79,7 @@ def test_stage_without_a_fixed_point_below_250_degrees_is_in_runaway() -> None:
 
 
 def test_loop_gain_above_one_on_the_way_to_saturation_is_runaway() -> None:
-    case = replace(powered(20.0, 330e3, collector_ohms=560.0, heat=400.0), leakage=2e-6, temperature=348.15)
+    case = replace(powered(20.0, 1e6, collector_ohms=300.0, heat=400.0), leakage=2e-6)
     found = warmed(case)
     # The scan does find a fixed point, where the collector resistor leaves no more power, but passes G = 1.
     assert found.point is not None
@@ -90,7 +90,7 @@ def test_loop_gain_above_one_on_the_way_to_saturation_is_runaway() -> None:
 def test_loop_gain_above_one_far_beyond_a_stable_point_is_harmless() -> None:
     case = powered(20.0, 1.2e6)
     solver, R = Solver(case), 300.0
-    hot = R * (solver.at(480.0).power - solver.at(479.0).power)
+    hot = R * (solver.at(415.0).power - solver.at(414.0).power)
     assert hot > 1.0
     assert case.reading().point.status[0] == Status.SOLVED
 

@@ -1,0 +1,126 @@
+"""The full equations: Newton's method on both junction voltages, wherever the transistor stands."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from biasband.circuit.active import RESIDUAL, Bias
+from biasband.circuit.junction import Flow, Laws, flow
+from biasband.circuit.network import Ports
+from biasband.circuit.scenarios import Array, Values
+
+_KNEE = 4.0
+"""A junction conducts from this many V_T below its voltage at the test current."""
+
+_SATURATED_START = 0.1
+"""[V] V_CE at which the currents of a saturated start are taken."""
+
+
+@dataclass(frozen=True)
+class Tangent:
+    """The port equations linearised at (V_BE, V_BC): residuals [V], Jacobian and its determinant."""
+
+    law: Laws
+    flow: Flow
+    f1: Values
+    f2: Values
+    j11: Values
+    j12: Values
+    j21: Values
+    j22: Values
+    determinant: Values
+
+    @property
+    def residual(self) -> Array:
+        """The larger of the two residuals [V]."""
+        return np.asarray(np.maximum(np.abs(self.f1), np.abs(self.f2)))
+
+    def solve(self, g1: Values, g2: Values) -> tuple[Array, Array]:
+        """The voltages (x1, x2) with J·x = g."""
+        x1 = (self.j22 * g1 - self.j12 * g2) / self.determinant
+        x2 = (self.j11 * g2 - self.j21 * g1) / self.determinant
+        return np.asarray(x1), np.asarray(x2)
+
+
+def tangent(ports: Ports, law: Laws, V_BE: Values, V_BC: Values) -> Tangent:
+    """Linearise `v − open + Z·i(v) = 0` at the junction voltages [V]."""
+    at = flow(law, V_BE, V_BC)
+    j11 = 1.0 + ports.z11 * at.base_be + ports.z12 * at.collector_be
+    j12 = ports.z11 * at.base_bc + ports.z12 * at.collector_bc
+    j21 = ports.z21 * at.base_be + ports.z22 * at.collector_be
+    j22 = 1.0 + ports.z21 * at.base_bc + ports.z22 * at.collector_bc
+    return Tangent(
+        law, at,
+        f1=V_BE - ports.open_be + ports.z11 * at.base + ports.z12 * at.collector,
+        f2=V_BC - ports.open_bc + ports.z21 * at.base + ports.z22 * at.collector,
+        j11=j11, j12=j12, j21=j21, j22=j22, determinant=j11 * j22 - j12 * j21,
+    )  # fmt: skip
+
+
+def start(ports: Ports, law: Laws) -> tuple[Array, Array]:
+    """Junction voltages [V] near the solution: saturated if that makes sense, else active."""
+    V_BE, V_BC = _active_start(ports, law)
+    forward, reverse = _saturated_flow(ports, law)
+    saturated = (forward > 0.0) & (reverse > 0.0)
+    return (
+        np.where(saturated, _voltage(law, forward), V_BE),
+        np.where(saturated, _voltage(law, reverse), V_BC),
+    )
+
+
+def _active_start(ports: Ports, law: Laws) -> tuple[Array, Array]:
+    """With the reverse junction off, no Early effect and V_BE as at the test current."""
+    drive = np.maximum(ports.open_be - law.reference_voltage, law.thermal_voltage)
+    I_B = drive / (ports.z11 + law.forward_gain * ports.z12)
+    I_C = law.forward_gain * I_B
+    V_BC = ports.open_bc - ports.z21 * I_B - ports.z22 * I_C
+    return _voltage(law, I_C), np.asarray(np.minimum(V_BC, 0.0))
+
+
+def _saturated_flow(ports: Ports, law: Laws) -> tuple[Array, Array]:
+    """Forward and reverse currents [A] that carry what the network drives through a closed switch.
+
+    With both junction voltages held, i = Z⁻¹·(open − v); I_C = F − R − R/β_R and I_B = F/β + R/β_R
+    then give F and R. Not positive where the transistor is not saturated.
+    """
+    held_be, held_bc = law.reference_voltage, law.reference_voltage - _SATURATED_START
+    over_be, over_bc = ports.open_be - held_be, ports.open_bc - held_bc
+    determinant = ports.z11 * ports.z22 - ports.z12 * ports.z21
+    I_B = (ports.z22 * over_be - ports.z12 * over_bc) / determinant
+    I_C = (ports.z11 * over_bc - ports.z21 * over_be) / determinant
+    back = law.inverse_reverse_gain
+    reverse = (I_B - I_C / law.forward_gain) / ((1.0 + back) / law.forward_gain + back)
+    return np.asarray(I_C + reverse * (1.0 + back)), np.asarray(reverse)
+
+
+def _voltage(law: Laws, current: Values) -> Array:
+    """The junction voltage [V] at which I_S·e^{V/V_T} is a current [A]."""
+    least = np.maximum(current, law.saturation_current)
+    return np.asarray(law.reference_voltage + law.thermal_voltage * np.log(least / law.reference_current))
+
+
+def newton(ports: Ports, law: Laws, V_BE: Array, V_BC: Array, *, steps: int) -> Bias:
+    """Newton's method from (V_BE, V_BC) [V] until all are solved or the steps are used up."""
+    here = tangent(ports, law, V_BE, V_BC)
+    for _ in range(steps):
+        if np.all(here.residual < RESIDUAL):
+            break
+        d_be, d_bc = here.solve(here.f1, here.f2)
+        V_BE, V_BC = _moved(V_BE, -d_be, law), _moved(V_BC, -d_bc, law)
+        here = tangent(ports, law, V_BE, V_BC)
+    I_B, I_C = np.asarray(here.flow.base), np.asarray(here.flow.collector)
+    return Bias(V_BE, V_BC, I_B, I_C, here.residual < RESIDUAL)
+
+
+def _moved(voltage: Array, step: Array, law: Laws) -> Array:
+    """A junction voltage after a Newton step, kept from shooting up its exponential.
+
+    Above the knee a rise of dV becomes V_T·ln(1 + dV/V_T): the step that Newton's method would take
+    in the junction's current instead of its voltage (junction-voltage limiting, common practice).
+    """
+    V_T = law.thermal_voltage
+    knee = np.maximum(voltage, law.reference_voltage - _KNEE * V_T)
+    target = voltage + step
+    return np.where(target > knee, knee + V_T * np.log1p(np.maximum(target - knee, 0.0) / V_T), target)

@@ -1,0 +1,205 @@
+"""Results as JSON: SI units, full precision, stable keys, NaN as null."""
+
+from __future__ import annotations
+
+import json
+import math
+from collections.abc import Iterable, Mapping, Sequence
+from typing import Any
+
+from biasband.circuit.operating_point import Region
+from biasband.margins.records import Margin
+from biasband.parts.series import Snap
+from biasband.show.release import version
+from biasband.show.table import REGION_WORDS, code
+from biasband.signoff.study import Review
+from biasband.stage import Resistor, Stage
+from biasband.values.choosing import Design, PartChoice
+from biasband.variation.causes import Causes
+from biasband.variation.corners import Corners
+from biasband.variation.sampling import QUANTILES, Boards, Sample
+
+Json = dict[str, Any]
+
+SPREAD_PLACES = ("nominal_use", "lowest_in_use", "highest_in_use")
+
+
+def as_text(result: Json | list[Json]) -> str:
+    """Write a result as JSON text, in ASCII, so that it passes any output unharmed."""
+    return json.dumps(result, indent=2, allow_nan=False) + "\n"
+
+
+def finite(value: Any) -> Any:
+    """The same data with null for every number that JSON does not have."""
+    if isinstance(value, Mapping):
+        return {key: finite(each) for key, each in value.items()}
+    if isinstance(value, (list, tuple)):
+        return [finite(each) for each in value]
+    return None if isinstance(value, float) and not math.isfinite(value) else value
+
+
+def review_json(review: Review) -> Json:
+    """A review as plain data (formats: "JSON")."""
+    boards, words = review.evidence.boards, review.quantities
+    evidence, standing = review.evidence, review.standing
+    result = {
+        **_origin(review.stage),
+        "seed": boards.seed,
+        "boards": boards.boards,
+        "parts": _parts(review.design, {name: evidence.corners.ranges[name].high.value for name in words}),
+        "nominal": {**review.nominal.values, "region": REGION_WORDS[review.nominal.region]},
+        "corners": _ranges(evidence.corners, words),
+        "rss": {name: {"low": evidence.rss[name].low, "high": evidence.rss[name].high} for name in words},
+        "spread": _spread(boards),
+        "causes": {name: _causes(evidence.causes[name]) for name in words},
+        "margins": [_margin(row) for row in review.rows],
+        "checks": {
+            "made": [check.name for check in standing.made],
+            "not_made": [{"check": each.check, "missing": each.missing} for each in standing.not_made],
+        },
+        "warnings": list(review.warnings),
+        "verdict": review.verdict.outcome,
+        "because": list(review.verdict.because),
+    }
+    return finite(result)
+
+
+def faulty_json(path: str, problem: str) -> Json:
+    """A stage file among several that could not be reviewed."""
+    return {"files": [{"path": path, "sha256": None}], "biasband": version(), "error": problem.split("\n")}
+
+
+def design_json(design: Design) -> Json:
+    """A design as plain data: the parts of `review_json`, without what only a review knows."""
+    return finite({**_origin(design.stage), "parts": _parts(design, {}), "warnings": list(design.warnings)})
+
+
+def snap_json(snaps: Sequence[Snap]) -> list[Json]:
+    """Snapped values as plain data [Ω]."""
+    return [
+        {
+            "series": snap.series,
+            "value": snap.value,
+            "below": snap.below,
+            "above": snap.above,
+            "chosen": snap.chosen,
+            "code": code(snap.chosen),
+            "error": snap.error,
+        }
+        for snap in snaps
+    ]
+
+
+def corners_json(design: Design, corners: Corners, words: Iterable[str]) -> Json:
+    """The corners of a designed stage as plain data."""
+    return finite(
+        {
+            **_origin(design.stage),
+            "parts": _parts(design, {}),
+            "corners": _ranges(corners, words),
+            "count": corners.count,
+            "regions": _regions(corners.regions),
+            "warnings": list(design.warnings),
+        }
+    )
+
+
+def spread_json(design: Design, boards: Boards) -> Json:
+    """The sampled boards of a designed stage as plain data."""
+    return finite(
+        {
+            **_origin(design.stage),
+            "seed": boards.seed,
+            "boards": boards.boards,
+            "parts": _parts(design, {}),
+            "spread": _spread(boards),
+            "warnings": list(design.warnings),
+        }
+    )
+
+
+def _origin(stage: Stage) -> Json:
+    head = ("title", "document", "revision", "topology", "polarity")
+    return {
+        "stage": {name: getattr(stage, name) for name in head},
+        "files": [{"path": file.path, "sha256": file.sha256} for file in stage.files],
+        "biasband": version(),
+    }
+
+
+def _parts(design: Design, worst: Mapping[str, float]) -> Json:
+    """Every part; `worst` holds the highest value of each quantity, where that is known."""
+    return {
+        part.name: _part(part, design.stage.resistor(part.name), worst.get(f"resistor_power.{part.name}"))
+        for part in design.parts
+    }
+
+
+def _part(part: PartChoice, resistor: Resistor, power: float | None) -> Json:
+    return {
+        "hand": None if part.hand is None else part.hand.ohms,
+        "ideal": None if part.ideal is None else part.ideal.ohms,
+        "value": part.value,
+        "chosen": part.chosen,
+        "series": resistor.series if part.chosen else None,
+        "tolerance": resistor.tolerance,
+        "tempco": resistor.tempco,
+        "code": code(part.value),
+        "power_worst": power,
+        "power_rating": resistor.power_rating,
+    }
+
+
+def _ranges(corners: Corners, words: Iterable[str]) -> Json:
+    return {
+        name: {
+            "low": found.low.value,
+            "high": found.high.value,
+            "low_at": dict(found.low.at),
+            "high_at": dict(found.high.at),
+            "extreme_at": "interior" if found.interior else "corner",
+        }
+        for name, found in ((name, corners.ranges[name]) for name in words)
+    }
+
+
+def _spread(boards: Boards) -> Json:
+    quantities = {
+        name: {place: _sample(getattr(found, place)) for place in SPREAD_PLACES}
+        for name, found in boards.spread.items()
+    }
+    return {**quantities, "regions": _regions(boards.regions)}
+
+
+def _sample(sample: Sample) -> Json:
+    quantiles = {f"p{100 * share:g}": sample.quantile(share) for share in QUANTILES}
+    return {"mean": sample.mean, "sd": sample.sd, **quantiles}
+
+
+def _regions(regions: Mapping[Region, int]) -> Json:
+    return {REGION_WORDS[region]: count for region, count in regions.items()}
+
+
+def _causes(causes: Causes) -> Json:
+    return {"low": dict(causes.low), "high": dict(causes.high)}
+
+
+def _margin(row: Margin) -> Json:
+    return {
+        "id": None if row.standing else row.id,
+        "quantity": row.quantity,
+        "limit": row.limit,
+        "side": row.side,
+        "judged_by": row.judged_by,
+        "nominal": row.nominal,
+        "corners": row.corners,
+        "rss": row.rss,
+        "yield": row.yield_held,
+        "yield_low": row.yield_low,
+        "margin": row.margin,
+        "margin_share": row.margin_share,
+        "verdict": row.verdict,
+        "worst_at": dict(row.worst.at),
+        "main_cause": row.main_cause,
+        "standing": row.standing,
+    }

@@ -1,0 +1,160 @@
+"""Sentences: where the worst is and what causes it, how a value came about, what was sampled."""
+
+from __future__ import annotations
+
+import math
+
+from biasband.circuit.topology import EMITTER_PARTS, Node
+from biasband.margins.records import Margin
+from biasband.quantity import Kind
+from biasband.show.table import figure, whole_percent, yield_percent
+from biasband.signoff.study import Review
+from biasband.stage import Stage
+from biasband.values.ideal import Step
+from biasband.variation.contributors import (
+    BASE_EMITTER,
+    GAIN,
+    LEAKAGE,
+    NEGATIVE,
+    RIPPLE,
+    SUPPLY,
+    TEMPERATURE,
+)
+from biasband.variation.corners import Extreme
+from biasband.variation.sampling import yield_bound
+
+MATTERS = 0.05
+"""A contributor with a smaller share of the way to the worst is not named."""
+
+MOST_NAMED = 4
+
+_NAMES = {GAIN: "h_FE", BASE_EMITTER: "V_BE", NEGATIVE: "negative supply"}
+_KINDS = {
+    GAIN: Kind.NUMBER,
+    BASE_EMITTER: Kind.VOLTAGE,
+    LEAKAGE: Kind.CURRENT,
+    SUPPLY: Kind.VOLTAGE,
+    RIPPLE: Kind.VOLTAGE,
+    NEGATIVE: Kind.VOLTAGE,
+    TEMPERATURE: Kind.TEMPERATURE,
+}
+
+
+def contributor(name: str) -> str:
+    """A contributor as people call it; the name itself where that is what they do."""
+    return f"tempco of {name}" if name.startswith("group ") else _NAMES.get(name, name)
+
+
+def place(name: str, extreme: Extreme) -> str:
+    """Where a contributor stands at an extreme: "hot", "h_FE low", "V_BE inside (0.66 V)"."""
+    x, value = extreme.coordinates[name], extreme.at.get(name)
+    shown = "" if value is None else figure(value, _KINDS.get(name, Kind.RESISTANCE))
+    if abs(x) < 1.0:
+        return f"{contributor(name)} inside ({shown})" if shown else f"{contributor(name)} inside"
+    if name == TEMPERATURE:
+        return "cold" if x < 0.0 else "hot"
+    if name == NEGATIVE:  # "low" could be meant as the more negative or as the smaller
+        return f"{contributor(name)} {shown}"
+    return f"{contributor(name)} {'low' if x < 0.0 else 'high'}"
+
+
+def places(extreme: Extreme) -> str:
+    """Where every contributor stands at an extreme, those in use first."""
+    if not extreme.coordinates:
+        return "nothing varies"
+    return ", ".join(place(name, extreme) for name in reversed(extreme.coordinates))
+
+
+def worst(row: Margin) -> str:
+    """Where a row's worst corner is and what causes it, the main contributors only."""
+    if math.isnan(row.worst.value):
+        return "worst: not solved"
+    named = [name for name, share in row.causes.items() if share > MATTERS][:MOST_NAMED]
+    if not named:
+        return "worst: as nominal, nothing that varies moves it towards this limit"
+    where = ", ".join(place(name, row.worst) for name in named)
+    return f"worst: {where}; {_main(named[0], row.causes[named[0]])}"
+
+
+def _main(name: str, share: float) -> str:
+    how = "mostly" if share > 0.5 else "most from"
+    return f"{how} {contributor(name)} ({whole_percent(share)})"
+
+
+def frozen_or_chosen(frozen: int, chosen: int) -> str:
+    """How many values the file gave and how many were chosen in this run."""
+    parts = [f"{frozen} frozen"] if frozen or not chosen else []
+    parts += [f"{chosen} chosen in this run: freeze before ordering"] if chosen else []
+    return f"values: {', '.join(parts)}"
+
+
+def head(stage: Stage) -> tuple[str, ...]:
+    """Which stage this is: its document, what kind it is, and the files that were read."""
+    revision = f"revision {stage.revision}" if stage.revision else ""
+    designer = f"designed by {stage.designed_by}" if stage.designed_by else ""
+    document = [text for text in (stage.document, revision, designer) if text]
+    kind = f"{stage.topology}, {stage.polarity.upper()}"
+    kind += f", {stage.transistor.label}" if getattr(stage.transistor, "label", "") else ""
+    files = [f"file {file.path}, SHA-256 {file.sha256[:12]}" for file in stage.files]
+    return (*([", ".join(document)] if document else []), kind, *files)
+
+
+def joint_yield(review: Review) -> str:
+    """The share of boards that hold every limit of every requirement."""
+    boards = review.evidence.boards.boards
+    bound = yield_bound(round(review.joint_yield * boards), boards)
+    return (
+        f"All requirements together: {yield_percent(review.joint_yield)} of {boards} boards hold every limit "
+        f"at every point of use (95 % confidence: at least {yield_percent(bound)})."
+    )
+
+
+def rss_assumption(review: Review) -> str:
+    """What RSS assumes, and how many sampled boards its intervals hold."""
+    names = dict.fromkeys(row.quantity for row in review.rows if not row.standing)
+    shares = ", ".join(f"{name} {_inside(review, name)}" for name in names)
+    return (
+        "RSS takes contributors as independent and their limits as 3σ; "
+        f"boards measured inside its interval at every point of use: {shares}."
+    )
+
+
+def _inside(review: Review, name: str) -> str:
+    interval = review.evidence.rss[name]
+    if math.isnan(interval.low) or math.isnan(interval.high):
+        return "n/a"
+    return yield_percent(review.spread[name].inside(interval.low, interval.high))
+
+
+def formula(step: Step, *, polarity: str, split: bool) -> str:
+    """A resistor's formula with its numbers: "(V_CC − V_C) / I = (9 V − 5.15 V) / 1 mA = 3.85 kΩ"."""
+    result = figure(step.ohms, Kind.RESISTANCE)
+    if step.rule and step.high == step.low:  # a rule that replaced the formula
+        return f"{step.rule} = {result}"
+    symbols = _symbols(polarity, split)
+    beside = next(part for part in EMITTER_PARTS if part != step.resistor) if step.beside else ""
+    letters = f"({symbols[step.high_node]} − {symbols[step.low_node]}) / I"
+    numbers = f"({_volts(step.high)} − {_volts(step.low)}) / {figure(step.current, Kind.CURRENT)}"
+    if beside:
+        letters, numbers = f"{letters} − {beside}", f"{numbers} − {figure(step.beside, Kind.RESISTANCE)}"
+    rule = f", I = {step.rule}" if step.rule else ""
+    return f"{letters} = {numbers} = {result}{rule}"
+
+
+def _volts(value: float) -> str:
+    text = figure(value, Kind.VOLTAGE)
+    return f"({text})" if value < 0.0 else text
+
+
+def _symbols(polarity: str, split: bool) -> dict[Node, str]:
+    """The field's symbols: which supply a rail is depends on the polarity."""
+    lower = "V_EE" if split else "0"
+    collector, emitter = ("V_CC", lower) if polarity == "npn" else (lower, "V_CC")
+    return {
+        Node.BASE: "V_B",
+        Node.COLLECTOR: "V_C",
+        Node.EMITTER: "V_E",
+        Node.COLLECTOR_RAIL: collector,
+        Node.EMITTER_RAIL: emitter,
+        Node.GROUND: "0",
+    }

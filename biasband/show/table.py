@@ -1,0 +1,111 @@
+"""Tables as data, and how figures are written in all of them.
+
+The columns of every table are decided in this room, once, for every output: `review_tables` and
+`analysis_tables` fill these records, and the screen, a page or a spreadsheet lay them out.
+"""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass
+from decimal import ROUND_DOWN, Decimal
+from typing import Literal
+
+from biasband.circuit.operating_point import Region
+from biasband.errors import UsageError
+from biasband.parts.marking import letter_code
+from biasband.quantity import Kind, format_quantity
+
+Align = Literal["left", "right"]
+Tone = Literal["", "pass", "fail", "doubt"]
+
+NOT_KNOWN = "n/a"
+MARGIN_DIGITS = 3
+_YIELD_STEP = Decimal("0.001")
+
+REGION_WORDS = {region: region.name.lower().replace("_", " ") for region in Region}
+"""The regions as tables and JSON name them."""
+
+
+@dataclass(frozen=True)
+class Column:
+    """A column's heading and side.
+
+    `spare` tells an output that is too narrow which columns to move below their row: 1 first, then
+    2 and so on; 0 is the last resort. `toned` marks the cells that carry the row's tone.
+    """
+
+    heading: str
+    align: Align = "right"
+    spare: int = 0
+    toned: bool = False
+
+
+@dataclass(frozen=True)
+class Row:
+    """A row's cells, the sentences that stand below it, and its tone."""
+
+    cells: tuple[str, ...]
+    below: tuple[str, ...] = ()
+    tone: Tone = ""
+
+
+@dataclass(frozen=True)
+class Table:
+    """A table with its title and notes; `flows` says that rows may be set in several blocks."""
+
+    title: str
+    columns: tuple[Column, ...]
+    rows: tuple[Row, ...]
+    notes: tuple[str, ...] = ()
+    flows: bool = False
+
+
+@dataclass(frozen=True)
+class Passage:
+    """Sentences under a title (or none), with a tone."""
+
+    title: str
+    sentences: tuple[str, ...]
+    tone: Tone = ""
+
+
+Report = tuple[Table | Passage, ...]
+"""What a reader reads, top to bottom, whatever it is laid out on."""
+
+
+def figure(value: float, kind: Kind, *, digits: int = 4) -> str:
+    """Write a figure with its unit; NaN is "n/a"."""
+    return format_quantity(value, kind, digits=digits)
+
+
+def difference(value: float, kind: Kind, *, digits: int = MARGIN_DIGITS) -> str:
+    """Write a difference between two figures of a kind: between temperatures it is in K."""
+    return figure(value, Kind.TEMPERATURE_DIFFERENCE if kind is Kind.TEMPERATURE else kind, digits=digits)
+
+
+def percent(share: float, *, digits: int = 2) -> str:
+    """Write a share in %."""
+    return format_quantity(share, Kind.RATIO, digits=digits)
+
+
+def whole_percent(share: float) -> str:
+    """Write a share in whole %."""
+    return f"{100.0 * share:.0f} %" if math.isfinite(share) else NOT_KNOWN
+
+
+def yield_percent(share: float) -> str:
+    """Write a yield in %, rounded down, so that only all boards read as "100 %"."""
+    if math.isnan(share):
+        return NOT_KNOWN
+    if share == 1.0:
+        return "100 %"
+    return f"{(100 * Decimal(repr(share))).quantize(_YIELD_STEP, rounding=ROUND_DOWN)} %"
+
+
+def code(ohms: float) -> str:
+    """Write the letter code of a resistance [Ω]; "none" where the code does not reach."""
+    try:
+        return letter_code(ohms)
+    except UsageError:
+        return "none"
