@@ -8,15 +8,19 @@ needs it, so that `--help` is instant.
 from __future__ import annotations
 
 import functools
-from collections.abc import Callable
-from typing import TYPE_CHECKING, Annotated, ParamSpec
+import os
+from collections.abc import Callable, Sequence
+from typing import TYPE_CHECKING, Annotated, Any, ParamSpec
 
 import typer
 
 from biasband.errors import BiasbandError, UsageError
 
 if TYPE_CHECKING:
+    from biasband.parts.series import Snap
     from biasband.show.summary import Attempt
+    from biasband.show.table import Report
+    from biasband.values.choosing import Design
 
 PASSED, NOT_PASSED, BAD_INPUT, INTERRUPTED = 0, 1, 2, 130
 MOST_BOARDS = 2**22
@@ -39,6 +43,11 @@ BoardCount = Annotated[
     int, typer.Option("--boards", min=1, max=MOST_BOARDS, help="How many boards are sampled.")
 ]
 Seed = Annotated[int, typer.Option("--seed", min=0, help="Which random numbers are drawn.")]
+NewFile = Annotated[
+    str | None, typer.Option("--write", metavar="FILE", help="A new stage file with the values frozen.")
+]
+Resistances = Annotated[list[str], typer.Argument(metavar="VALUE...", help='Such as 4k7 or "130 ohm".')]
+SeriesName = Annotated[str, typer.Option("--series", help="A preferred series, E3 to E192.")]
 Arguments = ParamSpec("Arguments")
 
 
@@ -72,13 +81,179 @@ def _complain(text: str) -> None:
 @command
 def review(stages: StageFiles, json: AsJson = False, boards: BoardCount = 32768, seed: Seed = 1) -> int:
     """Hold stages against what varies: parts, margins, verdict. Of several, one line each."""
-    from biasband.show.attempts import attempted, stage_files
-    from biasband.show.export import attempt_json, as_text
+    from biasband.show import export, report
+    from biasband.show.output import watched
+
+    paths = _stage_files(stages)
+    attempts = [_attempt(path, boards, seed) for path in watched(paths, doing="reviewing")]
+    for attempt in attempts:
+        _complain(attempt.problem)
+    first = attempts[0].review
+    if paths != stages or len(paths) > 1:
+        _put(json, lambda: export.summary_json(attempts), lambda: report.summary_report(attempts))
+    elif first is not None:
+        _put(json, lambda: export.review_json(first), lambda: report.review_report(first))
+    return max(map(_status_of, attempts))
+
+
+@command
+def design(stage: StageFile, json: AsJson = False, write: NewFile = None) -> int:
+    """Show ideal values with their formulas and the preferred parts; write the stage with them frozen."""
+    from biasband.files.stage_file import read_stage
+    from biasband.show import export, report
+    from biasband.signoff import study
+
+    result = study.design(read_stage(stage))
+    _put(json, lambda: export.design_json(result), lambda: report.design_report(result))
+    if write is not None:
+        _write_frozen(stage, result, write)
+    return PASSED
+
+
+@command
+def snap(values: Resistances, series: SeriesName = "E24", json: AsJson = False) -> int:
+    """Find the preferred values nearest to resistances, and their codes."""
+    from biasband.show import export, report
+
+    snaps = _snapped(values, series)
+    _put(json, lambda: export.snap_json(snaps), lambda: report.snap_report(snaps))
+    return PASSED
+
+
+@command
+def corners(stage: StageFile, json: AsJson = False) -> int:
+    """Evaluate every corner: the extremes of each quantity, and where they are."""
+    from biasband.files.stage_file import read_stage
+    from biasband.show import export, report
+    from biasband.signoff import study
+
+    chosen = study.design(read_stage(stage))
+    found, words = study.corners(chosen.stage), study.words(chosen.stage)
+    _put(
+        json,
+        lambda: export.corners_json(chosen, found, words),
+        lambda: report.corners_report(chosen, found, words),
+    )
+    return PASSED
+
+
+@command
+def spread(stage: StageFile, json: AsJson = False, boards: BoardCount = 32768, seed: Seed = 1) -> int:
+    """Sample boards, each at every point of use: mean, deviation and quantiles of each quantity."""
+    from biasband.files.stage_file import read_stage
+    from biasband.show import export, report
+    from biasband.show.output import busy
+    from biasband.signoff import study
+
+    chosen = study.design(read_stage(stage))
+    with busy(f"sampling {boards} boards"):
+        sampled = study.spread(chosen.stage, boards=boards, seed=seed)
+    _put(
+        json,
+        lambda: export.spread_json(chosen, sampled),
+        lambda: report.spread_report(chosen, sampled, study.words(chosen.stage)),
+    )
+    return PASSED
+
+
+def _put(json: bool, as_data: Callable[[], Any], as_report: Callable[[], Report]) -> None:
+    """Print a result in the form that was asked for."""
+    from biasband.show.export import as_text
     from biasband.show.output import deliver
-    from biasband.show.report import review_report, summary_report
     from biasband.show.screen import show
 
-    return 0
+    if json:
+        deliver(as_text(as_data()))
+    else:
+        show(as_report())
+
+
+def _attempt(path: str, boards: int, seed: int) -> Attempt:
+    from biasband.files.stage_file import read_stage
+    from biasband.show.summary import Attempt
+    from biasband.signoff import study
+
+    try:
+        return Attempt(path, study.review(read_stage(path), boards=boards, seed=seed))
+    except BiasbandError as error:
+        return Attempt(path, None, str(error))
+
+
+def _status_of(attempt: Attempt) -> int:
+    if attempt.review is None:
+        return BAD_INPUT
+    return PASSED if attempt.review.verdict.outcome == "pass" else NOT_PASSED
+
+
+def _stage_files(names: Sequence[str]) -> list[str]:
+    """The files themselves, and the stage files of folders."""
+    return [path for name in names for path in (_in_folder(name) if os.path.isdir(name) else [name])]
+
+
+def _in_folder(folder: str) -> list[str]:
+    """The stage files of a folder, by name; TOML files of another kind are left out, and named."""
+    try:
+        found = [os.path.join(folder, name) for name in sorted(os.listdir(folder)) if name.endswith(".toml")]
+    except OSError as error:
+        raise UsageError(f"{folder}: cannot be read: {error.strerror}") from None
+    others = [path for path in found if os.path.isdir(path) or _is_other_toml(path)]
+    for path in others:
+        _complain(f"{path}: left out, it has no [stage] section")
+    if stages := [path for path in found if path not in others]:
+        return stages
+    raise UsageError(f"{folder}: a folder without stage files; needed: files *.toml with a [stage] section")
+
+
+def _is_other_toml(path: str) -> bool:
+    """Whether a file is sound TOML without [stage]; a faulty one is kept, so that its faults show."""
+    from biasband.files.toml_file import read_toml
+
+    try:
+        return "stage" not in read_toml(path).data
+    except BiasbandError:
+        return False
+
+
+def _snapped(values: Sequence[str], series: str) -> list[Snap]:
+    """Snap every value; all faults are reported at once."""
+    from biasband.quantity import Kind, parse
+    from biasband.signoff import study
+
+    snaps, faults = [], []
+    for text in values:
+        try:
+            snaps.append(study.snap(parse(text, Kind.RESISTANCE), series=series))
+        except BiasbandError as error:
+            faults.append(str(error))
+    if faults:
+        raise UsageError("\n".join(dict.fromkeys(faults)))
+    return snaps
+
+
+def _write_frozen(path: str, result: Design, new_path: str) -> None:
+    from biasband.files.stage_writer import frozen_text, write_new
+    from biasband.quantity import Kind, format_exact
+
+    values = {part.name: format_exact(part.value, Kind.RESISTANCE) for part in result.parts}
+    write_new(new_path, frozen_text(path, values, new_path=new_path))
+    _complain(f"{new_path}: written, {len(values)} values frozen")
+
+
+def _show_version(asked: bool) -> None:
+    if asked:
+        from biasband.show.release import version
+
+        typer.echo(f"biasband {version()}")
+        raise typer.Exit(PASSED)
+
+
+@app.callback()
+def every_command(
+    version: Annotated[
+        bool, typer.Option("--version", is_eager=True, callback=_show_version, help="Show the version.")
+    ] = False,
+) -> None:
+    """What stands before the command."""
 
 
 def main() -> None:

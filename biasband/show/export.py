@@ -11,6 +11,7 @@ from biasband.circuit.operating_point import Region
 from biasband.margins.records import Margin
 from biasband.parts.series import Snap
 from biasband.show.release import version
+from biasband.show.summary import Attempt
 from biasband.show.table import REGION_WORDS, code
 from biasband.signoff.study import Review
 from biasband.stage import Resistor, Stage
@@ -29,12 +30,16 @@ def as_text(result: Json | list[Json]) -> str:
     return json.dumps(result, indent=2, allow_nan=False) + "\n"
 
 
-def finite(value: Any) -> Any:
-    """The same data with null for every number that JSON does not have."""
-    if isinstance(value, Mapping):
-        return {key: finite(each) for key, each in value.items()}
-    if isinstance(value, (list, tuple)):
-        return [finite(each) for each in value]
+def _finite(result: Json) -> Json:
+    """The same with null for every number that JSON does not have."""
+    return {key: _finite_value(value) for key, value in result.items()}
+
+
+def _finite_value(value: Any) -> Any:
+    if isinstance(value, dict):
+        return _finite(value)
+    if isinstance(value, list):
+        return [_finite_value(each) for each in value]
     return None if isinstance(value, float) and not math.isfinite(value) else value
 
 
@@ -61,17 +66,24 @@ def review_json(review: Review) -> Json:
         "verdict": review.verdict.outcome,
         "because": list(review.verdict.because),
     }
-    return finite(result)
+    return _finite(result)
 
 
-def faulty_json(path: str, problem: str) -> Json:
-    """A stage file among several that could not be reviewed."""
+def summary_json(attempts: Sequence[Attempt]) -> list[Json]:
+    """The reviews of several stages; in place of one that could not be made, what stood in its way."""
+    return [
+        review_json(attempt.review) if attempt.review else _problem(attempt.path, attempt.problem)
+        for attempt in attempts
+    ]
+
+
+def _problem(path: str, problem: str) -> Json:
     return {"files": [{"path": path, "sha256": None}], "biasband": version(), "error": problem.split("\n")}
 
 
 def design_json(design: Design) -> Json:
     """A design as plain data: the parts of `review_json`, without what only a review knows."""
-    return finite({**_origin(design.stage), "parts": _parts(design, {}), "warnings": list(design.warnings)})
+    return _finite({**_origin(design.stage), "parts": _parts(design, {}), "warnings": list(design.warnings)})
 
 
 def snap_json(snaps: Sequence[Snap]) -> list[Json]:
@@ -92,7 +104,7 @@ def snap_json(snaps: Sequence[Snap]) -> list[Json]:
 
 def corners_json(design: Design, corners: Corners, words: Iterable[str]) -> Json:
     """The corners of a designed stage as plain data."""
-    return finite(
+    return _finite(
         {
             **_origin(design.stage),
             "parts": _parts(design, {}),
@@ -106,7 +118,7 @@ def corners_json(design: Design, corners: Corners, words: Iterable[str]) -> Json
 
 def spread_json(design: Design, boards: Boards) -> Json:
     """The sampled boards of a designed stage as plain data."""
-    return finite(
+    return _finite(
         {
             **_origin(design.stage),
             "seed": boards.seed,

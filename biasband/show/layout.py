@@ -84,12 +84,13 @@ def _title(table: Table, width: int) -> Iterator[Text]:
 
 
 def _kept(table: Table, width: int) -> list[int]:
-    """The columns that stay beside each other: spare ones go first, in the end all but the first."""
+    """The columns that stay beside each other: spare ones go first, then from the right; the first stays."""
     kept = list(range(len(table.columns)))
     spare = sorted((k for k in kept if table.columns[k].spare), key=lambda k: table.columns[k].spare)
-    while spare and _total(_widths(table, kept)) > width:
-        kept.remove(spare.pop(0))
-    return kept if _total(_widths(table, kept)) <= width else [0]
+    going = [*spare, *(k for k in reversed(kept) if k and k not in spare)]
+    while going and _total(_widths(table, kept)) > width:
+        kept.remove(going.pop(0))
+    return kept
 
 
 def _widths(table: Table, kept: list[int]) -> list[int]:

@@ -5,6 +5,7 @@ from __future__ import annotations
 import os
 import sys
 from collections.abc import Iterator, Sequence
+from contextlib import contextmanager
 
 from biasband.show.spelling import Spelling
 
@@ -20,25 +21,34 @@ def deliver(text: str) -> None:
 
 
 def complain(text: str) -> None:
-    """Write a message for people, line by line, on standard error."""
+    """Write a message for people on standard error, line by line; an empty one is none."""
     spelling = Spelling(sys.stderr.encoding or "ascii")
-    for line in text.split("\n"):
+    for line in text.split("\n") if text else ():
         sys.stderr.write(spelling(line) + "\n")
+
+
+@contextmanager
+def busy(doing: str) -> Iterator[None]:
+    """Say what is being done while it is, if standard error is a terminal."""
+    if not sys.stderr.isatty():
+        yield
+        return
+    from rich.console import Console
+    from rich.text import Text
+
+    spelling = Spelling(sys.stderr.encoding or "ascii")
+    with Console(stderr=True).status(Text(spelling(doing)), spinner="line"):
+        yield
 
 
 def watched(paths: Sequence[str], *, doing: str) -> Iterator[str]:
     """Go through files; if standard error is a terminal, show there how far that is."""
-    if not sys.stderr.isatty():
-        yield from paths
-        return
-    from rich.console import Console
-    from rich.markup import escape
-    from rich.progress import track
+    if len(paths) > 1 and sys.stderr.isatty():
+        from rich.console import Console
+        from rich.progress import track
 
-    console = Console(stderr=True)
-    if len(paths) > 1:
-        yield from track(paths, doing, console=console, transient=True)
+        yield from track(paths, doing, console=Console(stderr=True), transient=True)
         return
     for path in paths:
-        with console.status(escape(f"{doing} {path}"), spinner="line"):
+        with busy(f"{doing} {path}"):
             yield path

@@ -7,9 +7,10 @@ import math
 from biasband.circuit.topology import EMITTER_PARTS, Node
 from biasband.margins.records import Margin
 from biasband.quantity import Kind
+from biasband.show.release import version
 from biasband.show.table import figure, whole_percent, yield_percent
 from biasband.signoff.study import Review
-from biasband.stage import Stage
+from biasband.stage import Stage, Transistor
 from biasband.values.ideal import Step
 from biasband.variation.contributors import (
     BASE_EMITTER,
@@ -21,12 +22,15 @@ from biasband.variation.contributors import (
     TEMPERATURE,
 )
 from biasband.variation.corners import Extreme
-from biasband.variation.sampling import yield_bound
+from biasband.variation.sampling import Boards, yield_bound
 
 MATTERS = 0.05
 """A contributor with a smaller share of the way to the worst is not named."""
 
 MOST_NAMED = 4
+
+GROUND = "0"
+"""The symbol of the node that all voltages are counted from."""
 
 _NAMES = {GAIN: "h_FE", BASE_EMITTER: "V_BE", NEGATIVE: "negative supply"}
 _KINDS = {
@@ -62,7 +66,7 @@ def places(extreme: Extreme) -> str:
     """Where every contributor stands at an extreme, those in use first."""
     if not extreme.coordinates:
         return "nothing varies"
-    return ", ".join(place(name, extreme) for name in reversed(extreme.coordinates))
+    return ", ".join(place(name, extreme) for name in reversed(tuple(extreme.coordinates)))
 
 
 def worst(row: Margin) -> str:
@@ -93,10 +97,16 @@ def head(stage: Stage) -> tuple[str, ...]:
     revision = f"revision {stage.revision}" if stage.revision else ""
     designer = f"designed by {stage.designed_by}" if stage.designed_by else ""
     document = [text for text in (stage.document, revision, designer) if text]
-    kind = f"{stage.topology}, {stage.polarity.upper()}"
-    kind += f", {stage.transistor.label}" if getattr(stage.transistor, "label", "") else ""
+    label = stage.transistor.label if isinstance(stage.transistor, Transistor) else ""
+    kind = [stage.topology, stage.polarity.upper(), *([label] if label else [])]
     files = [f"file {file.path}, SHA-256 {file.sha256[:12]}" for file in stage.files]
-    return (*([", ".join(document)] if document else []), kind, *files)
+    return (*([", ".join(document)] if document else []), ", ".join(kind), *files)
+
+
+def sampled(boards: Boards) -> str:
+    """What was sampled, and by which program."""
+    counts = f"{boards.boards} boards, seed {boards.seed}, {boards.points} points of use"
+    return f"{counts}, biasband {version()}"
 
 
 def joint_yield(review: Review) -> str:
@@ -126,35 +136,35 @@ def _inside(review: Review, name: str) -> str:
     return yield_percent(review.spread[name].inside(interval.low, interval.high))
 
 
-def formula(step: Step, *, polarity: str, split: bool) -> str:
+def formula(step: Step, stage: Stage) -> str:
     """A resistor's formula with its numbers: "(V_CC − V_C) / I = (9 V − 5.15 V) / 1 mA = 3.85 kΩ"."""
     result = figure(step.ohms, Kind.RESISTANCE)
-    if step.rule and step.high == step.low:  # a rule that replaced the formula
+    if step.rule and step.high == step.low:  # the rule stands in the formula's place
         return f"{step.rule} = {result}"
-    symbols = _symbols(polarity, split)
-    beside = next(part for part in EMITTER_PARTS if part != step.resistor) if step.beside else ""
-    letters = f"({symbols[step.high_node]} − {symbols[step.low_node]}) / I"
-    numbers = f"({_volts(step.high)} − {_volts(step.low)}) / {figure(step.current, Kind.CURRENT)}"
-    if beside:
-        letters, numbers = f"{letters} − {beside}", f"{numbers} − {figure(step.beside, Kind.RESISTANCE)}"
+    names = _symbols(stage)
+    high, low = figure(step.high, Kind.VOLTAGE), figure(step.low, Kind.VOLTAGE)
+    low = f"({low})" if step.low < 0.0 else low
+    current = figure(step.current, Kind.CURRENT)
+    letters, numbers = f"{names[step.high_node]} / I", f"{high} / {current}"
+    if names[step.low_node] != GROUND:
+        letters = f"({names[step.high_node]} − {names[step.low_node]}) / I"
+        numbers = f"({high} − {low}) / {current}"
+    if step.beside:
+        other = next(part for part in EMITTER_PARTS if part != step.resistor)
+        letters, numbers = f"{letters} − {other}", f"{numbers} − {figure(step.beside, Kind.RESISTANCE)}"
     rule = f", I = {step.rule}" if step.rule else ""
     return f"{letters} = {numbers} = {result}{rule}"
 
 
-def _volts(value: float) -> str:
-    text = figure(value, Kind.VOLTAGE)
-    return f"({text})" if value < 0.0 else text
-
-
-def _symbols(polarity: str, split: bool) -> dict[Node, str]:
-    """The field's symbols: which supply a rail is depends on the polarity."""
-    lower = "V_EE" if split else "0"
-    collector, emitter = ("V_CC", lower) if polarity == "npn" else (lower, "V_CC")
+def _symbols(stage: Stage) -> dict[Node, str]:
+    """The field's symbols; which supply a rail is depends on the polarity."""
+    lower = GROUND if stage.negative_supply is None else "V_EE"
+    collector, emitter = ("V_CC", lower) if stage.polarity == "npn" else (lower, "V_CC")
     return {
         Node.BASE: "V_B",
         Node.COLLECTOR: "V_C",
         Node.EMITTER: "V_E",
         Node.COLLECTOR_RAIL: collector,
         Node.EMITTER_RAIL: emitter,
-        Node.GROUND: "0",
+        Node.GROUND: GROUND,
     }

@@ -2,40 +2,79 @@
 
 from __future__ import annotations
 
-from biasband.parts.derating import PROFILES
-from biasband.show.cautions import CAUTIONS
-from biasband.show.prose import frozen_or_chosen, head, joint_yield, rss_assumption
-from biasband.show.release import version
-from biasband.show.review_tables import margin_table, nominal_table, parts_table
-from biasband.show.table import Passage, Report, Tone
-from biasband.signoff.study import Review
+from collections.abc import Mapping, Sequence
 
-_TONES: dict[str, Tone] = {"pass": "pass", "fail": "fail", "inconclusive": "doubt"}
+from biasband.circuit.quantities import Quantity
+from biasband.parts.derating import PROFILES
+from biasband.parts.series import Snap
+from biasband.show.analysis_tables import corners_table, design_table, snap_table, spread_tables
+from biasband.show.cautions import CAUTIONS
+from biasband.show.prose import frozen_or_chosen, head, joint_yield, rss_assumption, sampled
+from biasband.show.release import version
+from biasband.show.review_tables import margin_table, nominal_table, parts_table, summary_table
+from biasband.show.summary import Attempt
+from biasband.show.table import OUTCOME_TONES, Passage, Report
+from biasband.signoff.study import Review
+from biasband.values.choosing import Design
+from biasband.variation.corners import Corners
+from biasband.variation.sampling import Boards
+
+_CAUTIONS = Passage("Cautions", CAUTIONS)
 
 
 def review_report(review: Review) -> Report:
     """A review as a reviewer reads it, top to bottom, in a minute."""
     return (
-        _header(review),
+        _header(review.design, sampled(review.evidence.boards), PROFILES[review.stage.derating].sentence),
         parts_table(review),
         nominal_table(review),
         margin_table(review),
         *_statistics(review),
         *_warnings(review.warnings),
         _verdict(review),
-        Passage("Cautions", CAUTIONS),
+        _CAUTIONS,
     )
 
 
-def _header(review: Review) -> Passage:
-    boards = review.evidence.boards
-    sentences = (
-        *head(review.stage),
-        frozen_or_chosen(review.design.frozen, review.design.chosen),
-        f"{boards.boards} boards, seed {boards.seed}, {boards.points} points of use, biasband {version()}",
-        PROFILES[review.stage.derating].sentence,
+def summary_report(attempts: Sequence[Attempt]) -> Report:
+    """Several stages, one line each."""
+    return (summary_table(attempts),)
+
+
+def design_report(design: Design) -> Report:
+    """Ideal values with their formulas, and the preferred values."""
+    program = f"biasband {version()}"
+    return (_header(design, program), design_table(design), *_warnings(design.warnings), _CAUTIONS)
+
+
+def snap_report(snaps: Sequence[Snap]) -> Report:
+    """Preferred values."""
+    return (snap_table(snaps),)
+
+
+def corners_report(design: Design, corners: Corners, words: Mapping[str, Quantity]) -> Report:
+    """The corners of a stage in depth."""
+    return (
+        _header(design, f"biasband {version()}"),
+        corners_table(corners, words),
+        *_warnings(design.warnings),
+        _CAUTIONS,
     )
-    return Passage(review.stage.title, sentences)
+
+
+def spread_report(design: Design, boards: Boards, words: Mapping[str, Quantity]) -> Report:
+    """The sampled boards of a stage in depth."""
+    return (
+        _header(design, sampled(boards)),
+        *spread_tables(boards, words),
+        *_warnings(design.warnings),
+        _CAUTIONS,
+    )
+
+
+def _header(design: Design, *more: str) -> Passage:
+    values = frozen_or_chosen(design.frozen, design.chosen)
+    return Passage(design.stage.title, (*head(design.stage), values, *more))
 
 
 def _statistics(review: Review) -> Report:
@@ -50,4 +89,4 @@ def _warnings(warnings: tuple[str, ...]) -> Report:
 
 def _verdict(review: Review) -> Passage:
     verdict = review.verdict
-    return Passage(verdict.line, verdict.because, _TONES[verdict.outcome])
+    return Passage(verdict.line, verdict.because, OUTCOME_TONES[verdict.outcome])

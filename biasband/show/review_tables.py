@@ -12,6 +12,7 @@ from biasband.show.prose import worst
 from biasband.show.summary import Attempt
 from biasband.show.table import (
     NOT_KNOWN,
+    OUTCOME_TONES,
     REGION_WORDS,
     Column,
     Row,
@@ -50,6 +51,12 @@ MARGIN_COLUMNS = (
     Column("margin"),
     Column("share"),
     Column("verdict", "left", toned=True),
+)
+
+SUMMARY_COLUMNS = (
+    Column("verdict", "left", toned=True),
+    Column("stage file", "left"),
+    Column("smallest margin", "left"),
 )
 
 _SIGNS = {"at_least": "≥", "at_most": "≤"}
@@ -156,22 +163,20 @@ def _required(row: Margin) -> str:
 
 def summary_table(attempts: Sequence[Attempt]) -> Table:
     """One line per stage file: verdict, file, smallest margin."""
-    columns = (Column("verdict", "left", toned=True), Column("stage file", "left"), Column("smallest margin", "left"))
-    return Table("", columns, tuple(_summary_row(attempt) for attempt in attempts))
+    return Table("", SUMMARY_COLUMNS, tuple(_summary_row(attempt) for attempt in attempts))
 
 
 def _summary_row(attempt: Attempt) -> Row:
     review = attempt.review
     if review is None:
-        return Row(("bad input", attempt.path, "see the message"), tone="fail")
-    tones: dict[str, Tone] = {"pass": "pass", "fail": "fail", "inconclusive": "doubt"}
+        return Row(("bad input", attempt.path, ""), tone="fail")
     outcome = review.verdict.outcome
     shown = outcome if outcome == "pass" else outcome.upper()
-    return Row((shown, attempt.path, _smallest(review)), tone=tones[outcome])
+    return Row((shown, attempt.path, _smallest(review)), tone=OUTCOME_TONES[outcome])
 
 
 def _smallest(review: Review) -> str:
     if not review.rows:
         return "no limits"
     row = review.rows[0]
-    return f"{difference(row.margin, row.kind)}, {label(row)}"
+    return f"{share_left(row)}, {label(row)}"

@@ -7,6 +7,7 @@ The columns of every table are decided in this room, once, for every output: `re
 from __future__ import annotations
 
 import math
+from collections.abc import Mapping
 from dataclasses import dataclass
 from decimal import ROUND_DOWN, Decimal
 from typing import Literal
@@ -25,6 +26,9 @@ _YIELD_STEP = Decimal("0.001")
 
 REGION_WORDS = {region: region.name.lower().replace("_", " ") for region in Region}
 """The regions as tables and JSON name them."""
+
+
+OUTCOME_TONES: Mapping[str, Tone] = {"pass": "pass", "fail": "fail", "inconclusive": "doubt"}
 
 
 @dataclass(frozen=True)

@@ -1,0 +1,129 @@
+"""The tables of one analysis in depth: design, snapping, corners, spread."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+
+from biasband.circuit.quantities import Quantity
+from biasband.parts.series import Snap
+from biasband.quantity import Kind
+from biasband.show.prose import formula, places
+from biasband.show.table import REGION_WORDS, Column, Row, Table, code, difference, figure, percent
+from biasband.stage import Stage
+from biasband.values.choosing import Design, PartChoice
+from biasband.values.ideal import Step
+from biasband.variation.corners import Corners, Range
+from biasband.variation.sampling import QUANTILES, Boards, Sample
+
+DESIGN_COLUMNS = (
+    Column("part", "left"),
+    Column("hand"),
+    Column("refined"),
+    Column("value"),
+    Column("off refined"),
+    Column("code", "left"),
+    Column("series", "left", spare=1),
+)
+
+SNAP_COLUMNS = (
+    Column("wanted"),
+    Column("below"),
+    Column("above"),
+    Column("nearest"),
+    Column("code", "left"),
+    Column("off"),
+    Column("series", "left"),
+)
+
+CORNER_COLUMNS = (Column("quantity", "left"), Column("lowest"), Column("highest"), Column("found at", "left"))
+
+SPREAD_COLUMNS = (
+    Column("quantity", "left"),
+    Column("mean", spare=1),
+    Column("sd", spare=2),
+    *(Column(f"{100 * share:g} %") for share in QUANTILES),
+)
+
+
+def design_table(design: Design) -> Table:
+    """Each ideal value by hand and refined, with its formulas, then the preferred value."""
+    rows = tuple(_design_row(part, design.stage) for part in design.parts)
+    notes = (
+        "hand: V_BE = 0.7 V, I_E = I_C, an unloaded divider; refined: the real model meets the target.",
+        "Where a value is snapped the rest is designed anew, so a value may be further off than its series.",
+    )
+    return Table("Values", DESIGN_COLUMNS, rows, notes if design.chosen else ())
+
+
+def _design_row(part: PartChoice, stage: Stage) -> Row:
+    steps = (("hand", part.hand), ("refined", part.ideal))
+    series = stage.resistor(part.name).series
+    return Row(
+        (
+            part.name,
+            _ohms(part.hand),
+            _ohms(part.ideal),
+            figure(part.value, Kind.RESISTANCE, digits=6),
+            percent(part.value / part.ideal.ohms - 1.0) if part.ideal else "given",
+            code(part.value),
+            series if part.chosen else "",
+        ),
+        tuple(f"{name}: {formula(step, stage)}" for name, step in steps if step is not None),
+    )
+
+
+def _ohms(step: Step | None) -> str:
+    return "" if step is None else figure(step.ohms, Kind.RESISTANCE)
+
+
+def snap_table(snaps: Sequence[Snap]) -> Table:
+    """Values and the preferred ones around them."""
+    return Table("", SNAP_COLUMNS, tuple(_snap_row(snap) for snap in snaps))
+
+
+def _snap_row(snap: Snap) -> Row:
+    values = (snap.value, snap.below, snap.above, snap.chosen)
+    ohms = (figure(value, Kind.RESISTANCE, digits=6) for value in values)
+    return Row((*ohms, code(snap.chosen), percent(snap.error), snap.series))
+
+
+def corners_table(corners: Corners, words: Mapping[str, Quantity]) -> Table:
+    """The extremes of every quantity, and where every contributor stands at each."""
+    rows = tuple(_corner_row(corners.ranges[name], quantity) for name, quantity in words.items())
+    regions = ", ".join(f"{count} {REGION_WORDS[region]}" for region, count in corners.regions.items())
+    return Table(f"{corners.count} corners: {regions}", CORNER_COLUMNS, rows)
+
+
+def _corner_row(found: Range, quantity: Quantity) -> Row:
+    return Row(
+        (
+            quantity.name,
+            figure(found.low.value, quantity.kind),
+            figure(found.high.value, quantity.kind),
+            "inside the limits" if found.interior else "corners",
+        ),
+        (f"lowest: {places(found.low)}", f"highest: {places(found.high)}"),
+    )
+
+
+def spread_tables(boards: Boards, words: Mapping[str, Quantity]) -> tuple[Table, ...]:
+    """Mean, deviation and quantiles at nominal use, and of each board's lowest and highest in use."""
+    titles = {
+        "nominal_use": "At nominal use",
+        "lowest_in_use": "Each board's lowest in use",
+        "highest_in_use": "Each board's highest in use",
+    }
+    return tuple(
+        Table(
+            title,
+            SPREAD_COLUMNS,
+            tuple(_spread_row(getattr(boards.spread[name], place), word) for name, word in words.items()),
+        )
+        for place, title in titles.items()
+    )
+
+
+def _spread_row(sample: Sample, quantity: Quantity) -> Row:
+    quantiles = (figure(sample.quantile(share), quantity.kind) for share in QUANTILES)
+    mean, sd = figure(sample.mean, quantity.kind), difference(sample.sd, quantity.kind)
+    return Row((quantity.name, mean, sd, *quantiles))
