@@ -24,5 +24,8 @@ HOTTEST_JUNCTION = 250.0 + KELVIN_OFFSET
 ASSUMED_SATURATION_VOLTAGE = 0.2
 """V_CE(sat) [V] where the stage file states none (common practice: about 0.2 V)."""
 
+DEFAULT_EMITTER_VOLTAGE = 1.0
+"""[V] across the emitter resistor where the target leaves it out (the 1 V rule, common practice)."""
+
 HAND_BASE_EMITTER_VOLTAGE = 0.7
 """V_BE [V] of a hand calculation (common practice)."""

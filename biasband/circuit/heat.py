@@ -37,7 +37,7 @@ _NEGLIGIBLE_RISE = 1e-3
 _TELLING_MOVE = 1e-4
 """[K] A move from which a slope can be told from rounding."""
 
-_CLIMB_POINTS = 64
+_CLIMB_POINTS = 32
 _BISECTIONS = 32
 
 
@@ -122,7 +122,7 @@ def _warm_up(problem: Problem, R: float, solve: Solver) -> Heated:
     gain = gain_cold = np.zeros_like(wanted)
     for step in range(_SECANT_STEPS):
         move = (problem.ambient + wanted - T) / (1.0 - gain)
-        T = T + move
+        T = np.minimum(T + move, HOTTEST_JUNCTION)
         bias, forward = solve(T, forward)
         before, wanted = wanted, R * bias.power
         told = np.abs(move) > _TELLING_MOVE
@@ -161,35 +161,37 @@ def _climb(problem: Problem, R: float, top: Array) -> Found:
     """Walk from ambient to `top` [K] (the fixed point, where known, else the hottest junction).
 
     RUNAWAY where G reaches one at or before the first fixed point, or where there is none;
-    UNSOLVED where the junctions could not be solved on the way.
+    UNSOLVED where the junctions could not be solved on the way. Whoever is decided walks no further.
     """
     start = problem.ambient + np.zeros_like(top)
-    low, high, worst = start.copy(), top.copy(), np.full(top.shape, -np.inf)
-    arrived, lost = np.zeros(top.shape, dtype=bool), np.zeros(top.shape, dtype=bool)
+    low, high = start.copy(), start.copy()
+    status = np.full(top.shape, Status.RUNAWAY, dtype=np.int8)
+    walking = np.arange(top.size)
     for share in np.linspace(0.0, 1.0, _CLIMB_POINTS + 1):
-        T = start + (top - start) * share
-        gap, gain, solved = _gap(problem, R, T)
-        on_the_way = ~arrived
-        lost |= on_the_way & ~solved
-        worst[on_the_way] = np.fmax(worst, gain)[on_the_way]
-        arrived |= gap <= SETTLED
-        low[~arrived] = T[~arrived]
-        high[on_the_way & arrived] = T[on_the_way & arrived]
-    T_j = _bisect(problem, R, low, high)
-    bias = isothermal(problem, T_j)
-    status = np.full(top.shape, Status.SOLVED, dtype=np.int8)
-    status[~arrived | (worst >= 1.0)] = Status.RUNAWAY
-    status[lost | ~bias.solved] = Status.UNSOLVED
-    return Found(bias, T_j, status)
+        T = start[walking] + (top - start)[walking] * share
+        gap, gain, solved = _gap(problem.part(walking), R, T)
+        arrives = solved & (gain < 1.0) & (gap <= SETTLED)
+        high[walking[arrives]] = T[arrives]
+        status[walking[arrives]] = Status.SOLVED
+        status[walking[~solved]] = Status.UNSOLVED
+        walks = solved & (gain < 1.0) & ~arrives
+        walking = walking[walks]
+        low[walking] = T[walks]
+        if not walking.size:
+            break
+    T_j = _bisect(problem, R, low, high, np.flatnonzero(status == Status.SOLVED))
+    return Found(isothermal(problem, T_j), T_j, status)
 
 
-def _bisect(problem: Problem, R: float, low: Array, high: Array) -> Array:
-    """The junction temperature [K] between `low`, from where it still rises, and `high`."""
-    for _ in range(_BISECTIONS):
-        middle = 0.5 * (low + high)
-        rises = _gap(problem, R, middle)[0] > 0.0
-        low, high = np.where(rises, middle, low), np.where(rises, high, middle)
-    return 0.5 * (low + high)
+def _bisect(problem: Problem, R: float, low: Array, high: Array, rows: NDArray[np.intp]) -> Array:
+    """The junction temperature [K] between `low`, from where it still rises, and `high`, at `rows`."""
+    T_j, some, below, above = high.copy(), problem.part(rows), low[rows], high[rows]
+    for _ in range(_BISECTIONS if rows.size else 0):
+        middle = 0.5 * (below + above)
+        rises = _gap(some, R, middle)[0] > 0.0
+        below, above = np.where(rises, middle, below), np.where(rises, above, middle)
+    T_j[rows] = 0.5 * (below + above)
+    return T_j
 
 
 def _gap(problem: Problem, R: float, T: Array) -> tuple[Array, Array, NDArray[np.bool_]]:

@@ -10,10 +10,7 @@ from __future__ import annotations
 from collections.abc import Mapping
 from dataclasses import dataclass
 
-import numpy as np
-from numpy.typing import NDArray
-
-from biasband.circuit.scenarios import Scenarios, Values, rows_of
+from biasband.circuit.scenarios import Rows, Scenarios, Values, rows_of
 from biasband.circuit.topology import TERMINALS, Node, Wire, Wiring
 from biasband.stage import Polarity
 
@@ -38,7 +35,7 @@ class Ports:
     node_open: Mapping[Node, Values]
     node_z: Mapping[Node, tuple[Values, Values]]
 
-    def part(self, rows: NDArray[np.bool_]) -> Ports:
+    def part(self, rows: Rows) -> Ports:
         """The network of the scenarios at `rows`."""
         plain = (rows_of(getattr(self, name), rows) for name in _PLAIN_PORTS)
         open_be, open_bc, z11, z12, z21, z22 = plain

@@ -105,7 +105,7 @@ def newton(ports: Ports, law: Laws, V_BE: Array, V_BC: Array, *, steps: int) -> 
     """Newton's method from (V_BE, V_BC) [V] until all are solved or the steps are used up."""
     here = tangent(ports, law, V_BE, V_BC)
     for _ in range(steps):
-        if np.all(here.residual < RESIDUAL):
+        if not np.any(here.residual >= RESIDUAL):  # what is no number any more stays so
             break
         d_be, d_bc = here.solve(here.f1, here.f2)
         V_BE, V_BC = _moved(V_BE, -d_be, law), _moved(V_BC, -d_bc, law)

@@ -6,6 +6,7 @@ are real, to the stage's ground; V_CE and the currents are positive in conductio
 
 from __future__ import annotations
 
+import functools
 from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass
 
@@ -22,17 +23,30 @@ from biasband.quantity import Kind
 
 
 @dataclass(frozen=True)
-class Quantity:
-    """A quantity: how it is read, shape (N,), and by how much ripple moves it either way.
+class Pieces:
+    """Smooth functions of which a quantity is the least (else the greatest): it has ridges."""
 
-    `ripple` is the half-width [same unit] by which coupled ripple widens the value; zero but for
-    the output. `by_magnitude` says that a requirement is judged by the magnitude.
+    read: Callable[[Reading], tuple[Values, ...]]
+    least: bool
+
+    def __call__(self, reading: Reading) -> Values:
+        pieces = self.read(reading)
+        return functools.reduce(np.minimum if self.least else np.maximum, pieces)
+
+
+@dataclass(frozen=True)
+class Quantity:
+    """A quantity: how it is read, shape (N,), and by how much coupled ripple moves it.
+
+    `ripple` [same unit] widens the output's voltage either way, and takes from a headroom
+    (`ripple_lifts` False). `by_magnitude` says that a requirement is judged by the magnitude.
     """
 
     name: str
     kind: Kind
-    read: Callable[[Reading], Values]
+    read: Callable[[Reading], Values] | Pieces
     ripple: Callable[[Reading], Values] | None = None
+    ripple_lifts: bool = True
     by_magnitude: bool = False
 
 
@@ -49,6 +63,10 @@ def _node_voltage(node: Node) -> Callable[[Reading], Values]:
 
 def _output_ripple_at(node: Node) -> Callable[[Reading], Values]:
     return lambda reading: reading.coupled_ripple if node is reading.wiring.output else 0.0
+
+
+def _coupled_ripple(reading: Reading) -> Values:
+    return reading.coupled_ripple
 
 
 def _supply_current(reading: Reading) -> Values:
@@ -106,13 +124,12 @@ def _headroom(up: bool) -> Callable[[Reading], Values]:
         if reading.stage.polarity == "pnp":
             rises_on_cut_off = not rises_on_cut_off
         side = _into_cut_off if up is rises_on_cut_off else _into_saturation
-        return side(reading) - reading.coupled_ripple
+        return side(reading)
 
     return read
 
 
-def _symmetric(reading: Reading) -> Values:
-    return np.minimum(_into_cut_off(reading), _into_saturation(reading)) - reading.coupled_ripple
+_SYMMETRIC = Pieces(lambda reading: (_into_cut_off(reading), _into_saturation(reading)), least=True)
 
 
 def _of_signal(
@@ -125,8 +142,12 @@ def _supply_feedthrough(reading: Reading) -> Values:
     return reading.feedthrough_open if reading.stage.signal is None else reading.feedthrough_short
 
 
-def _peak_ripple(reading: Reading) -> Values:
-    return reading.output_per_ripple * reading.stage.supply.ripple_peak
+def _ripple_pieces(reading: Reading) -> tuple[Values, ...]:
+    """Output over supply both ways, capacitors open and (if they couple) short, at the ripple's peak."""
+    peak = reading.stage.supply.ripple_peak
+    open_, short = reading.feedthrough_open, reading.feedthrough_short
+    ways = (open_, -open_) if reading.stage.signal is None else (open_, -open_, short, -short)
+    return tuple(peak * way for way in ways)
 
 
 _PLAIN = (
@@ -142,14 +163,14 @@ _PLAIN = (
     Quantity("supply_current", Kind.CURRENT, _supply_current),
     Quantity("transistor_power", Kind.POWER, lambda r: r.point.power),
     Quantity("junction_temperature", Kind.TEMPERATURE, lambda r: r.point.junction_temperature),
-    Quantity("headroom_up", Kind.VOLTAGE, _headroom(up=True)),
-    Quantity("headroom_down", Kind.VOLTAGE, _headroom(up=False)),
-    Quantity("symmetric_peak_swing", Kind.VOLTAGE, _symmetric),
+    Quantity("headroom_up", Kind.VOLTAGE, _headroom(up=True), _coupled_ripple, ripple_lifts=False),
+    Quantity("headroom_down", Kind.VOLTAGE, _headroom(up=False), _coupled_ripple, ripple_lifts=False),
+    Quantity("symmetric_peak_swing", Kind.VOLTAGE, _SYMMETRIC, _coupled_ripple, ripple_lifts=False),
     Quantity("voltage_gain", Kind.NUMBER, _of_signal(signal.voltage_gain), by_magnitude=True),
     Quantity("input_resistance", Kind.RESISTANCE, _of_signal(signal.input_resistance)),
     Quantity("output_resistance", Kind.RESISTANCE, _of_signal(signal.output_resistance)),
     Quantity("supply_feedthrough", Kind.NUMBER, _supply_feedthrough),
-    Quantity("output_ripple", Kind.VOLTAGE, _peak_ripple),
+    Quantity("output_ripple", Kind.VOLTAGE, Pieces(_ripple_pieces, least=False)),
 )
 
 

@@ -12,6 +12,9 @@ Array = NDArray[np.float64]
 Values = Array | float
 """An array of shape (N,), or one number that holds for all N scenarios."""
 
+Rows = slice | NDArray[np.intp] | NDArray[np.bool_]
+"""Some of N scenarios."""
+
 
 @dataclass(frozen=True, kw_only=True)
 class Scenarios:
@@ -38,7 +41,7 @@ class Scenarios:
         """Every value under its contributor's name (formats: `low_at`)."""
         return {**self.resistances, **{name: getattr(self, name) for name in _PLAIN}}
 
-    def part(self, rows: slice | NDArray[np.intp] | NDArray[np.bool_]) -> Scenarios:
+    def part(self, rows: Rows) -> Scenarios:
         """The scenarios at `rows`."""
         plain = {name: rows_of(getattr(self, name), rows) for name in _PLAIN}
         return Scenarios(
@@ -53,7 +56,7 @@ class Scenarios:
 _PLAIN = tuple(field.name for field in fields(Scenarios) if field.name != "resistances")
 
 
-def rows_of(values: Values, rows: slice | NDArray[np.intp] | NDArray[np.bool_]) -> Values:
+def rows_of(values: Values, rows: Rows) -> Values:
     """The values at `rows`, or the one number that holds for all."""
     return values if np.ndim(values) == 0 else np.asarray(values)[rows]
 

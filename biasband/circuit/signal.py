@@ -13,7 +13,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from biasband.circuit.junction import Laws
-from biasband.circuit.network import Ports, Rails, condense, supply_excitation, total
+from biasband.circuit.network import Ports, Rails, condense, sign, supply_excitation, total
 from biasband.circuit.newton import tangent
 from biasband.circuit.operating_point import OperatingPoint
 from biasband.circuit.scenarios import Array, Values
@@ -92,7 +92,7 @@ def feedthrough(coupled: Coupled, law: Laws, point: OperatingPoint, polarity: Po
     """Output over supply for the wiring given: the DC wiring (open) or the coupled one (short)."""
     excitation = {**_QUIET, **supply_excitation(polarity)}
     ports = condense(coupled.wiring, coupled.resistances, excitation)
-    return answer(ports, law, point).volts[coupled.wiring.output]
+    return sign(polarity) * answer(ports, law, point).volts[coupled.wiring.output]
 
 
 def voltage_gain(coupled: Coupled, law: Laws, point: OperatingPoint) -> Values:

@@ -12,10 +12,9 @@ from biasband.circuit.active import Bias, active_region
 from biasband.circuit.junction import Laws, laws
 from biasband.circuit.network import Ports
 from biasband.circuit.newton import newton, start
-from biasband.circuit.scenarios import Array, Scenarios, Values, rows_of
+from biasband.circuit.scenarios import Array, Rows, Scenarios, Values, rows_of
 from biasband.circuit.topology import Node
 from biasband.stage import Transistor
-
 
 _FEW, _MANY = 4, 200
 """Newton steps on the full equations: for all, and for those that need more before giving up."""
@@ -56,7 +55,7 @@ class Problem:
             temperature=temperature,
         )
 
-    def part(self, rows: NDArray[np.bool_]) -> Problem:
+    def part(self, rows: Rows) -> Problem:
         """The problem of the scenarios at `rows`."""
         return Problem(
             self.ports.part(rows),

@@ -10,6 +10,7 @@ from functools import partial
 
 from biasband.circuit.quantities import quantity_units
 from biasband.circuit.topology import TOPOLOGIES, Node
+from biasband.constants import DEFAULT_EMITTER_VOLTAGE
 from biasband.files.ledger import Ledger
 from biasband.files.toml_lines import KeyPath
 from biasband.quantity import Kind, format_quantity
@@ -98,10 +99,25 @@ def _supply_above_base_emitter_voltage(stage: Stage, ledger: Ledger) -> None:
 
 
 def _emitter_voltage(stage: Stage) -> float | None:
-    """The target's voltage [V] across the emitter resistor; None where the 1 V rule holds."""
-    if stage.target is None or stage.target.supply_over is None:
-        return None if stage.target is None else stage.target.emitter_voltage
-    return stage.supply.voltage.nominal / stage.target.supply_over
+    """The voltage [V] wished across the emitter resistor; None where nothing wishes for one."""
+    target = stage.target
+    if target is None or target.emitter_voltage is not None:
+        return None if target is None else target.emitter_voltage
+    if target.supply_over is not None:
+        return stage.supply.voltage.nominal / target.supply_over
+    return DEFAULT_EMITTER_VOLTAGE if _by_default(stage) else None
+
+
+def _wished(stage: Stage) -> bool:
+    target = stage.target
+    return target is not None and (target.emitter_voltage is not None or target.supply_over is not None)
+
+
+def _by_default(stage: Stage) -> bool:
+    """Whether the 1 V rule places the emitter: no resistor is given, and nothing else has a rule."""
+    topology, names = TOPOLOGIES[stage.topology], {r.name for r in stage.resistors}
+    follows_output = topology.output is Node.EMITTER or topology.split_supply
+    return not follows_output and "RE" in names and all(r.value is None for r in stage.resistors)
 
 
 def _room_above_emitter(stage: Stage, ledger: Ledger) -> None:
@@ -110,14 +126,17 @@ def _room_above_emitter(stage: Stage, ledger: Ledger) -> None:
     if emitter is None or not _powered(stage):
         return
     path = ("target", "emitter_voltage")
+    rule = " (left out, so the 1 V rule holds)" if _by_default(stage) and not _wished(stage) else ""
     if emitter + stage.saturation_voltage >= span:
         problem = (
-            f"{_volts(emitter)} at the emitter and a V_CE(sat) of {_volts(stage.saturation_voltage)} "
+            f"{_volts(emitter)}{rule} at the emitter and a V_CE(sat) of {_volts(stage.saturation_voltage)} "
             f"leave no swing of the {_volts(span)} from rail to rail"
         )
         ledger.add(path, problem)
     elif emitter + junction >= drive > junction:
-        problem = f"{_volts(emitter)} at the emitter put the base beyond the {_volts(drive)} that drive it"
+        problem = (
+            f"{_volts(emitter)}{rule} at the emitter put the base beyond the {_volts(drive)} that drive it"
+        )
         ledger.add(path, problem, hint=f"V_BE is {_volts(junction)}")
 
 

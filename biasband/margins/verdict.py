@@ -4,11 +4,13 @@ from __future__ import annotations
 
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
+from math import isnan
 from typing import Literal
 
 from biasband.circuit.operating_point import Region
 from biasband.margins.checks import Standing
 from biasband.margins.records import Evidence, Margin
+from biasband.quantity import format_quantity
 from biasband.stage import Stage
 
 Outcome = Literal["pass", "fail", "inconclusive"]
@@ -57,11 +59,15 @@ def _failures(nominal: Region, margins: Sequence[Margin], evidence: Evidence) ->
 
 
 def label(margin: Margin) -> str:
-    """What a row is called in reasons: its id and quantity, or the check's name."""
-    return f"check {margin.quantity}" if margin.standing else f"{margin.id} {margin.quantity}"
+    """What a row is called in reasons: its id (or that it is a check), quantity and limit."""
+    name = f"check {margin.quantity}" if margin.standing else f"{margin.id} {margin.quantity}"
+    sign = "≥" if margin.side == "at_least" else "≤"
+    return f"{name} {sign} {format_quantity(margin.limit, margin.kind)}"
 
 
 def _how_it_fails(margin: Margin) -> str:
+    if isnan(margin.nominal):
+        return "there is no nominal value to hold against it"
     if margin.margin_share is None:
         return "the nominal value is itself on or beyond the limit"
     return "fails by yield" if margin.judged_by == "yield" else f"fails by {margin.judged_by}"

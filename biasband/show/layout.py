@@ -131,6 +131,7 @@ def _joined(cells: list[str], columns: list[Column], widths: list[int], style: s
         line.append(pad if column.align == "right" else "")
         line.append(cell, style if heading or column.toned else "")
         line.append("" if column.align == "right" or last else pad)
+    line.rstrip()
     return line
 
 

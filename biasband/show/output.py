@@ -7,17 +7,23 @@ import sys
 from collections.abc import Iterator, Sequence
 from contextlib import contextmanager
 
+from biasband.errors import UsageError
 from biasband.show.spelling import Spelling
 
 
 def deliver(text: str) -> None:
-    """Write a result; a reader that has left (`| head`) is no reason to complain."""
+    """Write a result; a reader that has left (`| head`) is no reason to complain.
+
+    Raises: UsageError where standard output cannot be written, as on a full disk.
+    """
     try:
         sys.stdout.write(text)
         sys.stdout.flush()
     except BrokenPipeError:
         # What is still in the buffer would be written, and fail again, when Python leaves.
         os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+    except OSError as error:
+        raise UsageError(f"standard output cannot be written: {error.strerror}") from None
 
 
 def complain(text: str) -> None:

@@ -15,12 +15,10 @@ import numpy as np
 from biasband.circuit.network import rails, sign, total
 from biasband.circuit.reading import wiring_of
 from biasband.circuit.topology import TERMINALS, Node, Wire, Wiring
+from biasband.constants import DEFAULT_EMITTER_VOLTAGE
 from biasband.stage import Signal, Stage, Target
 from biasband.values.device import Device, Need
 from biasband.variation.contributors import realise
-
-DEFAULT_EMITTER_VOLTAGE = 1.0
-"""[V] across the emitter resistor where the target leaves it out (the 1 V rule, common practice)."""
 
 STIFF_BASE = 0.1
 """R_B = 0.1·β·R_E for a base fed from ground (common practice)."""
@@ -78,8 +76,11 @@ def aim(stage: Stage, target: Target, fixed: Mapping[str, float], device: Device
     resistors decide the collector current, that current takes the target's place. Raises
     ArithmeticError where they decide on none between 1 nA and 100 A.
     """
-    equations = _Equations(stage, target, fixed)
-    I_C = target.collector_current
+    with np.errstate(over="ignore", invalid="ignore"):  # a wild trial current overflows and is rejected
+        return _aim(_Equations(stage, target, fixed), device, target.collector_current)
+
+
+def _aim(equations: _Equations, device: Device, I_C: float) -> Aim:
     if equations.surplus(device, I_C) is not None:
         I_C = _bisect(lambda log_I: equations.surplus(device, float(np.exp(log_I))) or 0.0, *_CURRENTS)
         I_C = float(np.exp(I_C))

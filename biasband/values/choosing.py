@@ -128,4 +128,5 @@ def _missed(misses: tuple[Miss, ...], fixed: Mapping[str, float]) -> Iterator[st
     for miss in misses:
         kind = Kind.CURRENT if miss.quantity == "collector_current" else Kind.VOLTAGE
         reached, wished = (format_quantity(value, kind) for value in (miss.reached, miss.wished))
-        yield f"{miss.quantity}: the fixed {held} leave no freedom for {wished}: the ideal stage has {reached}"
+        no_freedom = f"the fixed {held} leave no freedom for {wished}"
+        yield f"{miss.quantity}: {no_freedom}: the ideal stage has {reached}"

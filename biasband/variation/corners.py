@@ -2,7 +2,8 @@
 
 With V_BE constant and the transistor active, currents and node voltages are monotone in every
 contributor, hence extreme at a vertex; that ends where a scenario saturates and never held for
-power, swing or temperature. So the box is also searched from several vertices (interior.py).
+power, swing or temperature. So the box is also searched from several vertices (interior.py), and
+what was found inside it is driven to its very end (polish.py).
 """
 
 from __future__ import annotations
@@ -18,6 +19,7 @@ from biasband.stage import Stage
 from biasband.variation.contributors import RIPPLE, Axis, axes, realise
 from biasband.variation.evaluation import Measures, Outcome, evaluate
 from biasband.variation.interior import Climbs, search
+from biasband.variation.polish import polish
 
 _STARTS_SPLIT_BY = ("gain", "temperature")
 """The axes along which extremes wander: the best vertex on either side of each is a start."""
@@ -69,6 +71,7 @@ def corners(stage: Stage, measures: Measures, *, cut_off: float) -> Corners:
     points = np.vstack([vertices, [_middle(axis) for axis in box]])
     outcome = evaluate(stage, _columns(box, points), measures, cut_off=cut_off)
     found = search(stage, box, _starts(box, points, measures, outcome), measures, cut_off=cut_off)
+    found = polish(stage, box, found, measures, cut_off=cut_off)
     regions = outcome.region[:-1]
     present = [Region(code) for code in np.unique(regions)]
     return Corners(

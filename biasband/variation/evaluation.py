@@ -46,12 +46,13 @@ def evaluate(stage: Stage, x: Coordinates, measures: Measures, *, cut_off: float
         for name, measure in measures.items():
             value = _spread_out(measure.read(reading), count)
             ripple = _ripple(measure, reading)
-            low[name], high[name] = (value, value) if ripple is None else (value - ripple, value + ripple)
+            low[name] = value if ripple is None else value - ripple
+            high[name] = value if ripple is None or not measure.ripple_lifts else value + ripple
     return Outcome(low, high, reading.regions(cut_off))
 
 
 def _ripple(measure: Quantity, reading: Reading) -> Values | None:
-    """The half-width by which coupled ripple widens a measure; None where it does not."""
+    """By how much coupled ripple moves a measure; None where it does not."""
     ripple = 0.0 if measure.ripple is None else measure.ripple(reading)
     return None if np.ndim(ripple) == 0 and ripple == 0.0 else ripple
 

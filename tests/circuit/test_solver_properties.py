@@ -63,10 +63,15 @@ def solved(boards: list[Case]) -> OperatingPoint:
     return solve(first.wiring, first.transistor, first.polarity, together(boards))
 
 
-def assert_equal(one: OperatingPoint, other: OperatingPoint, *, volts: float = 0.0) -> None:
-    """Every field is the same, to so many volts (and ten times as many amperes per ohm are too many)."""
+NEIGHBOURLY = {"junction_temperature": 2e-6, "base_current": 1e-11, "collector_current": 1e-10}
+"""Neighbours decide how many steps are taken: 1e-6 K each, and what that moves: 4 nA/K, 20 µA/K, 20 mV/K."""
+
+
+def assert_alike(one: OperatingPoint, other: OperatingPoint) -> None:
+    """Every field is the same within what two solves may differ."""
     for name in FIELDS:
-        np.testing.assert_allclose(getattr(one, name), getattr(other, name), rtol=1e-12, atol=volts)
+        margin = NEIGHBOURLY.get(name, 5e-8)
+        np.testing.assert_allclose(getattr(one, name), getattr(other, name), rtol=0.0, atol=margin, err_msg=name)
     np.testing.assert_array_equal(one.status, other.status)
 
 
@@ -102,13 +107,10 @@ def test_kirchhoffs_current_law_holds_at_every_node_of_the_raw_network(case: Cas
 @pytest.mark.parametrize("polarity", ["npn", "pnp"])
 def test_all_at_once_is_one_by_one(polarity: str) -> None:
     boards = spread(60, polarity=polarity)
-    together_solved = solved(boards)
-    assert set(np.unique(together_solved.status)) == {Status.SOLVED}
-    for row, board in enumerate(boards):
-        alone = solved([board])
-        for name in FIELDS:
-            # Neighbours decide how many steps are taken: residuals of 1e-9 V and 1e-6 K apart.
-            assert getattr(together_solved, name)[row] == pytest.approx(getattr(alone, name)[0], abs=5e-8), name
+    at_once, rows = solved(boards), [solved([board]) for board in boards]
+    assert set(np.unique(at_once.status)) == {Status.SOLVED}
+    columns = {name: np.concatenate([getattr(row, name) for row in rows]) for name in (*FIELDS, "status")}
+    assert_alike(at_once, OperatingPoint(**columns))
 
 
 def test_order_does_not_matter() -> None:
@@ -124,8 +126,7 @@ def test_chunk_size_does_not_matter(size: int, monkeypatch: pytest.MonkeyPatch) 
     boards = spread(80)
     whole = solved(boards)
     monkeypatch.setattr(operating_point, "CHUNK", size)
-    # Neighbours in a chunk decide how many steps are taken: residuals of 1e-9 V and 1e-6 K apart.
-    assert_equal(solved(boards), whole, volts=5e-8)
+    assert_alike(solved(boards), whole)
 
 
 @settings(max_examples=80, deadline=None)
@@ -175,7 +176,7 @@ def test_pnp_mirrors_npn(case: Case, textbook: bool) -> None:
 @pytest.mark.parametrize(
     "fault",
     [
-        {"temperature": 1.0},
+        {"temperature": 0.0},
         {"temperature": np.nan},
         {"supply": np.nan},
         {"leakage": np.inf},
@@ -217,7 +218,8 @@ def test_quick_path_is_the_patient_one(case: Case) -> None:
     part = together([case])
     ports = condense(case.wiring, part.resistances, rails(case.polarity, part))
     problem = Problem.of(ports, case.transistor, part)
-    quick, slow = isothermal(problem, problem.ambient), patient(problem, problem.ambient)
+    with np.errstate(all="ignore"):  # as `solve` does around every chunk
+        quick, slow = isothermal(problem, problem.ambient), patient(problem, problem.ambient)
     assert quick.solved[0]
     assert slow.solved[0]
     # Residuals of 1e-9 V each; collector feedback with a gain of 900 makes tenfold of them.
@@ -256,5 +258,5 @@ def test_missing_compulsory_resistor_is_named(name: str) -> None:
 def test_operating_point_takes_numbers_for_what_all_scenarios_share() -> None:
     scenarios = replace(together([DIVIDER] * 4), supply=9.0, ripple=0.0, temperature=298.15, negative_supply=0.0)
     point = solve(DIVIDER.wiring, DIVIDER.transistor, "npn", scenarios)
-    assert_equal(point, solved([DIVIDER] * 4))
+    assert_alike(point, solved([DIVIDER] * 4))
     assert Limits.exactly(9.0).low == scenarios.supply

@@ -89,19 +89,25 @@ def test_ripple_moves_the_rail_where_no_capacitor_couples() -> None:
 
 @pytest.mark.parametrize("polarity", ["npn", "pnp"])
 @pytest.mark.parametrize("ripple", [0.05, -0.05])
-def test_coupled_ripple_narrows_the_headrooms_of_the_point_without_it(polarity: str, ripple: float) -> None:
+def test_coupled_ripple_widens_the_output_and_takes_from_the_headrooms_of_the_quiet_point(polarity: str, ripple: float) -> None:
     quiet = Case(**{**vars(COUPLED), "polarity": polarity})
     rippled = replace(quiet, ripple=ripple)
     reading = rippled.reading()
     through = max(abs(float(np.ravel(side)[0])) for side in (reading.feedthrough_open, reading.feedthrough_short))
     # physics.md section 4: output_ripple is the larger feed-through times the peak, 50 mV here.
     assert value(reading, "output_ripple") == pytest.approx(through * 0.05, rel=1e-12)
-    for name in ("headroom_up", "headroom_down", "symmetric_peak_swing"):
-        assert value(reading, name) == pytest.approx(quiet.value(name) - through * 0.05, rel=1e-12), name
-    assert value(reading, "collector_voltage") == pytest.approx(quiet.value("collector_voltage"), rel=1e-12)
-    row = vocabulary(tuple(rippled.resistances))["collector_voltage"]
-    assert row.ripple is not None
-    assert float(np.ravel(row.ripple(reading))[0]) == pytest.approx(through * 0.05, rel=1e-12)
+    rows = vocabulary(tuple(rippled.resistances))
+    for name, lifts in (
+        ("collector_voltage", True),
+        ("headroom_up", False),
+        ("headroom_down", False),
+        ("symmetric_peak_swing", False),
+    ):
+        assert value(reading, name) == pytest.approx(quiet.value(name), rel=1e-12), name
+        widens = rows[name].ripple
+        assert widens is not None
+        assert float(np.ravel(widens(reading))[0]) == pytest.approx(through * 0.05, rel=1e-12), name
+        assert rows[name].ripple_lifts is lifts, name
     # Limits on voltage and power still use supply and peak.
     plain = replace(rippled, signal=None)
     for name in ("collector_emitter_voltage", "transistor_power", "resistor_power.R1"):

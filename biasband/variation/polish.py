@@ -1,0 +1,129 @@
+"""Polish: drive an extreme inside the box to its very end, where a compass search stalls.
+
+Two kinds stall: a long curved crest (power against gain and temperature), and a ridge where the
+least of several smooth pieces is greatest (a symmetric swing where up equals down). Both are
+"maximise t with every piece ≥ t", smooth again, which a library's sequential quadratic programming
+(scipy.optimize, SLSQP) solves from where the compass search stopped.
+"""
+
+from __future__ import annotations
+
+import functools
+from collections.abc import Callable
+from dataclasses import replace
+
+import numpy as np
+from numpy.typing import NDArray
+
+from biasband.circuit.quantities import Pieces, Quantity
+from biasband.circuit.reading import read
+from biasband.circuit.scenarios import Array
+from biasband.stage import Stage
+from biasband.variation.contributors import RIPPLE, Axis, realise
+from biasband.variation.evaluation import Measures, evaluate
+from biasband.variation.interior import Climbs
+
+_STARTS = 2
+"""So many of a measure's best climbs are polished."""
+
+_DIFFERENCE = 1e-6
+"""Step of the slopes, in coordinates: the square root of rounding, near enough."""
+
+Heights = Callable[[Array], Array]
+"""What must all be high, at points of the box: (M, K) → (M, P)."""
+
+
+def polish(
+    stage: Stage, box: tuple[Axis, ...], climbs: Climbs, measures: Measures, *, cut_off: float
+) -> Climbs:
+    """Drive on the climbs of every measure whose best ends inside the box or may end on a ridge."""
+    point, score = climbs.point.copy(), climbs.score.copy()
+    for k, (name, measure) in enumerate(measures.items()):
+        for sign in (-1.0, 1.0):
+            rows = np.flatnonzero((climbs.measure == k) & (climbs.sign == sign) & np.isfinite(score))
+            best = rows[np.argsort(-score[rows], kind="stable")][:_STARTS]
+            if not (best.size and (_on_ridge(measure, sign) or _inside(box, point[best[0]]))):
+                continue
+            heights = _heights(stage, box, name, measure, sign, cut_off)
+            for row in best:
+                found = _highest(heights, box, point[row])
+                reached = float(heights(found[None, :]).min())
+                if reached > score[row]:
+                    point[row], score[row] = found, reached
+    return replace(climbs, point=point, score=score)
+
+
+def _on_ridge(measure: Quantity, sign: float) -> bool:
+    return isinstance(measure.read, Pieces) and measure.read.least is (sign > 0.0)
+
+
+def _inside(box: tuple[Axis, ...], point: Array) -> bool:
+    return any(abs(x) < 1.0 for axis, x in zip(box, point, strict=True) if axis.name != RIPPLE)
+
+
+def _heights(
+    stage: Stage, box: tuple[Axis, ...], name: str, measure: Quantity, sign: float, cut_off: float
+) -> Heights:
+    """The pieces of a ridge, or the measure itself, signed so that higher is more extreme."""
+    pieces = measure.read
+
+    def on_ridge(points: Array) -> Array:
+        with np.errstate(all="ignore"):
+            reading = read(stage, realise(stage, _columns(box, points)))
+            assert isinstance(pieces, Pieces)
+            return sign * np.stack([np.broadcast_to(p, len(points)) for p in pieces.read(reading)], axis=1)
+
+    def alone(points: Array) -> Array:
+        outcome = evaluate(stage, _columns(box, points), {name: measure}, cut_off=cut_off)
+        return sign * (outcome.low if sign < 0.0 else outcome.high)[name][:, None]
+
+    return on_ridge if _on_ridge(measure, sign) else alone
+
+
+def _columns(box: tuple[Axis, ...], points: Array) -> dict[str, Array]:
+    return {axis.name: points[:, k] for k, axis in enumerate(box)}
+
+
+def _highest(heights: Heights, box: tuple[Axis, ...], start: Array) -> Array:
+    """The point (K,) of the box where the least of the heights is highest, near a start."""
+    from scipy.optimize import minimize
+
+    level = float(heights(start[None, :]).min())
+    scale = abs(level) or 1.0
+    inward = np.where(start > 0.0, -_DIFFERENCE, _DIFFERENCE)
+
+    @functools.lru_cache(maxsize=2)
+    def around(point: bytes) -> Array:
+        """Heights at a point and one small step along each axis; asked for twice, for value and slope."""
+        x = np.frombuffer(point)
+        return heights(np.vstack([x, x + np.diag(inward)])) / scale
+
+    def room(z: Array) -> Array:
+        return np.asarray(around(z[:-1].tobytes())[0] - z[-1])
+
+    def slopes(z: Array) -> Array:
+        values = around(z[:-1].tobytes())
+        return np.hstack([((values[1:] - values[0]) / inward[:, None]).T, -np.ones((values.shape[1], 1))])
+
+    result = minimize(  # type: ignore[call-overload]  # the stubs know no SLSQP options
+        lambda z: -z[-1],
+        np.append(start, level / scale),
+        jac=lambda z: np.append(np.zeros(len(start)), -1.0),
+        bounds=[*_bounds(box, start), (None, None)],
+        constraints={"type": "ineq", "fun": room, "jac": slopes},
+        method="SLSQP",
+        options={"maxiter": 40, "ftol": 1e-11},
+    )
+    return _snapped(result.x[:-1], start)
+
+
+def _snapped(found: Array, start: NDArray[np.float64]) -> Array:
+    """The point found, exactly on a limit where it is there but for rounding; else the start."""
+    if not np.all(np.isfinite(found)):
+        return start
+    return np.where(np.abs(found) > 1.0 - _DIFFERENCE, np.sign(found), found)
+
+
+def _bounds(box: tuple[Axis, ...], start: Array) -> list[tuple[float, float]]:
+    """The box, with ripple held where it is: it is there at its peak or not at all."""
+    return [(x, x) if axis.name == RIPPLE else (-1.0, 1.0) for axis, x in zip(box, start, strict=True)]
