@@ -39,5 +39,6 @@ def solve(ports: Ports, transistor: IdealTransistor, part: Scenarios) -> Trial:
         I_B = np.where(saturated, (ports.z22 * over_be - ports.z12 * over_bc) / determinant, I_B)
         I_C = np.where(saturated, (ports.z11 * over_bc - ports.z21 * over_be) / determinant, I_C)
     V_BC = np.where(saturated, V_BE - V_sat, V_BC)
-    status = np.full(beta.shape, Status.SOLVED, dtype=np.int8)
+    solved = np.isfinite(I_B) & np.isfinite(I_C) & np.isfinite(V_BC)
+    status = np.where(solved, np.int8(Status.SOLVED), np.int8(Status.UNSOLVED))
     return Trial(V_BE, V_BC, ports.voltage(Node.EMITTER, I_B, I_C), I_B, I_C, part.temperature, status)

@@ -29,6 +29,9 @@ _STARTS = 2
 _DIFFERENCE = 1e-6
 """Step of the slopes, in coordinates: the square root of rounding, near enough."""
 
+_SHORT_WAY, _WORTHWHILE = 0.02, 1e-6
+"""A climb goes on where so short a way, in coordinates, may gain this share of the height."""
+
 Heights = Callable[[Array], Array]
 """What must all be high, at points of the box: (M, K) → (M, P)."""
 
@@ -46,6 +49,8 @@ def polish(
                 continue
             heights = _heights(stage, box, name, measure, sign, cut_off)
             for row in best:
+                if not _rises(heights, box, point[row]):
+                    continue
                 found = _highest(heights, box, point[row])
                 reached = float(heights(found[None, :]).min())
                 if reached > score[row]:
@@ -84,13 +89,29 @@ def _columns(box: tuple[Axis, ...], points: Array) -> dict[str, Array]:
     return {axis.name: points[:, k] for k, axis in enumerate(box)}
 
 
+def _rises(heights: Heights, box: tuple[Axis, ...], start: Array) -> bool:
+    """Whether a short way along the axes promises a height worth the climb, or a ridge hides it."""
+    x, inward = start, _inward(start)
+    values = heights(np.vstack([x, x + np.diag(inward)]))
+    if not np.all(np.isfinite(values)) or values.shape[1] > 1:
+        return bool(np.all(np.isfinite(values)))
+    slopes = (values[1:, 0] - values[0, 0]) / inward
+    free = np.array([axis.name != RIPPLE for axis in box]) & (np.where(slopes > 0.0, x < 1.0, x > -1.0))
+    return bool(_SHORT_WAY * np.sum(np.abs(slopes[free])) > _WORTHWHILE * abs(values[0, 0]))
+
+
+def _inward(start: Array) -> Array:
+    """Small steps along the axes that stay inside the box."""
+    return np.where(start > 0.0, -_DIFFERENCE, _DIFFERENCE)
+
+
 def _highest(heights: Heights, box: tuple[Axis, ...], start: Array) -> Array:
     """The point (K,) of the box where the least of the heights is highest, near a start."""
     from scipy.optimize import minimize
 
     level = float(heights(start[None, :]).min())
     scale = abs(level) or 1.0
-    inward = np.where(start > 0.0, -_DIFFERENCE, _DIFFERENCE)
+    inward = _inward(start)
 
     @functools.lru_cache(maxsize=2)
     def around(point: bytes) -> Array:

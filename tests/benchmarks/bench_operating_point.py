@@ -1,7 +1,8 @@
 """What a million boards cost, as ratios: run `python tests/benchmarks/bench_operating_point.py`.
 
-The unit of time is one pass of `np.exp` over a million in-cache values on the same machine, so that the figures
-travel. Goals: at most 60 passes without self-heating, 150 with it, and the memory of a chunk, not of the million.
+The unit of time is one pass of `np.exp` over a million in-cache values on the same machine, so that
+the figures travel. Goals: at most 60 passes without self-heating, 150 with it, and the memory of a
+chunk, not of the million.
 """
 
 from __future__ import annotations
@@ -15,12 +16,14 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy import optimize
 
-from biasband.circuit.junction import flow, laws
+from biasband.circuit.junction import Laws, flow, laws
 from biasband.circuit.network import condense, rails
 from biasband.circuit.operating_point import OperatingPoint, solve
 from biasband.circuit.scenarios import Scenarios
 from biasband.circuit.topology import TOPOLOGIES, wire
 from biasband.stage import Limits, Transistor
+
+Vector = NDArray[np.float64]
 
 BOARDS = 1_000_000
 SCALAR_BOARDS = 200
@@ -43,7 +46,7 @@ def boards(count: int) -> Scenarios:
     """Boards of an invented divider at one point of use: hot, the supply low, the ripple at its peak."""
     rng = np.random.default_rng(1)
 
-    def within(low: float, high: float) -> NDArray[np.float64]:
+    def within(low: float, high: float) -> Vector:
         return rng.uniform(low, high, count)
 
     nominal = {"R1": 68e3, "R2": 13e3, "RC": 3.3e3, "RE": 1e3}
@@ -76,7 +79,13 @@ def exponential_pass() -> None:
         np.exp(values)
 
 
-def scalar_loop(scenarios: Scenarios) -> NDArray[np.float64]:
+def residual(v: Vector, law: Laws, open_: Vector, Z: Vector) -> Vector:
+    """Both port equations of one board [V]."""
+    at = flow(law, v[0], v[1])
+    return np.asarray(v - open_ + Z @ np.array([at.base, at.collector], dtype=float).ravel())
+
+
+def scalar_loop(scenarios: Scenarios) -> Vector:
     """Collector currents [A] one by one with scipy's general root finder, as one would write it first."""
     currents = []
     for row in range(len(scenarios)):
@@ -92,13 +101,7 @@ def scalar_loop(scenarios: Scenarios) -> NDArray[np.float64]:
         open_ = np.array([ports.open_be, ports.open_bc], dtype=float).ravel()
         Z = np.array([[ports.z11, ports.z12], [ports.z21, ports.z22]], dtype=float).reshape(2, 2)
 
-        def residual(
-            v: NDArray[np.float64], open_: NDArray[np.float64] = open_, Z: NDArray[np.float64] = Z, law: object = law
-        ) -> NDArray[np.float64]:
-            at = flow(law, v[0], v[1])  # type: ignore[arg-type]
-            return v - open_ + Z @ np.array([at.base, at.collector], dtype=float).ravel()
-
-        found = optimize.root(residual, np.array([0.62, -4.0]), tol=1e-10)
+        found = optimize.root(residual, np.array([0.62, -4.0]), (law, open_, Z), tol=1e-10)
         currents.append(float(np.ravel(flow(law, found.x[0], found.x[1]).collector)[0]))
     return np.array(currents)
 
@@ -126,7 +129,9 @@ def main() -> None:
     loop = shortest(lambda: scalar_loop(few)) / SCALAR_BOARDS
     own = shortest(lambda: solve(WIRING, COOL, "npn", scenarios)) / BOARDS
     same = np.abs(scalar_loop(few) / solve(WIRING, COOL, "npn", few).collector_current - 1.0).max()
-    print(f"against a loop of scipy.optimize.root: {loop / own:.0f} times faster (currents agree to {same:.0e})")
+    print(
+        f"against a loop of scipy.optimize.root: {loop / own:.0f} times faster (currents agree to {same:.0e})"
+    )
 
 
 if __name__ == "__main__":

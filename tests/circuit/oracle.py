@@ -12,7 +12,7 @@ import json
 from pathlib import Path
 from typing import Any
 
-import mpmath as mp
+import mpmath as mp  # type: ignore[import-untyped]
 
 DIGITS, WORKING_DIGITS = 40, 60
 FILE = Path(__file__).with_name("oracle_values.json")
@@ -70,7 +70,8 @@ CASES: dict[str, dict[str, Any]] = {
         "R": {"R1": "68e3", "R2": "13e3", "RC": "3.3e3", "RE": "1e3"}, "start": ["0.33", "2", "1e-8"],
     },
     "split supply": {
-        "topology": "split-supply", "polarity": "npn", "V+": "9", "V-": "-9", "T": "298.15", "transistor": FULL,
+        "topology": "split-supply", "polarity": "npn", "V+": "9", "V-": "-9", "T": "298.15",
+        "transistor": FULL,
         "R": {"RB": "22e3", "RC": "3.9e3", "RE": "8.2e3"}, "start": ["0.63", "5", "1e-3"],
     },
     "split supply, PNP, band-gap drift, hot": {
@@ -95,7 +96,9 @@ class Problem:
 
     def __init__(self, case: dict[str, Any]) -> None:
         self.sign = mp.mpf(1 if case["polarity"] == "npn" else -1)
-        self.device = {key: mp.mpf(text) for key, text in case["transistor"].items() if text not in (None, "bandgap")}
+        self.device = {
+            key: mp.mpf(text) for key, text in case["transistor"].items() if text not in (None, "bandgap")
+        }
         self.bandgap = case["transistor"]["drift"] == "bandgap"
         self.ambient = mp.mpf(case["T"])
         self.rails = {"V+": mp.mpf(case["V+"]), "0": mp.mpf(0), "V-": mp.mpf(case.get("V-", "0"))}
@@ -107,9 +110,7 @@ class Problem:
         if "RE1" in ohms:
             ohms["RE"] = ohms["RE1"] + ohms["RE2"]
         rows = [row.split() for row in BRANCHES[case["topology"]].split(", ")]
-        self.branches = [
-            (ohms[name], swap.get(a, a), swap.get(b, b)) for name, a, b in rows if name in ohms
-        ]
+        self.branches = [(ohms[name], swap.get(a, a), swap.get(b, b)) for name, a, b in rows if name in ohms]
         self.fixed = dict(self.rails)
         if case["topology"] == "follower":
             self.fixed["C"] = self.rails[swap.get("V+", "V+")]
@@ -158,7 +159,10 @@ class Problem:
                 leaving[b] = leaving.get(b, 0) - amps
             power = (v_be - v_bc) * I_C + v_be * I_B
             R = self.device.get("thermal_resistance", mp.mpf(0))
-            return [*(1000 * leaving[name] for name in self.free), self.ambient + share_of_heat * R * power - T]
+            return [
+                *(1000 * leaving[name] for name in self.free),
+                self.ambient + share_of_heat * R * power - T,
+            ]
 
         return residuals
 

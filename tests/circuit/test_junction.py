@@ -12,9 +12,8 @@ from hypothesis import strategies as st
 from biasband.circuit.junction import Laws, base_emitter_voltage, flow, flow_drift, laws
 from biasband.circuit.scenarios import Values
 from biasband.stage import Transistor
-from circuit.stages import real, transistors
+from circuit.stages import Case, real, transistors
 from circuit.twin import junctions as twin_junctions
-from circuit.stages import Case
 
 ROOM = 298.15
 temperatures = st.floats(233.15, 423.15)
@@ -31,13 +30,18 @@ def law_of(transistor: Transistor, temperature: Values, leakage: float = 0.0) ->
     )
 
 
+def imaginary(value: Values) -> float:
+    """The imaginary part of what a complex step returns."""
+    return float(np.imag(np.asarray(value)))
+
+
 @settings(deadline=None)
 @given(transistors())
 def test_test_point_is_met_with_the_early_effect_too(transistor: Transistor) -> None:
     vbe = transistor.base_emitter_voltage.nominal
     assert transistor.test_voltage is not None
     at = flow(law_of(transistor, ROOM), vbe, vbe - transistor.test_voltage)
-    # What the formula leaves out is I_S (e^{-vbe/V_T}, at most 4e-9 for 0.5 V) and the reverse junction's like.
+    # What the formula leaves out is I_S (e^{-vbe/V_T}, at most 4e-9 for 0.5 V), and the reverse junction's.
     assert at.collector == pytest.approx(transistor.test_current, rel=1e-7)
     assert at.collector / at.base == pytest.approx(transistor.gain.nominal, rel=1e-5)
 
@@ -53,7 +57,9 @@ def test_active_region_reduces_to_gain_times_base_current_and_leakage(
     beta = law.forward_gain
     # I_S, which the reduction leaves out, comes with β and 1/β_R (at least 0.2): β·6·I_S at most.
     missing = 6.0 * (1.0 + beta) * law.saturation_current
-    assert at.collector == pytest.approx(beta * at.base + (beta + 1.0) * law.leakage, rel=1e-9, abs=missing)
+    assert at.collector == pytest.approx(
+        beta * at.base + (beta + 1.0) * law.leakage, rel=1e-9, abs=float(missing)
+    )
 
 
 @settings(deadline=None)
@@ -65,7 +71,7 @@ def test_currents_are_those_of_the_scalar_twin(
     I_B, I_C = twin_junctions(case, temperature).currents(V_BE, V_BC)
     at = flow(law_of(transistor, temperature, leakage=30e-9), V_BE, V_BC)
     # Rounding: a few units of 1e-16 in an exponent of up to 40, and two large currents that may cancel.
-    scale = abs(at.forward) + abs(at.reverse) + 30e-9
+    scale = float(at.forward) + float(at.reverse) + 30e-9
     assert at.base == pytest.approx(I_B, rel=1e-10, abs=1e-11 * scale)
     assert at.collector == pytest.approx(I_C, rel=1e-10, abs=1e-11 * scale)
 
@@ -78,15 +84,15 @@ def test_slopes_of_the_currents_are_complex_step_derivatives(
     law, h = law_of(transistor, temperature, leakage=30e-9), 1e-30
     at = flow(law, V_BE, V_BC)
     by_be, by_bc = flow(law, V_BE + 1j * h, V_BC), flow(law, V_BE, V_BC + 1j * h)  # type: ignore[arg-type]
-    # A complex step has no subtraction: rounding alone, of terms as large as the two junctions' conductances.
-    scale = 1e-12 * (at.forward + at.reverse) / law.thermal_voltage
+    # A complex step has no subtraction: rounding alone, of terms as large as both junctions' conductances.
+    scale = float(1e-12 * (at.forward + at.reverse) / law.thermal_voltage)
     for slope, moved in (
         (at.base_be, by_be.base),
         (at.base_bc, by_bc.base),
         (at.collector_be, by_be.collector),
         (at.collector_bc, by_bc.collector),
     ):
-        assert slope == pytest.approx(np.imag(moved) / h, rel=1e-10, abs=scale)
+        assert slope == pytest.approx(imaginary(moved) / h, rel=1e-10, abs=scale)
 
 
 @settings(deadline=None)
@@ -99,9 +105,9 @@ def test_drift_of_the_currents_is_the_complex_step_derivative(
     drift = flow_drift(law, at, V_BE, V_BC)
     moved = flow(law_of(transistor, temperature + 1j * h, leakage=30e-9), V_BE, V_BC)  # type: ignore[arg-type]
     # Rounding alone, of terms that move by up to some 20 % per kelvin.
-    scale = 1e-12 * (at.forward + at.reverse)
-    assert drift.base == pytest.approx(np.imag(moved.base) / h, rel=1e-10, abs=scale)
-    assert drift.collector == pytest.approx(np.imag(moved.collector) / h, rel=1e-10, abs=scale)
+    scale = float(1e-12 * (at.forward + at.reverse))
+    assert drift.base == pytest.approx(imaginary(moved.base) / h, rel=1e-10, abs=scale)
+    assert drift.collector == pytest.approx(imaginary(moved.collector) / h, rel=1e-10, abs=scale)
 
 
 def test_linear_drift_is_minus_two_millivolts_per_kelvin_unless_given() -> None:
@@ -116,7 +122,9 @@ def test_band_gap_drift_at_600_millivolts_and_300_kelvin_is_published_slope() ->
     low, high = 0.5, 0.7
     for _ in range(60):
         middle = 0.5 * (low + high)
-        low, high = (middle, high) if base_emitter_voltage(transistor, middle, 300.0) < 0.60 else (low, middle)
+        low, high = (
+            (middle, high) if base_emitter_voltage(transistor, middle, 300.0) < 0.60 else (low, middle)
+        )
     slope = (
         base_emitter_voltage(transistor, low, 300.0 + h) - base_emitter_voltage(transistor, low, 300.0 - h)
     ) / (2.0 * h)
@@ -127,14 +135,18 @@ def test_band_gap_drift_at_600_millivolts_and_300_kelvin_is_published_slope() ->
 
 def test_both_drifts_leave_the_test_point_at_25_degrees() -> None:
     for drift in (-2e-3, None):
-        assert base_emitter_voltage(real(base_emitter_drift=drift), 0.64, ROOM) == pytest.approx(0.64, abs=1e-15)
+        assert base_emitter_voltage(real(base_emitter_drift=drift), 0.64, ROOM) == pytest.approx(
+            0.64, abs=1e-15
+        )
 
 
 def test_gain_and_leakage_follow_their_temperature_laws() -> None:
     # physics.md section 2: slope of h_FE at 25 °C 0.5 %/K, leakage doubles every 10 K.
     h = 0.01
     warm, cold = law_of(real(), ROOM + h), law_of(real(), ROOM - h)
-    assert (warm.forward_gain - cold.forward_gain) / (2.0 * h) == pytest.approx(260.0 * 5e-3, rel=1e-6)  # h² term
+    assert (warm.forward_gain - cold.forward_gain) / (2.0 * h) == pytest.approx(
+        260.0 * 5e-3, rel=1e-6
+    )  # h² term
     assert law_of(real(), ROOM).forward_gain == pytest.approx(260.0, rel=1e-14)  # rounding
     assert law_of(real(), ROOM + 10.0, leakage=40e-9).leakage == pytest.approx(80e-9, rel=1e-12)  # rounding
     assert law_of(real(), ROOM - 20.0, leakage=40e-9).leakage == pytest.approx(10e-9, rel=1e-12)

@@ -1,4 +1,4 @@
-"""The solver against 40-digit operating points (mpmath; generator: `oracle.py`, from physics.md sections 2 and 3)."""
+"""The solver against 40-digit operating points (mpmath; generator: `oracle.py`, from physics.md 2 and 3)."""
 
 from __future__ import annotations
 

@@ -75,7 +75,7 @@ class Independent:
         self.output = "emitter" if case.topology == "follower" else "collector"
         branches, ties = list(self.plain.branches), dict(self.plain.ties)
         if self.signal.bypassed:  # the capacitor lies across the emitter resistor, or across RE2
-            ohms, _, rail = next(row for row in branches if row[1] == "emitter")
+            _, _, rail = next(row for row in branches if row[1] == "emitter")
             branches = [row for row in branches if row[1] != "emitter"]
             if "RE1" in case.resistances:
                 branches.append((case.resistances["RE1"], "emitter", rail))
@@ -131,7 +131,7 @@ def assert_answers(case: Case) -> None:
     """Every signal quantity is that of the nodal computation."""
     reading = case.reading()
     expected = Independent(case, reading)
-    # Finite differences good to 1e-9, which a saturated stage's cancelling conductances raise a thousandfold.
+    # Finite differences good to 1e-9, which a saturated stage's cancelling conductances make 1e-6.
     for name in ("voltage_gain", "input_resistance", "output_resistance"):
         assert value(reading, name) == pytest.approx(getattr(expected, name), rel=1e-6, abs=1e-9), name
     for name in ("feedthrough_open", "feedthrough_short"):
@@ -202,7 +202,9 @@ def test_answers_are_near_the_textbook_formulas() -> None:
     case = replace(DIVIDER, signal=Signal(load=47e3, bypassed=True), transistor=real())
     g_m = case.value("collector_current") / (1.380649e-23 / 1.602176634e-19 * 298.15)
     r_pi = 260.0 / g_m
-    assert case.value("voltage_gain") == pytest.approx(-g_m / (1 / 3.3e3 + 1 / 47e3), rel=1e-6)  # I_S left out
+    assert case.value("voltage_gain") == pytest.approx(
+        -g_m / (1 / 3.3e3 + 1 / 47e3), rel=1e-6
+    )  # I_S left out
     assert case.value("input_resistance") == pytest.approx(1 / (1 / 68e3 + 1 / 13e3 + 1 / r_pi), rel=1e-6)
     assert case.value("output_resistance") == pytest.approx(3.3e3, rel=1e-6)
 

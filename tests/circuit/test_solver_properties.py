@@ -15,11 +15,18 @@ from biasband.circuit.network import condense, rails
 from biasband.circuit.operating_point import OperatingPoint, Region, solve
 from biasband.circuit.solution import Problem, Status, isothermal, patient
 from biasband.circuit.topology import TOPOLOGIES, wire
-from biasband.stage import Limits, Transistor
+from biasband.stage import Transistor
 from circuit.stages import TOPOLOGY_RESISTORS, Case, cases, ideal, real, together
 from circuit.twin import junctions, network
 
-FIELDS = ("base_emitter", "base_collector", "emitter", "base_current", "collector_current", "junction_temperature")
+FIELDS = (
+    "base_emitter",
+    "base_collector",
+    "emitter",
+    "base_current",
+    "collector_current",
+    "junction_temperature",
+)
 
 DIVIDER = Case(
     topology="divider",
@@ -64,14 +71,16 @@ def solved(boards: list[Case]) -> OperatingPoint:
 
 
 NEIGHBOURLY = {"junction_temperature": 2e-6, "base_current": 1e-11, "collector_current": 1e-10}
-"""Neighbours decide how many steps are taken: 1e-6 K each, and what that moves: 4 nA/K, 20 µA/K, 20 mV/K."""
+"""Neighbours decide how many steps are taken: 1e-6 K each, and what that moves in amperes."""
 
 
 def assert_alike(one: OperatingPoint, other: OperatingPoint) -> None:
     """Every field is the same within what two solves may differ."""
     for name in FIELDS:
         margin = NEIGHBOURLY.get(name, 5e-8)
-        np.testing.assert_allclose(getattr(one, name), getattr(other, name), rtol=0.0, atol=margin, err_msg=name)
+        np.testing.assert_allclose(
+            getattr(one, name), getattr(other, name), rtol=0.0, atol=margin, err_msg=name
+        )
     np.testing.assert_array_equal(one.status, other.status)
 
 
@@ -118,7 +127,9 @@ def test_order_does_not_matter() -> None:
     order = np.random.default_rng(3).permutation(len(boards))
     forwards, shuffled = solved(boards), solved([boards[row] for row in order])
     for name in FIELDS:
-        np.testing.assert_allclose(getattr(shuffled, name), getattr(forwards, name)[order], rtol=1e-12, atol=0.0)
+        np.testing.assert_allclose(
+            getattr(shuffled, name), getattr(forwards, name)[order], rtol=1e-12, atol=0.0
+        )
 
 
 @pytest.mark.parametrize("size", [1, 7, 64, 1000])
@@ -191,7 +202,8 @@ def test_unsolved_scenario_is_nan_not_error(fault: dict[str, float], heat: float
     for name, bad in fault.items():
         column = np.array(getattr(scenarios, name))
         column[1] = bad
-        scenarios = replace(scenarios, **{name: column})
+        changed: dict[str, Any] = {name: column}
+        scenarios = replace(scenarios, **changed)
     point = solve(DIVIDER.wiring, transistor, "npn", scenarios)
     assert point.status.tolist() == [Status.SOLVED, Status.UNSOLVED, Status.SOLVED]
     for name in FIELDS:
@@ -205,7 +217,8 @@ def test_unsolved_scenario_of_an_ideal_transistor_is_told_too(fault: dict[str, f
     case = replace(DIVIDER, transistor=ideal(100.0))
     scenarios = together([case] * 2)
     for name, bad in fault.items():
-        scenarios = replace(scenarios, **{name: np.array([getattr(case, name), bad])})
+        changed: dict[str, Any] = {name: np.array([getattr(case, name), bad])}
+        scenarios = replace(scenarios, **changed)
     point = solve(case.wiring, case.transistor, "npn", scenarios)
     assert point.status.tolist() == [Status.SOLVED, Status.UNSOLVED]
     assert np.isnan(point.collector_current[1])
@@ -256,7 +269,8 @@ def test_missing_compulsory_resistor_is_named(name: str) -> None:
 
 
 def test_operating_point_takes_numbers_for_what_all_scenarios_share() -> None:
-    scenarios = replace(together([DIVIDER] * 4), supply=9.0, ripple=0.0, temperature=298.15, negative_supply=0.0)
+    scenarios = replace(
+        together([DIVIDER] * 4), supply=9.0, ripple=0.0, temperature=298.15, negative_supply=0.0
+    )
     point = solve(DIVIDER.wiring, DIVIDER.transistor, "npn", scenarios)
     assert_alike(point, solved([DIVIDER] * 4))
-    assert Limits.exactly(9.0).low == scenarios.supply

@@ -85,9 +85,9 @@ def test_any_warm_scenario_is_solved_or_in_runaway_as_by_a_scan_of_temperature(c
 
 
 def test_regions_are_told_apart() -> None:
-    regions = {}
-    for name, case in {"usual": Case(topology="divider", resistances=DIVIDER, supply=9.0, transistor=EARLY), **HARD}.items():
-        regions[name] = case.reading().regions(CUT_OFF_SHARE * 1e-3)[0]
+    usual = Case(topology="divider", resistances=DIVIDER, supply=9.0, transistor=EARLY)
+    every = {"usual": usual, **HARD}
+    regions = {name: case.reading().regions(CUT_OFF_SHARE * 1e-3)[0] for name, case in every.items()}
     assert regions["usual"] == Region.ACTIVE
     assert regions["saturated"] == Region.SATURATED
     assert regions["driven fifty times into saturation"] == Region.SATURATED

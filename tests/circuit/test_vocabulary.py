@@ -31,7 +31,7 @@ def delivered(case: Case) -> float:
     reading = case.reading()
     power = (case.supply + case.ripple) * value(reading, "supply_current")
     if case.topology == "split-supply":
-        # The negative rail takes the emitter current of an NPN, the collector current of a PNP (physics.md 3).
+        # The negative rail takes the emitter current of an NPN, the collector current of a PNP.
         taker = "emitter_current" if case.polarity == "npn" else "collector_current"
         power -= case.negative_supply * value(reading, taker)
     return power
@@ -47,10 +47,12 @@ def test_supplies_deliver_what_transistor_and_resistors_turn_into_heat(case: Cas
     heat = value(reading, "transistor_power")
     for name in case.resistances:
         heat += value(reading, f"resistor_power.{name}")
-    # Tellegen: exact but for residuals of 1e-9 V, which at two ends of the smallest resistor are a stray
-    # current under the rails, and rounding.
+    # Tellegen: exact but for residuals of 1e-9 V, at two ends of the smallest resistor a stray current
+    # under the rails, and rounding.
     stray = 2e-9 / min(case.resistances.values())
-    assert delivered(case) == pytest.approx(heat, rel=1e-9, abs=stray * (case.supply - case.negative_supply + 1.0))
+    assert delivered(case) == pytest.approx(
+        heat, rel=1e-9, abs=stray * (case.supply - case.negative_supply + 1.0)
+    )
 
 
 @settings(max_examples=60, deadline=None)
@@ -64,12 +66,26 @@ def test_emitter_current_is_base_and_collector_current(case: Case) -> None:
 
 def test_vocabulary_holds_the_published_names_and_one_power_per_resistor() -> None:
     # formats.md, "Quantities".
-    names = (
-        "collector_voltage base_voltage emitter_voltage collector_emitter_voltage collector_current "
-        "base_current emitter_current supply_current transistor_power junction_temperature headroom_up "
-        "headroom_down symmetric_peak_swing voltage_gain input_resistance output_resistance "
-        "supply_feedthrough output_ripple"
-    ).split()
+    names = [
+        "collector_voltage",
+        "base_voltage",
+        "emitter_voltage",
+        "collector_emitter_voltage",
+        "collector_current",
+        "base_current",
+        "emitter_current",
+        "supply_current",
+        "transistor_power",
+        "junction_temperature",
+        "headroom_up",
+        "headroom_down",
+        "symmetric_peak_swing",
+        "voltage_gain",
+        "input_resistance",
+        "output_resistance",
+        "supply_feedthrough",
+        "output_ripple",
+    ]
     rows = vocabulary(("RC", "RE"))
     assert set(names) <= set(rows)
     assert {"resistor_power.RC", "resistor_power.RE"} <= set(rows)
@@ -89,11 +105,15 @@ def test_ripple_moves_the_rail_where_no_capacitor_couples() -> None:
 
 @pytest.mark.parametrize("polarity", ["npn", "pnp"])
 @pytest.mark.parametrize("ripple", [0.05, -0.05])
-def test_coupled_ripple_widens_the_output_and_takes_from_the_headrooms_of_the_quiet_point(polarity: str, ripple: float) -> None:
+def test_coupled_ripple_widens_the_output_and_takes_from_the_headrooms_of_the_quiet_point(
+    polarity: str, ripple: float
+) -> None:
     quiet = Case(**{**vars(COUPLED), "polarity": polarity})
     rippled = replace(quiet, ripple=ripple)
     reading = rippled.reading()
-    through = max(abs(float(np.ravel(side)[0])) for side in (reading.feedthrough_open, reading.feedthrough_short))
+    through = max(
+        abs(float(np.ravel(side)[0])) for side in (reading.feedthrough_open, reading.feedthrough_short)
+    )
     # physics.md section 4: output_ripple is the larger feed-through times the peak, 50 mV here.
     assert value(reading, "output_ripple") == pytest.approx(through * 0.05, rel=1e-12)
     rows = vocabulary(tuple(rippled.resistances))
@@ -138,7 +158,9 @@ def test_collector_feedback_headroom_counts_the_share_of_rb() -> None:
     case = replace(DIVIDER, topology="collector-feedback", resistances={"RB": 100e3, "RC": 3.3e3})
     r_ac = 1.0 / (1.0 / 3.3e3 + 1.0 / 100e3)
     case_current = replace(case, supply=5.0)
-    assert case_current.value("headroom_up") == pytest.approx(case_current.value("collector_current") * r_ac, rel=1e-12)
+    assert case_current.value("headroom_up") == pytest.approx(
+        case_current.value("collector_current") * r_ac, rel=1e-12
+    )
 
 
 def test_follower_headrooms_are_towards_the_collectors_rail_and_the_emitter_resistors() -> None:
@@ -154,7 +176,10 @@ def test_follower_headrooms_are_towards_the_collectors_rail_and_the_emitter_resi
 
 def test_cut_off_headroom_is_never_above_what_the_supply_leaves() -> None:
     # With an ideal collector r_ac·I_C is exactly the drop over RC; through RB's base current it is less.
-    for case in (DIVIDER, replace(DIVIDER, topology="collector-feedback", resistances={"RB": 470e3, "RC": 3.3e3})):
+    for case in (
+        DIVIDER,
+        replace(DIVIDER, topology="collector-feedback", resistances={"RB": 470e3, "RC": 3.3e3}),
+    ):
         assert case.value("headroom_up") <= case.supply - case.value("collector_voltage") + 1e-9
 
 

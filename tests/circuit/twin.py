@@ -25,7 +25,11 @@ T0 = 298.15
 HOTTEST = 523.15  # 250 °C, physics.md section 2
 
 NETWORKS = {
-    "base-resistor": [("RB", "positive", "base"), ("RC", "positive", "collector"), ("RE", "emitter", "ground")],
+    "base-resistor": [
+        ("RB", "positive", "base"),
+        ("RC", "positive", "collector"),
+        ("RE", "emitter", "ground"),
+    ],
     "collector-feedback": [
         ("RB", "collector", "base"),
         ("R2", "base", "ground"),
@@ -38,7 +42,11 @@ NETWORKS = {
         ("RC", "positive", "collector"),
         ("RE", "emitter", "ground"),
     ],
-    "split-supply": [("RB", "base", "ground"), ("RC", "positive", "collector"), ("RE", "emitter", "negative")],
+    "split-supply": [
+        ("RB", "base", "ground"),
+        ("RC", "positive", "collector"),
+        ("RE", "emitter", "negative"),
+    ],
     "follower": [("R1", "positive", "base"), ("R2", "base", "ground"), ("RE", "emitter", "ground")],
 }
 """The table of physics.md section 3, for an NPN."""
@@ -212,10 +220,13 @@ class Solver:
     def near(self, T: float, start: Twin) -> Twin:
         """The solution at T [K] by scipy's general root finder from a near one; bracketed if that fails."""
         law = junctions(self.case, T)
+
+        def residuals(v: NDArray[np.float64]) -> NDArray[np.float64]:
+            below = np.minimum(v, 60.0 * law.V_T)  # no overflow
+            return np.array(self.excess(law, float(below[0]), float(below[1])))
+
         with np.errstate(all="ignore"):
-            found = optimize.root(
-                lambda v: self.excess(law, *np.minimum(v, 60.0 * law.V_T)), [start.v_be, start.v_bc], tol=1e-12
-            )
+            found = optimize.root(residuals, np.array([start.v_be, start.v_bc]), tol=1e-12)
         v_be, v_bc = (float(v) for v in found.x)
         if max(v_be, v_bc) > 60.0 * law.V_T or max(map(abs, self.excess(law, v_be, v_bc))) > 1e-9:
             return self.at(T)
@@ -253,10 +264,11 @@ def warmed(case: Case, *, step: float = 1.0) -> Warmed:
         next_gap = case.temperature + R * beyond.power - beyond.T_j
         worst = max(worst, R * (beyond.power - here.power) / (beyond.T_j - here.T_j))
         if next_gap <= 0.0:
-            start = here
-            T_j = optimize.brentq(
-                lambda T: case.temperature + R * solver.near(T, start).power - T, here.T_j, beyond.T_j, xtol=1e-10
-            )
+
+            def rise_left(T: float, start: Twin = here) -> float:
+                return case.temperature + R * solver.near(T, start).power - T
+
+            T_j = optimize.brentq(rise_left, here.T_j, beyond.T_j, xtol=1e-10)
             return Warmed(solver.at(float(T_j)), worst, nearest)
         nearest = min(nearest, next_gap)
         here, gap = beyond, next_gap

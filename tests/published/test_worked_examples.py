@@ -11,9 +11,9 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import pytest
+from circuit.stages import Case, ideal
 
 from biasband.circuit.solution import Status
-from circuit.stages import Case, ideal
 
 BOYLESTAD = "Boylestad & Nashelsky, Electronic Devices and Circuit Theory"
 BELL = "Bell, Electronic Devices and Circuits"

@@ -3,9 +3,9 @@
 from __future__ import annotations
 
 import pytest
+from circuit.stages import Case, ideal
 
 from biasband.stage import Signal
-from circuit.stages import Case, ideal
 
 
 def test_symmetric_swing_into_a_load() -> None:

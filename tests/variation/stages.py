@@ -112,6 +112,18 @@ def coupled() -> Stage:
     )
 
 
+def running_away(ambient: Limits | None = None) -> Stage:
+    """A stage that leakage drives into thermal runaway at 85 °C, and that is cold without it."""
+    leaky = real(
+        gain=Limits.exactly(260.0),
+        base_emitter_voltage=Limits.exactly(0.64),
+        leakage=2e-6,
+        thermal_resistance=500.0,
+    )
+    hot = Limits.exactly(358.15) if ambient is None else ambient
+    return stage("base-resistor", {"RB": 10e6, "RC": 100.0}, leaky, 20.0, ambient=hot)
+
+
 _ORDINARY = {
     "base-resistor": ({"RB": 1.2e6, "RC": 3.9e3}, {"RB": 910e3, "RC": 3.3e3, "RE": 330.0}),
     "collector-feedback": ({"RB": 470e3, "RC": 3.9e3}, {"RB": 82e3, "R2": 43e3, "RC": 3.6e3, "RE": 1e3}),

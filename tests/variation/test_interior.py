@@ -108,7 +108,7 @@ def anywhere(of: Stage, seed: int) -> dict[str, np.ndarray]:
     return x
 
 
-@settings(deadline=None, max_examples=30, suppress_health_check=[HealthCheck.too_slow])
+@settings(deadline=None, max_examples=12, suppress_health_check=[HealthCheck.too_slow])
 @given(of=varying_stages())
 def test_no_random_point_of_the_box_beats_the_extremes(of):
     cut_off = cut_off_current(of)
@@ -123,7 +123,7 @@ def test_no_random_point_of_the_box_beats_the_extremes(of):
         assert np.nanmax(outcome.high[name]) <= high + slack, name
 
 
-@settings(deadline=None, max_examples=15, suppress_health_check=[HealthCheck.too_slow])
+@settings(deadline=None, max_examples=8, suppress_health_check=[HealthCheck.too_slow])
 @given(of=varying_stages())
 def test_no_random_point_beats_the_signal_extremes_of_a_stage_that_stays_active(of):
     cut_off = cut_off_current(of)
