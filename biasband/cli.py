@@ -104,9 +104,9 @@ def design(stage: StageFile, json: AsJson = False, write: NewFile = None) -> int
     from biasband.signoff import study
 
     result = study.design(read_stage(stage))
-    _put(json, lambda: export.design_json(result), lambda: report.design_report(result))
     if write is not None:
         _write_frozen(stage, result, write)
+    _put(json, lambda: export.design_json(result), lambda: report.design_report(result))
     return PASSED
 
 
@@ -216,13 +216,15 @@ def _is_other_toml(path: str) -> bool:
 
 def _snapped(values: Sequence[str], series: str) -> list[Snap]:
     """Snap every value; all faults are reported at once."""
+    from biasband.files.series_files import load_series
+    from biasband.parts.series import nearest
     from biasband.quantity import Kind, parse
-    from biasband.signoff import study
 
+    preferred = load_series(series)
     snaps, faults = [], []
     for text in values:
         try:
-            snaps.append(study.snap(parse(text, Kind.RESISTANCE), series=series))
+            snaps.append(nearest(preferred, parse(text, Kind.RESISTANCE)))
         except BiasbandError as error:
             faults.append(str(error))
     if faults:

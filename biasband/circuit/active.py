@@ -23,6 +23,9 @@ RESIDUAL = 1e-9
 _REVERSE_OFF = -20.0
 """V_BC in units of V_T below which the reverse current, under 2e-9 of I_S, is nothing."""
 
+_LEAST_CHANGE = 0.1
+"""A Newton step leaves at least this share of the forward current, which is never negative."""
+
 FIRST_STEPS = 2
 """Newton steps that a start from nothing needs."""
 
@@ -86,6 +89,43 @@ def _first_forward(ports: Ports, law: Laws, line: _Line) -> Array:
     return drive / (line.z_base + ports.z12 * (line.early / (1.0 - line.lean * F)))
 
 
+@dataclass(frozen=True)
+class _Guess:
+    """The equation at a forward current F: V_BE [V], G [A], the residual [V], and F times its slope."""
+
+    V_BE: Array
+    G: Array
+    residual: Array
+    slope: Array
+
+
+def _guess(ports: Ports, law: Laws, line: _Line, F: Array) -> _Guess:
+    """Evaluate `V_BE(F) + z_base·F + z12·G(F) − drive`, in place where it can be: the hottest lines here.
+
+    dG/dF·F is exactly (G + creep·F²)/room.
+    """
+    V_BE = F / law.reference_current
+    np.log(V_BE, out=V_BE)
+    V_BE *= law.thermal_voltage
+    V_BE += law.reference_voltage
+    base, creep, room = line.z_base * F, line.creep * F, 1.0 - line.lean * F
+    G = line.early + creep
+    G *= F
+    G /= room
+    residual = ports.z12 * G
+    residual += V_BE
+    residual += base
+    residual -= line.drive
+    slope = creep
+    slope *= F
+    slope += G
+    slope /= room
+    slope *= ports.z12
+    slope += base
+    slope += law.thermal_voltage
+    return _Guess(V_BE, G, residual, slope)
+
+
 def active_region(
     ports: Ports, law: Laws, forward: Array | None = None, *, steps: int = FIRST_STEPS
 ) -> tuple[Bias, Array]:
@@ -93,18 +133,17 @@ def active_region(
 
     `solved` is False where the equation does not hold to 1e-9 V or the reverse junction matters.
     """
-    line, V_T = _fold(ports, law), law.thermal_voltage
-    F = _first_forward(ports, law, line) if forward is None else forward
-    for step in range(steps + 1):
-        V_BE = law.reference_voltage + V_T * np.log(F / law.reference_current)
-        base, creep, room = line.z_base * F, line.creep * F, 1.0 - line.lean * F
-        G = F * (line.early + creep) / room
-        residual = V_BE + base + ports.z12 * G - line.drive
-        if step < steps:
-            # F times the slope: dG/dF·F is exactly (G + creep·F²)/room.
-            slope = V_T + base + ports.z12 * ((G + creep * F) / room)
-            F = F * np.maximum(1.0 - residual / slope, 0.1)
-    I_B, I_C = F * line.base_share - line.base_constant, G + line.collector_constant
+    line = _fold(ports, law)
+    F = _first_forward(ports, law, line) if forward is None else forward.copy()
+    guess = _guess(ports, law, line, F)
+    for _ in range(steps):
+        change = 1.0 - guess.residual / guess.slope
+        F *= np.maximum(change, _LEAST_CHANGE, out=change)
+        guess = _guess(ports, law, line, F)
+    I_B, I_C = F * line.base_share, guess.G
+    I_B -= line.base_constant
+    I_C += line.collector_constant
     V_BC = ports.open_bc - ports.z21 * I_B - ports.z22 * I_C
-    solved = (np.abs(residual) < RESIDUAL) & (V_BC < _REVERSE_OFF * V_T)
-    return Bias(V_BE, V_BC, I_B, I_C, solved), F
+    solved = np.abs(guess.residual) < RESIDUAL
+    solved &= V_BC < _REVERSE_OFF * law.thermal_voltage
+    return Bias(guess.V_BE, V_BC, I_B, I_C, solved), F

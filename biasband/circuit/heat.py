@@ -14,7 +14,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from biasband.circuit.active import Bias, active_region
-from biasband.circuit.junction import Laws, flow_drift
+from biasband.circuit.junction import flow_drift
 from biasband.circuit.network import Ports
 from biasband.circuit.newton import tangent
 from biasband.circuit.scenarios import Array, Scenarios, Values
@@ -41,14 +41,15 @@ _CLIMB_POINTS = 32
 _BISECTIONS = 32
 
 
-def power_slope(ports: Ports, law: Laws, bias: Bias) -> Array:
+def power_slope(problem: Problem, temperature: Values, bias: Bias) -> Array:
     """dP/dT_j [W/K] at a solved bias, resistors held: the circuit answers with both voltages.
 
     From the port equations `J·dv + Z·∂i/∂T·dT = 0` and P = V_CE·I_C + V_BE·I_B.
     """
+    ports, law = problem.ports, problem.laws(temperature)
     V_BE, V_CE = bias.V_BE, bias.V_BE - bias.V_BC
     here = tangent(ports, law, V_BE, bias.V_BC)
-    at, drift = here.flow, flow_drift(law, here.flow, V_BE, bias.V_BC)
+    at, drift = here.flow, flow_drift(problem.sheet, law, here.flow, V_BE, bias.V_BC)
     push_be, push_bc = here.solve(
         ports.z11 * drift.base + ports.z12 * drift.collector,
         ports.z21 * drift.base + ports.z22 * drift.collector,
@@ -125,9 +126,10 @@ def _warm_up(problem: Problem, R: float, solve: Solver) -> Heated:
         T = np.minimum(T + move, HOTTEST_JUNCTION)
         bias, forward = solve(T, forward)
         before, wanted = wanted, R * bias.power
-        told = np.abs(move) > _TELLING_MOVE
-        gain = np.where(told, (wanted - before) / np.where(told, move, 1.0), gain)
-        gain_cold = gain if step == 0 else gain_cold
+        gain = np.where(np.abs(move) > _TELLING_MOVE, (wanted - before) / move, gain)
+        if step == 0:
+            gain_cold = gain
+            continue
         settled = bias.solved & (np.abs(problem.ambient + wanted - T) < SETTLED * (1.0 - gain))
         if settled.all():
             break
@@ -197,5 +199,5 @@ def _bisect(problem: Problem, R: float, low: Array, high: Array, rows: NDArray[n
 def _gap(problem: Problem, R: float, T: Array) -> tuple[Array, Array, NDArray[np.bool_]]:
     """How far [K] the junction wants to rise above T, the loop gain there, and where solved."""
     bias = isothermal(problem, T)
-    gain = R * power_slope(problem.ports, problem.laws(T), bias)
+    gain = R * power_slope(problem, T, bias)
     return problem.ambient + R * bias.power - T, gain, bias.solved

@@ -11,7 +11,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from biasband.circuit.scenarios import Values
+from biasband.circuit.scenarios import Rows, Values, rows_of
 from biasband.constants import (
     BAND_GAP,
     BOLTZMANN,
@@ -22,6 +22,28 @@ from biasband.constants import (
 from biasband.stage import Transistor
 
 _VOLT_PER_KELVIN = BOLTZMANN / ELEMENTARY_CHARGE
+_LN_2 = float(np.log(2.0))
+
+
+@dataclass(frozen=True)
+class Sheet:
+    """A data sheet's figures at 25 °C for each scenario, shape (N,) or numbers, with what follows.
+
+    `base_emitter_voltage` vbe_25 [V] and `leakage` I_CBO25 [A] are the scenario's own. The forward
+    current is `reference_current` [A] at the test point, and `forward_gain` β_F25 the gain there,
+    both without the Early factor, so that the test point is met with it.
+    """
+
+    transistor: Transistor
+    base_emitter_voltage: Values
+    leakage: Values
+    reference_current: Values
+    forward_gain: Values
+
+    def part(self, rows: Rows) -> Sheet:
+        """The figures of the scenarios at `rows`."""
+        columns = (self.base_emitter_voltage, self.leakage, self.reference_current, self.forward_gain)
+        return Sheet(self.transistor, *(rows_of(values, rows) for values in columns))
 
 
 @dataclass(frozen=True)
@@ -31,8 +53,7 @@ class Laws:
     `reference_voltage` is V_BE [V] at `reference_current` [A], where the forward current
     I_S·e^{VBE/VT} is that current. `thermal_voltage` V_T [V], `saturation_current` I_S [A],
     `forward_gain` β_F, `leakage` I_CBO [A]; `inverse_early` 1/V_A [1/V] (0: no Early effect),
-    `inverse_reverse_gain` 1/β_R. The `…_slope` fields are relative slopes against the junction
-    temperature, d ln(x)/dT [1/K].
+    `inverse_reverse_gain` 1/β_R.
     """
 
     temperature: Values
@@ -44,9 +65,6 @@ class Laws:
     leakage: Values
     inverse_early: float
     inverse_reverse_gain: float
-    saturation_slope: Values
-    gain_slope: Values
-    leakage_slope: float
 
 
 @dataclass(frozen=True)
@@ -88,42 +106,44 @@ def _base_emitter_slope(transistor: Transistor, at_25: Values, temperature: Valu
     return (at_25 - BAND_GAP) / REFERENCE_TEMPERATURE - curvature
 
 
-def laws(
-    transistor: Transistor,
-    *,
-    gain: Values,
-    base_emitter_at_25: Values,
-    leakage_at_25: Values,
-    temperature: Values,
-) -> Laws:
-    """The junction parameters at a junction temperature [K], from figures stated at 25 °C.
+def sheet(
+    transistor: Transistor, *, gain: Values, base_emitter_voltage: Values, leakage: Values
+) -> Sheet:
+    """The figures at 25 °C: h_FE and V_BE [V] at the test point, I_CBO [A].
 
-    `I_S = I_test / early · exp(−vbe/V_T)`, `β_F = h_FE / early · (T/T0)^(g·T0)`,
-    `I_CBO = I_CBO25 · 2^((T − T0)/D)`, early = 1 + (V_CE,test − vbe_25)/V_A, so that the test
-    point is met with the Early effect too. Valid near the test current: the gain does not fall at
-    low or high current.
+    `β_F25 = h_FE / early`, forward current at the test point `I_test / early`, with
+    early = 1 + (V_CE,test − vbe_25)/V_A; with no V_A it is one.
     """
+    early: Values = 1.0
+    if transistor.early_voltage is not None:
+        early = 1.0 + ((transistor.test_voltage or 0.0) - base_emitter_voltage) / transistor.early_voltage
+    return Sheet(
+        transistor, base_emitter_voltage, leakage, transistor.test_current / early, gain / early
+    )
+
+
+def laws(sheet: Sheet, temperature: Values) -> Laws:
+    """The junction parameters at a junction temperature [K].
+
+    `I_S = I_test / early · exp(−vbe/V_T)`, `β_F = β_F25 · (T/T0)^(g·T0)`,
+    `I_CBO = I_CBO25 · 2^((T − T0)/D)`. Valid near the test current: the gain does not fall at low
+    or high current.
+    """
+    transistor = sheet.transistor
     V_T = _VOLT_PER_KELVIN * temperature
-    vbe = base_emitter_voltage(transistor, base_emitter_at_25, temperature)
-    slope = _base_emitter_slope(transistor, base_emitter_at_25, temperature)
-    inverse_early = 0.0 if transistor.early_voltage is None else 1.0 / transistor.early_voltage
-    early = 1.0 + ((transistor.test_voltage or 0.0) - base_emitter_at_25) * inverse_early
-    reference_current = transistor.test_current / early
+    vbe = base_emitter_voltage(transistor, sheet.base_emitter_voltage, temperature)
     exponent = transistor.gain_drift * REFERENCE_TEMPERATURE
-    doublings = (temperature - REFERENCE_TEMPERATURE) / transistor.leakage_doubling
+    folds = _LN_2 * (temperature - REFERENCE_TEMPERATURE) / transistor.leakage_doubling
     return Laws(
         temperature=temperature,
         reference_voltage=vbe,
-        reference_current=reference_current,
+        reference_current=sheet.reference_current,
         thermal_voltage=V_T,
-        saturation_current=reference_current * np.exp(-vbe / V_T),
-        forward_gain=gain / early * np.exp(exponent * np.log(temperature / REFERENCE_TEMPERATURE)),
-        leakage=leakage_at_25 * np.exp2(doublings),
-        inverse_early=inverse_early,
+        saturation_current=sheet.reference_current * np.exp(-vbe / V_T),
+        forward_gain=sheet.forward_gain * np.exp(exponent * np.log(temperature / REFERENCE_TEMPERATURE)),
+        leakage=sheet.leakage * np.exp(folds),
+        inverse_early=0.0 if transistor.early_voltage is None else 1.0 / transistor.early_voltage,
         inverse_reverse_gain=1.0 / transistor.reverse_gain,
-        saturation_slope=(vbe / temperature - slope) / V_T,
-        gain_slope=exponent / temperature,
-        leakage_slope=float(np.log(2.0)) / transistor.leakage_doubling,
     )
 
 
@@ -164,15 +184,21 @@ class FlowDrift:
     collector: Values
 
 
-def flow_drift(law: Laws, at: Flow, V_BE: Values, V_BC: Values) -> FlowDrift:
-    """∂I_B/∂T and ∂I_C/∂T [A/K] at fixed junction voltages, `at` the flow there."""
-    I_S, slope = law.saturation_current, law.saturation_slope
-    thermal = 1.0 / (law.thermal_voltage * law.temperature)
-    forward_T = at.forward * (slope - V_BE * thermal)
-    reverse_T = at.reverse * (slope - V_BC * thermal)
-    reverse_base_T = (reverse_T - I_S * slope) * law.inverse_reverse_gain
-    leakage_T = law.leakage * law.leakage_slope
-    base_T = (forward_T - I_S * slope - (at.forward - I_S) * law.gain_slope) / law.forward_gain
+def flow_drift(sheet: Sheet, law: Laws, at: Flow, V_BE: Values, V_BC: Values) -> FlowDrift:
+    """∂I_B/∂T and ∂I_C/∂T [A/K] at fixed junction voltages, `at` the flow there.
+
+    From d ln I_S/dT = (vbe/T − dvbe/dT)/V_T, d ln β_F/dT = g·T0/T and d ln I_CBO/dT = ln 2/D.
+    """
+    transistor, T = sheet.transistor, law.temperature
+    I_S, vbe_slope = law.saturation_current, _base_emitter_slope(transistor, sheet.base_emitter_voltage, T)
+    I_S_slope = (law.reference_voltage / T - vbe_slope) / law.thermal_voltage
+    gain_slope = transistor.gain_drift * REFERENCE_TEMPERATURE / T
+    thermal = 1.0 / (law.thermal_voltage * T)
+    forward_T = at.forward * (I_S_slope - V_BE * thermal)
+    reverse_T = at.reverse * (I_S_slope - V_BC * thermal)
+    reverse_base_T = (reverse_T - I_S * I_S_slope) * law.inverse_reverse_gain
+    leakage_T = law.leakage * (_LN_2 / transistor.leakage_doubling)
+    base_T = (forward_T - I_S * I_S_slope - (at.forward - I_S) * gain_slope) / law.forward_gain
     early = 1.0 - V_BC * law.inverse_early
     return FlowDrift(
         base=base_T + reverse_base_T - leakage_T,

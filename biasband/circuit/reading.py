@@ -15,7 +15,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from biasband.circuit import signal
-from biasband.circuit.junction import Laws, laws
+from biasband.circuit.junction import Laws, laws, sheet
 from biasband.circuit.network import rails, sign, total
 from biasband.circuit.operating_point import OperatingPoint, regions, solve
 from biasband.circuit.scenarios import Array, Scenarios, Values
@@ -52,13 +52,13 @@ class Reading:
         transistor, scenarios = self.stage.transistor, self.scenarios
         if isinstance(transistor, IdealTransistor):
             return Laws(*(np.nan for _ in fields(Laws)))
-        return laws(
+        figures = sheet(
             transistor,
             gain=scenarios.gain,
-            base_emitter_at_25=scenarios.base_emitter_voltage,
-            leakage_at_25=scenarios.leakage,
-            temperature=self.quiet.junction_temperature,
+            base_emitter_voltage=scenarios.base_emitter_voltage,
+            leakage=scenarios.leakage,
         )
+        return laws(figures, self.quiet.junction_temperature)
 
     @cached_property
     def rails(self) -> Mapping[Node, Values]:

@@ -9,7 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from biasband.circuit.active import Bias, active_region
-from biasband.circuit.junction import Laws, laws
+from biasband.circuit.junction import Laws, Sheet, laws, sheet
 from biasband.circuit.network import Ports
 from biasband.circuit.newton import newton, start
 from biasband.circuit.scenarios import Array, Rows, Scenarios, Values, rows_of
@@ -33,38 +33,25 @@ class Problem:
     """One chunk of scenarios, ready to be solved at any junction temperature."""
 
     ports: Ports
-    transistor: Transistor
-    gain: Values
-    base_emitter_voltage: Values
-    leakage: Values
+    sheet: Sheet
     ambient: Values
 
     @classmethod
     def of(cls, ports: Ports, transistor: Transistor, part: Scenarios) -> Problem:
         """The problem of a chunk; the gain is spread out so that every result has shape (N,)."""
         gain = np.broadcast_to(np.asarray(part.gain, dtype=float), (len(part),))
-        return cls(ports, transistor, gain, part.base_emitter_voltage, part.leakage, part.temperature)
+        figures = sheet(
+            transistor, gain=gain, base_emitter_voltage=part.base_emitter_voltage, leakage=part.leakage
+        )
+        return cls(ports, figures, part.temperature)
 
     def laws(self, temperature: Values) -> Laws:
         """The junction laws at a junction temperature [K]."""
-        return laws(
-            self.transistor,
-            gain=self.gain,
-            base_emitter_at_25=self.base_emitter_voltage,
-            leakage_at_25=self.leakage,
-            temperature=temperature,
-        )
+        return laws(self.sheet, temperature)
 
     def part(self, rows: Rows) -> Problem:
         """The problem of the scenarios at `rows`."""
-        return Problem(
-            self.ports.part(rows),
-            self.transistor,
-            gain=rows_of(self.gain, rows),
-            base_emitter_voltage=rows_of(self.base_emitter_voltage, rows),
-            leakage=rows_of(self.leakage, rows),
-            ambient=rows_of(self.ambient, rows),
-        )
+        return Problem(self.ports.part(rows), self.sheet.part(rows), rows_of(self.ambient, rows))
 
 
 def patient(problem: Problem, temperature: Values) -> Bias:

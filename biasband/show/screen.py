@@ -32,6 +32,7 @@ def _painted(lines: list[Text], terminal: Console) -> str:
         force_terminal=terminal.is_terminal,
         color_system=terminal.color_system,  # type: ignore[arg-type]  # rich names it by plain str here
         no_color=terminal.no_color,
+        width=WIDEST,
         highlight=False,
     )
     for line in lines:

@@ -7,7 +7,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from biasband.circuit.junction import Laws, laws
+from biasband.circuit.junction import Laws, Sheet, laws, sheet
 from biasband.constants import HAND_BASE_EMITTER_VOLTAGE, HOTTEST_JUNCTION
 from biasband.stage import IdealTransistor, Stage, Transistor
 
@@ -58,20 +58,19 @@ def _need(stage: Stage, transistor: Transistor, I_C: float, V_CE: float) -> Need
     for _ in range(_PASSES):
         before = V_BE
         rise = (transistor.thermal_resistance or 0.0) * max(V_CE * I_C + V_BE * I_B, 0.0)
-        law = _nominal_laws(transistor, min(stage.ambient.nominal + rise, HOTTEST_JUNCTION))
+        law = laws(_nominal_sheet(transistor), min(stage.ambient.nominal + rise, HOTTEST_JUNCTION))
         V_BE, I_B = _inverted(law, I_C, V_CE, V_BE)
         if abs(V_BE - before) < _SETTLED:
             break
     return Need(V_BE, I_B, I_C, I_C + I_B)
 
 
-def _nominal_laws(transistor: Transistor, temperature: float) -> Laws:
-    return laws(
+def _nominal_sheet(transistor: Transistor) -> Sheet:
+    return sheet(
         transistor,
         gain=transistor.gain.nominal,
-        base_emitter_at_25=transistor.base_emitter_voltage.nominal,
-        leakage_at_25=0.0,
-        temperature=temperature,
+        base_emitter_voltage=transistor.base_emitter_voltage.nominal,
+        leakage=0.0,
     )
 
 

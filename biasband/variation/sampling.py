@@ -22,7 +22,7 @@ from biasband.variation.contributors import board_axes, group_axis, tempcos
 from biasband.variation.evaluation import Measures, Outcome, evaluate
 from biasband.variation.points_of_use import PointOfUse
 
-CHUNK = 8192
+CHUNK = 16384
 """Boards evaluated in one go; a multiple of four, the doubles that one step of the counter gives."""
 
 QUANTILES = (0.00135, 0.5, 0.99865)

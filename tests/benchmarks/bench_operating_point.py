@@ -11,13 +11,12 @@ import time
 import tracemalloc
 from collections.abc import Callable
 from dataclasses import replace
+from math import exp
 
 import numpy as np
 from numpy.typing import NDArray
 from scipy import optimize
 
-from biasband.circuit.junction import Laws, flow, laws
-from biasband.circuit.network import condense, rails
 from biasband.circuit.operating_point import OperatingPoint, solve
 from biasband.circuit.scenarios import Scenarios
 from biasband.circuit.topology import TOPOLOGIES, wire
@@ -79,31 +78,37 @@ def exponential_pass() -> None:
         np.exp(values)
 
 
-def residual(v: Vector, law: Laws, open_: Vector, Z: Vector) -> Vector:
-    """Both port equations of one board [V]."""
-    at = flow(law, v[0], v[1])
-    return np.asarray(v - open_ + Z @ np.array([at.base, at.collector], dtype=float).ravel())
+def collector_current_alone(scenarios: Scenarios, row: int) -> float:
+    """Collector current [A] of one board, as one would write it first: the divider's three nodes by scipy."""
+    one = scenarios.part(np.array([row]))
+    R1, R2, RC, RE = (float(np.ravel(one.resistances[name])[0]) for name in ("R1", "R2", "RC", "RE"))
+    h_FE, vbe_25, leakage = (
+        float(np.ravel(values)[0]) for values in (one.gain, one.base_emitter_voltage, one.leakage)
+    )
+    T, T0, V_CC = float(np.ravel(one.temperature)[0]), 298.15, float(np.ravel(one.supply + one.ripple)[0])
+    V_T, early = 1.380649e-23 / 1.602176634e-19 * T, 1.0 + (6.0 - vbe_25) / 70.0
+    I_S = 1.5e-3 / early * exp(-(vbe_25 - 2e-3 * (T - T0)) / V_T)
+    beta, I_CBO = h_FE / early * (T / T0) ** (5e-3 * T0), leakage * 2.0 ** ((T - T0) / 10.0)
+
+    def currents(V_BE: float, V_BC: float) -> tuple[float, float]:
+        forward, reverse = exp(min(V_BE / V_T, 60.0)), exp(min(V_BC / V_T, 60.0))
+        back = I_S / 4.0 * (reverse - 1.0)
+        I_C = I_S * (forward - reverse) * (1.0 - V_BC / 70.0) - back + I_CBO
+        return I_S / beta * (forward - 1.0) + back - I_CBO, I_C
+
+    def residual(V: Vector) -> Vector:
+        V_B, V_C, V_E = V.tolist()
+        I_B, I_C = currents(V_B - V_E, V_B - V_C)
+        base = (V_CC - V_B) / R1 - V_B / R2 - I_B
+        return np.array([base * R2, V_CC - V_C - I_C * RC, V_E - (I_B + I_C) * RE])
+
+    V_B, V_C, V_E = optimize.root(residual, np.array([1.4, 5.0, 0.8]), tol=1e-10).x.tolist()
+    return currents(V_B - V_E, V_B - V_C)[1]
 
 
 def scalar_loop(scenarios: Scenarios) -> Vector:
-    """Collector currents [A] one by one with scipy's general root finder, as one would write it first."""
-    currents = []
-    for row in range(len(scenarios)):
-        one = scenarios.part(np.array([row]))
-        ports = condense(WIRING, one.resistances, rails("npn", one))
-        law = laws(
-            COOL,
-            gain=one.gain,
-            base_emitter_at_25=one.base_emitter_voltage,
-            leakage_at_25=one.leakage,
-            temperature=one.temperature,
-        )
-        open_ = np.array([ports.open_be, ports.open_bc], dtype=float).ravel()
-        Z = np.array([[ports.z11, ports.z12], [ports.z21, ports.z22]], dtype=float).reshape(2, 2)
-
-        found = optimize.root(residual, np.array([0.62, -4.0]), (law, open_, Z), tol=1e-10)
-        currents.append(float(np.ravel(flow(law, found.x[0], found.x[1]).collector)[0]))
-    return np.array(currents)
+    """Collector currents [A], one board after the other."""
+    return np.array([collector_current_alone(scenarios, row) for row in range(len(scenarios))])
 
 
 def peak_memory(transistor: Transistor, scenarios: Scenarios) -> float:

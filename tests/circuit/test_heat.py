@@ -123,7 +123,7 @@ def test_power_slope_is_the_finite_difference_of_the_scalar_twin(case: Case) -> 
     part = together([case])
     ports = condense(case.wiring, part.resistances, rails(case.polarity, part))
     problem = Problem.of(ports, case.transistor, part)
-    slope = power_slope(ports, problem.laws(problem.ambient), patient(problem, problem.ambient))[0]
+    slope = power_slope(problem, problem.ambient, patient(problem, problem.ambient))[0]
     # A central difference over 0.02 K: curvature (1e-6 of the slope's scale) and rounding of the power.
     scale = abs(solver.at(T).power)
     assert slope == pytest.approx(expected, rel=1e-4, abs=1e-6 * scale + 1e-12)

@@ -9,7 +9,7 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from biasband.circuit.junction import Laws, base_emitter_voltage, flow, flow_drift, laws
+from biasband.circuit.junction import Laws, Sheet, base_emitter_voltage, flow, flow_drift, laws, sheet
 from biasband.circuit.scenarios import Values
 from biasband.stage import Transistor
 from circuit.stages import Case, real, transistors
@@ -19,15 +19,19 @@ ROOM = 298.15
 temperatures = st.floats(233.15, 423.15)
 
 
-def law_of(transistor: Transistor, temperature: Values, leakage: float = 0.0) -> Laws:
-    """The laws at a junction temperature, every figure at its nominal value."""
-    return laws(
+def sheet_of(transistor: Transistor, leakage: float = 0.0) -> Sheet:
+    """The data sheet, every figure at its nominal value."""
+    return sheet(
         transistor,
         gain=transistor.gain.nominal,
-        base_emitter_at_25=transistor.base_emitter_voltage.nominal,
-        leakage_at_25=leakage,
-        temperature=temperature,
+        base_emitter_voltage=transistor.base_emitter_voltage.nominal,
+        leakage=leakage,
     )
+
+
+def law_of(transistor: Transistor, temperature: Values, leakage: float = 0.0) -> Laws:
+    """The laws at a junction temperature, every figure at its nominal value."""
+    return laws(sheet_of(transistor, leakage), temperature)
 
 
 def imaginary(value: Values) -> float:
@@ -102,7 +106,7 @@ def test_drift_of_the_currents_is_the_complex_step_derivative(
 ) -> None:
     law, h = law_of(transistor, temperature, leakage=30e-9), 1e-30
     at = flow(law, V_BE, V_BC)
-    drift = flow_drift(law, at, V_BE, V_BC)
+    drift = flow_drift(sheet_of(transistor, leakage=30e-9), law, at, V_BE, V_BC)
     moved = flow(law_of(transistor, temperature + 1j * h, leakage=30e-9), V_BE, V_BC)  # type: ignore[arg-type]
     # Rounding alone, of terms that move by up to some 20 % per kelvin.
     scale = float(1e-12 * (at.forward + at.reverse))

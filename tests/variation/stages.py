@@ -117,7 +117,7 @@ def running_away(ambient: Limits | None = None) -> Stage:
     leaky = real(
         gain=Limits.exactly(260.0),
         base_emitter_voltage=Limits.exactly(0.64),
-        leakage=2e-6,
+        leakage=0.1e-6,
         thermal_resistance=500.0,
     )
     hot = Limits.exactly(358.15) if ambient is None else ambient

@@ -260,7 +260,7 @@ def test_runaway_corner_is_counted_and_left_out_of_the_extremes():
     # Half the load line is 10 V · 100 mA: 1 W at 500 K/W cannot be; without leakage the stage stays cold.
     found = corners(running_away(), some(running_away(), "collector_current"), cut_off=0.0)
     assert found.regions[Region.RUNAWAY] == found.regions[Region.ACTIVE] == 1
-    assert found.ranges["collector_current"].high.at["leakage"] < 2e-6
+    assert found.ranges["collector_current"].high.at["leakage"] < 0.1e-6
     assert np.isfinite(found.ranges["collector_current"].high.value)
 
 
