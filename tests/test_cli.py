@@ -250,10 +250,8 @@ def test_bad_stage_file_is_status_2_and_says_what_is_wrong(name, command, stage_
 
 
 def test_all_faults_are_shown_at_once(stage_path):
-    text = (
-        TEXT.replace("min = 165", "min = 0").replace('"3k3"', '"-3k3"').replace('"divider"  ', '"bridge"  ')
-    )
-    stage_path.write_text(text, encoding="utf-8")
+    faulty = TEXT.replace("min = 165", "min = 0").replace('"3k3"', '"-3k3"').replace('"npn"', '"nnp"')
+    stage_path.write_text(faulty, encoding="utf-8")
     stderr = run("review", stage_path).stderr
     assert all(part in stderr for part in ("stage.polarity", "transistor.gain.min", "resistors.RC.value"))
 

@@ -22,8 +22,14 @@ from biasband.circuit.solution import Problem, Status, Trial, isothermal, merged
 from biasband.constants import HOTTEST_JUNCTION
 from biasband.stage import Transistor
 
-_SECANT_STEPS = 6
+_QUICKLY, _PATIENTLY = 2, 7
+"""Secant steps: enough for a small loop gain, and for any that is no runaway."""
+
 _WARM_STEPS = 1
+"""Newton steps in the active region at each temperature, warm from the one before."""
+
+_MOST_SLACK = 2.0
+"""A gap counts as settled by 1 − G, but not by more than this."""
 
 SETTLED = 1e-6
 """[K] A junction temperature that moves less than this is settled."""
@@ -97,7 +103,9 @@ def settle(ports: Ports, transistor: Transistor, part: Scenarios) -> Trial:
         status = np.where(bias.solved, np.int8(Status.SOLVED), np.int8(Status.UNSOLVED))
         return Trial.of(ports, bias, T_j=problem.ambient, status=status)
     R = transistor.thermal_resistance
-    heated = _warm_up(problem, R, lambda T, F: active_region(ports, problem.laws(T), F, steps=_WARM_STEPS))
+    heated = _warm_up(
+        problem, R, lambda T, F: active_region(ports, problem.laws(T), F, steps=_WARM_STEPS), steps=_QUICKLY
+    )
     status = np.full(heated.T_j.shape, Status.SOLVED, dtype=np.int8)
     doubtful = heated.doubtful
     if doubtful.any():
@@ -111,30 +119,30 @@ Solver = Callable[[Values, Array | None], tuple[Bias, Array | None]]
 """Solve a chunk at a junction temperature [K], from the forward current found before, if any."""
 
 
-def _warm_up(problem: Problem, R: float, solve: Solver) -> Heated:
+def _warm_up(problem: Problem, R: float, solve: Solver, *, steps: int) -> Heated:
     """Secant steps on T_j − T_a − R_θ·P(T_j) = 0.
 
     The first step is the plain one, T_a + R_θ·P(T_a); the next ones know the loop gain as the
-    slope between two temperatures.
+    slope between two temperatures. Who is settled moves no more.
     """
-    T: Values = problem.ambient
-    bias, forward = solve(T, None)
-    first_rise = wanted = R * bias.power
-    gain = gain_cold = np.zeros_like(wanted)
-    for step in range(_SECANT_STEPS):
-        move = (problem.ambient + wanted - T) / (1.0 - gain)
-        T = np.minimum(T + move, HOTTEST_JUNCTION)
+    ambient = problem.ambient
+    bias, forward = solve(ambient, None)
+    first_rise = wanted = _rise(bias, R)
+    T = np.minimum(ambient + first_rise, HOTTEST_JUNCTION)
+    gain = gain_cold = np.zeros_like(T)
+    move, settled = T - ambient, np.zeros(T.shape, dtype=bool)
+    for step in range(steps):
         bias, forward = solve(T, forward)
-        before, wanted = wanted, R * bias.power
+        before, wanted = wanted, _rise(bias, R)
         gain = np.where(np.abs(move) > _TELLING_MOVE, (wanted - before) / move, gain)
-        if step == 0:
-            gain_cold = gain
-            continue
-        settled = bias.solved & (np.abs(problem.ambient + wanted - T) < SETTLED * (1.0 - gain))
-        if settled.all():
-            break
-    settled = settled & (T < HOTTEST_JUNCTION)
-    return Heated(bias, problem.ambient, np.asarray(T), first_rise, gain_cold, gain, settled)
+        gain_cold = gain if step == 0 else gain_cold
+        slack = 1.0 - gain
+        gap = ambient + wanted - T
+        settled = bias.solved & (np.abs(gap) < SETTLED * np.minimum(slack, _MOST_SLACK))
+        if step + 1 < steps:
+            move = np.where(settled, 0.0, np.minimum(T + gap / slack, HOTTEST_JUNCTION) - T)
+            T = T + move
+    return Heated(bias, ambient, T, first_rise, gain_cold, gain, settled & (T < HOTTEST_JUNCTION))
 
 
 @dataclass(frozen=True)
@@ -148,7 +156,7 @@ class Found:
 
 def _carefully(problem: Problem, R: float) -> Found:
     """Solve a chunk by the full equations, and climb where runaway cannot be ruled out."""
-    heated = _warm_up(problem, R, lambda T, F: (isothermal(problem, T), None))
+    heated = _warm_up(problem, R, lambda T, F: (isothermal(problem, T), None), steps=_PATIENTLY)
     T_j, status = heated.T_j, np.full(heated.T_j.shape, Status.SOLVED, dtype=np.int8)
     doubtful = heated.doubtful
     if doubtful.any():
@@ -200,4 +208,9 @@ def _gap(problem: Problem, R: float, T: Array) -> tuple[Array, Array, NDArray[np
     """How far [K] the junction wants to rise above T, the loop gain there, and where solved."""
     bias = isothermal(problem, T)
     gain = R * power_slope(problem, T, bias)
-    return problem.ambient + R * bias.power - T, gain, bias.solved
+    return problem.ambient + _rise(bias, R) - T, gain, bias.solved
+
+
+def _rise(bias: Bias, R: float) -> Array:
+    """R_θ·P [K], never below zero: in deep cut-off the model's constant leakage delivers a whisper."""
+    return np.maximum(R * bias.power, 0.0)

@@ -102,13 +102,18 @@ def _voltage(law: Laws, current: Values) -> Array:
 
 
 def newton(ports: Ports, law: Laws, V_BE: Array, V_BC: Array, *, steps: int) -> Bias:
-    """Newton's method from (V_BE, V_BC) [V] until all are solved or the steps are used up."""
+    """Newton's method from (V_BE, V_BC) [V] until all are solved or the steps are used up.
+
+    Who is solved moves no more, so that the neighbours in a chunk change nothing.
+    """
     here = tangent(ports, law, V_BE, V_BC)
     for _ in range(steps):
-        if not np.any(here.residual >= RESIDUAL):  # what is no number any more stays so
+        moves = here.residual >= RESIDUAL  # what is no number any more stays so
+        if not moves.any():
             break
         d_be, d_bc = here.solve(here.f1, here.f2)
-        V_BE, V_BC = _moved(V_BE, -d_be, law), _moved(V_BC, -d_bc, law)
+        V_BE = np.where(moves, _moved(V_BE, -d_be, law), V_BE)
+        V_BC = np.where(moves, _moved(V_BC, -d_bc, law), V_BC)
         here = tangent(ports, law, V_BE, V_BC)
     I_B, I_C = np.asarray(here.flow.base), np.asarray(here.flow.collector)
     return Bias(V_BE, V_BC, I_B, I_C, here.residual < RESIDUAL)

@@ -14,6 +14,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from biasband.circuit import heat, ideal
+from biasband.circuit.active import RESIDUAL
 from biasband.circuit.network import condense, rails
 from biasband.circuit.scenarios import Array, Scenarios, chunks
 from biasband.circuit.solution import Status, Trial
@@ -76,10 +77,11 @@ def regions(
 ) -> NDArray[np.int8]:
     """The Region of every scenario, shape (N,).
 
-    Saturated: V_CE at or below `saturation_voltage` [V]. Cut off: I_C below `cut_off_current` [A].
+    Saturated: V_CE at or below `saturation_voltage` [V], as exactly as voltages are solved. Cut off:
+    I_C below `cut_off_current` [A].
     """
     region = np.full(point.status.shape, Region.ACTIVE, dtype=np.int8)
-    region[point.collector_emitter <= saturation_voltage] = Region.SATURATED
+    region[point.collector_emitter <= saturation_voltage + RESIDUAL] = Region.SATURATED
     region[point.collector_current < cut_off_current] = Region.CUT_OFF
     region[point.status == Status.RUNAWAY] = Region.RUNAWAY
     region[point.status == Status.UNSOLVED] = Region.UNSOLVED

@@ -255,6 +255,8 @@ def warmed(case: Case, *, step: float = 1.0) -> Warmed:
     solver, R = Solver(case), case.transistor.thermal_resistance or 0.0
     here, worst, nearest = solver.at(case.temperature), -np.inf, np.inf
     gap = R * here.power
+    if gap <= 0.0:  # the constant leakage of the model can deliver a whisper of power in deep cut-off
+        return Warmed(here, worst, 0.0)
     while here.T_j < HOTTEST:
         if gap < 0.02:  # [K] as good as there: no wider step can be told from the fixed point
             nudge = solver.near(here.T_j + 0.02, here)

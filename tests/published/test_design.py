@@ -1,8 +1,9 @@
 """Published designs: resistors from a target, by hand formulas, and the preferred values nearest to them.
 
-What our rules do not do is left out: Bell 5-14 chooses R2 and R1 from V_B and a divider current of I_C/10 (done
-here with the ratio that makes them equal); Bell 5-16 grounds the base without a resistor worth naming; Millman
-& Halkias 9-2 designs from current limits; Cathey 3.26 fixes RE, RC and R_B, so only its current is ours.
+What our rules do not do is left out: Bell 5-16 has its base at ground without a resistor (ours takes
+R_B = 0.1·β·RE); Cathey 3.26 sizes the divider by R_B = β·RE/10, a rule that ours has for a split supply only, so
+its divider is not checked; Millman & Halkias 9-2 designs from limits of the current; Neamen 3.14 and Floyd 5-6
+are analyses, not designs.
 """
 
 from __future__ import annotations

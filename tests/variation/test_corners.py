@@ -33,7 +33,7 @@ from variation.stages import (
     words,
 )
 
-SLOW = settings(deadline=None, max_examples=8, suppress_health_check=[HealthCheck.too_slow])
+SLOW = settings(deadline=None, derandomize=True, max_examples=8, suppress_health_check=[HealthCheck.too_slow])
 
 BELL = {"RB": 470e3, "RC": 2.2e3}
 """Bell, Electronic Devices and Circuits, ex. 5-4: 18 V, all V_BE 0.7 V."""
@@ -250,8 +250,8 @@ def test_wider_tolerance_never_helps_a_corner(of, wider):
     narrow, broad = extremes(of, *names), extremes(wide, *names)
     for name in names:
         low, high = narrow[name].low.value, narrow[name].high.value
-        # An interior extreme is searched, not solved for: it is found to about 0.5 % of the range.
-        slack = 5e-3 * (high - low) + 1e-9
+        # An interior extreme is searched, not solved for: it is found to 1e-4 of the range.
+        slack = 1e-4 * (high - low) + 1e-9
         assert broad[name].low.value <= low + slack
         assert broad[name].high.value >= high - slack
 

@@ -108,7 +108,7 @@ def anywhere(of: Stage, seed: int) -> dict[str, np.ndarray]:
     return x
 
 
-@settings(deadline=None, max_examples=12, suppress_health_check=[HealthCheck.too_slow])
+@settings(deadline=None, derandomize=True, max_examples=12, suppress_health_check=[HealthCheck.too_slow])
 @given(of=varying_stages())
 def test_no_random_point_of_the_box_beats_the_extremes(of):
     cut_off = cut_off_current(of)
@@ -117,23 +117,21 @@ def test_no_random_point_of_the_box_beats_the_extremes(of):
     outcome = evaluate(of, anywhere(of, 3), some(of, *names), cut_off=cut_off)
     for name in names:
         low, high = found.ranges[name].low.value, found.ranges[name].high.value
-        # A local search for an extreme on a ridge or at a kink stops within about 0.5 % of the range.
-        slack = 5e-3 * (high - low) + 1e-9 * abs(high)
+        # A local search: on a ridge or a flat top it stops within 1e-4 of the range (200 random stages: 1e-9).
+        slack = 1e-4 * (high - low) + 1e-9 * abs(high)
         assert np.nanmin(outcome.low[name]) >= low - slack, name
         assert np.nanmax(outcome.high[name]) <= high + slack, name
 
 
-@settings(deadline=None, max_examples=8, suppress_health_check=[HealthCheck.too_slow])
+@settings(deadline=None, derandomize=True, max_examples=8, suppress_health_check=[HealthCheck.too_slow])
 @given(of=varying_stages())
-def test_no_random_point_beats_the_signal_extremes_of_a_stage_that_stays_active(of):
+def test_no_random_point_beats_the_signal_extremes(of):
     cut_off = cut_off_current(of)
     found = corners(of, some(of, *SIGNAL), cut_off=cut_off)
-    if set(found.regions) != {Region.ACTIVE}:
-        return
     outcome = evaluate(of, anywhere(of, 4), some(of, *SIGNAL), cut_off=cut_off)
     for name in SIGNAL:
         low, high = found.ranges[name].low.value, found.ranges[name].high.value
-        slack = 5e-3 * (high - low) + 1e-9 * abs(high)  # as above
+        slack = 1e-4 * (high - low) + 1e-9 * abs(high)  # as above
         assert np.nanmin(outcome.low[name]) >= low - slack, name
         assert np.nanmax(outcome.high[name]) <= high + slack, name
 
@@ -154,6 +152,6 @@ def test_every_vertex_of_a_grid_is_within_the_extremes():
     outcome = evaluate(of, x, some(of, *names), cut_off=0.0)
     for name in names:
         both = found.ranges[name]
-        slack = 5e-3 * (both.high.value - both.low.value)  # as above
+        slack = 1e-4 * (both.high.value - both.low.value)  # as above
         assert outcome.low[name].min() >= both.low.value - slack
         assert outcome.high[name].max() <= both.high.value + slack

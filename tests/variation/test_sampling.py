@@ -98,7 +98,7 @@ def test_rows_can_be_drawn_from_anywhere():
         assert np.array_equal(_uniform("R1.tolerance", slice(start, stop), 7), whole[start:stop])
 
 
-@settings(deadline=None, max_examples=15, suppress_health_check=[HealthCheck.too_slow])
+@settings(deadline=None, derandomize=True, max_examples=15, suppress_health_check=[HealthCheck.too_slow])
 @given(of=varying_stages())
 def test_every_board_lies_inside_the_corners(of):
     names = ("collector_voltage", "base_voltage", "collector_current", "base_current", "resistor_power.")
@@ -108,8 +108,8 @@ def test_every_board_lies_inside_the_corners(of):
     for name in names:
         low, high = ranges[name].low.value, ranges[name].high.value
         # Where nothing saturates these are extreme at a vertex; where something does, the search stops
-        # within about 0.5 % of the range.
-        slack = 5e-3 * (high - low) + 1e-9 * abs(high)
+        # within 1e-4 of the range.
+        slack = 1e-4 * (high - low) + 1e-9 * abs(high)
         assert found.spread[name].lowest_in_use.quantile(0.0) >= low - slack, name
         assert found.spread[name].highest_in_use.quantile(1.0) <= high + slack, name
 
