@@ -1,9 +1,28 @@
 """biasband: from a hand-computed bias network to buyable parts and a signed-off margin table."""
 
-from biasband.errors import BadlyWritten, BiasbandError, PhysicallyImpossible, UsageError
-from biasband.files.stage_file import read_stage
-from biasband.signoff.study import corners, design, review, snap, spread
-from biasband.stage import Stage
+from __future__ import annotations
+
+from typing import TYPE_CHECKING, Any
+
+if TYPE_CHECKING:
+    from biasband.errors import BadlyWritten, BiasbandError, PhysicallyImpossible, UsageError
+    from biasband.files.stage_file import read_stage
+    from biasband.signoff.study import corners, design, review, snap, spread
+    from biasband.stage import Stage
+
+_ROOMS = {
+    "BadlyWritten": "errors",
+    "BiasbandError": "errors",
+    "PhysicallyImpossible": "errors",
+    "Stage": "stage",
+    "UsageError": "errors",
+    "corners": "signoff.study",
+    "design": "signoff.study",
+    "read_stage": "files.stage_file",
+    "review": "signoff.study",
+    "snap": "signoff.study",
+    "spread": "signoff.study",
+}
 
 __all__ = [
     "BadlyWritten",
@@ -18,3 +37,16 @@ __all__ = [
     "snap",
     "spread",
 ]
+
+
+def __getattr__(name: str) -> Any:
+    """Fetch a public name from its room when it is first used, so that `--help` loads no numerics."""
+    from importlib import import_module
+
+    if name not in _ROOMS:
+        raise AttributeError(f"module 'biasband' has no attribute {name!r}")
+    return getattr(import_module(f"biasband.{_ROOMS[name]}"), name)
+
+
+def __dir__() -> list[str]:
+    return __all__

@@ -8,12 +8,12 @@ needs it, so that `--help` is instant.
 from __future__ import annotations
 
 import functools
-import os
 from collections.abc import Callable, Sequence
 from typing import TYPE_CHECKING, Annotated, Any, ParamSpec
 
 import typer
 
+from biasband.constants import MOST_BOARDS, VERSION
 from biasband.errors import BiasbandError, UsageError
 
 if TYPE_CHECKING:
@@ -23,8 +23,6 @@ if TYPE_CHECKING:
     from biasband.values.choosing import Design
 
 PASSED, NOT_PASSED, BAD_INPUT, INTERRUPTED = 0, 1, 2, 130
-MOST_BOARDS = 2**22
-"""About 2 GB of samples; more boards tell nothing more."""
 
 app = typer.Typer(
     add_completion=False,
@@ -186,32 +184,13 @@ def _status_of(attempt: Attempt) -> int:
 
 
 def _stage_files(names: Sequence[str]) -> list[str]:
-    """The files themselves, and the stage files of folders."""
-    return [path for name in names for path in (_in_folder(name) if os.path.isdir(name) else [name])]
+    """The files themselves, and the stage files of folders; what is left out is named."""
+    from biasband.files.stage_folder import stage_files
 
-
-def _in_folder(folder: str) -> list[str]:
-    """The stage files of a folder, by name; TOML files of another kind are left out, and named."""
-    try:
-        found = [os.path.join(folder, name) for name in sorted(os.listdir(folder)) if name.endswith(".toml")]
-    except OSError as error:
-        raise UsageError(f"{folder}: cannot be read: {error.strerror}") from None
-    others = [path for path in found if os.path.isdir(path) or _is_other_toml(path)]
-    for path in others:
+    found = [stage_files(name) for name in names]
+    for path in (path for files in found for path in files.left_out):
         _complain(f"{path}: left out, it has no [stage] section")
-    if stages := [path for path in found if path not in others]:
-        return stages
-    raise UsageError(f"{folder}: a folder without stage files; needed: files *.toml with a [stage] section")
-
-
-def _is_other_toml(path: str) -> bool:
-    """Whether a file is sound TOML without [stage]; a faulty one is kept, so that its faults show."""
-    from biasband.files.toml_file import read_toml
-
-    try:
-        return "stage" not in read_toml(path).data
-    except BiasbandError:
-        return False
+    return [path for files in found for path in files.stages]
 
 
 def _snapped(values: Sequence[str], series: str) -> list[Snap]:
@@ -243,9 +222,7 @@ def _write_frozen(path: str, result: Design, new_path: str) -> None:
 
 def _show_version(asked: bool) -> None:
     if asked:
-        from biasband.show.release import version
-
-        typer.echo(f"biasband {version()}")
+        typer.echo(f"biasband {VERSION}")
         raise typer.Exit(PASSED)
 
 

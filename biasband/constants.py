@@ -1,4 +1,10 @@
-"""Physical constants and the reference temperature (physics: SI 2019, exact)."""
+"""The release, a limit, physical constants (SI 2019, exact) and the reference temperature."""
+
+VERSION = "0.1.0"
+"""The release; the build reads it here."""
+
+MOST_BOARDS = 2**22
+"""About 2 GB of samples; more boards tell nothing more."""
 
 BOLTZMANN = 1.380649e-23
 """k [J/K], exact since the SI of 2019."""

@@ -43,6 +43,9 @@ _NEGLIGIBLE_RISE = 1e-3
 _TELLING_MOVE = 1e-4
 """[K] A move from which a slope can be told from rounding."""
 
+_LONG_WAY = 40.0
+"""[K] A first rise beyond which the slope between two temperatures tells nothing of either end."""
+
 _CLIMB_POINTS = 32
 _BISECTIONS = 32
 
@@ -86,13 +89,13 @@ class Heated:
         """Where runaway cannot be ruled out by G at both ends and on average between them.
 
         The average of G over [T_a, T_j] is exactly `1 − R_θ·P(T_a)/(T_j − T_a)`; a G that falls on
-        the way up betrays a stage that ran into saturation.
+        the way up betrays a stage that ran into saturation, and a long way may hide anything.
         """
         rise = self.T_j - self.ambient
         mean = (rise - self.first_rise) / np.maximum(rise, _NEGLIGIBLE_RISE)
         worst = np.maximum(np.maximum(self.gain_cold, self.gain_hot), mean)
         falls = self.gain_cold > self.gain_hot + _SUSPICIOUS_GAIN
-        return ~self.settled | (worst > _SUSPICIOUS_GAIN) | falls
+        return ~self.settled | (worst > _SUSPICIOUS_GAIN) | falls | (self.first_rise > _LONG_WAY)
 
 
 def settle(ports: Ports, transistor: Transistor, part: Scenarios) -> Trial:

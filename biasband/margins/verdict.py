@@ -37,7 +37,7 @@ def judge(
 ) -> Verdict:
     """Judge a stage: anything that fails makes it fail, else anything unknown makes it inconclusive."""
     failures = [*_failures(nominal, margins, evidence)]
-    doubts = [*_doubts(nominal, evidence), *_unstated(stage)]
+    doubts = [*_doubts(nominal, margins, evidence), *_unstated(stage)]
     outcome: Outcome = "fail" if failures else "inconclusive" if doubts else "pass"
     reservations = [_reservation(margin) for margin in margins if margin.only_by_method]
     because = (*failures, *doubts, *reservations)
@@ -54,8 +54,13 @@ def _failures(nominal: Region, margins: Sequence[Margin], evidence: Evidence) ->
     if hot_boards and not hot:
         yield f"thermal runaway in {hot_boards} of {_scenarios(evidence)} sampled scenarios"
     for margin in margins:
-        if margin.verdict == "fail":
+        if margin.verdict == "fail" and not _rss_unknown(margin):
             yield f"{label(margin)}: {_how_it_fails(margin)}"
+
+
+def _rss_unknown(margin: Margin) -> bool:
+    """Whether a row is to be judged by an RSS that a scenario on the way left unsolved."""
+    return margin.judged_by == "rss" and isnan(margin.rss)
 
 
 def label(margin: Margin) -> str:
@@ -77,7 +82,7 @@ def _reservation(margin: Margin) -> str:
     return f"{label(margin)}: pass by {margin.judged_by}, FAILS AT CORNERS"
 
 
-def _doubts(nominal: Region, evidence: Evidence) -> Iterator[str]:
+def _doubts(nominal: Region, margins: Sequence[Margin], evidence: Evidence) -> Iterator[str]:
     if nominal is Region.UNSOLVED:
         yield "the nominal point was not solved"
     corners = evidence.corners.regions.get(Region.UNSOLVED, 0)
@@ -86,6 +91,9 @@ def _doubts(nominal: Region, evidence: Evidence) -> Iterator[str]:
     sampled = evidence.boards.regions.get(Region.UNSOLVED, 0)
     if sampled:
         yield f"{sampled} of {_scenarios(evidence)} sampled scenarios were not solved"
+    for margin in margins:
+        if _rss_unknown(margin):
+            yield f"{label(margin)}: a scenario of its RSS was not solved"
 
 
 def _scenarios(evidence: Evidence) -> int:

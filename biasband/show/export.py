@@ -8,9 +8,9 @@ from collections.abc import Iterable, Mapping, Sequence
 from typing import Any
 
 from biasband.circuit.operating_point import Region
+from biasband.constants import VERSION
 from biasband.margins.records import Margin
 from biasband.parts.series import Snap
-from biasband.show.release import version
 from biasband.show.summary import Attempt
 from biasband.show.table import REGION_WORDS, code
 from biasband.signoff.study import Review
@@ -78,7 +78,7 @@ def summary_json(attempts: Sequence[Attempt]) -> list[Json]:
 
 
 def _problem(path: str, problem: str) -> Json:
-    return {"files": [{"path": path, "sha256": None}], "biasband": version(), "error": problem.split("\n")}
+    return {"files": [{"path": path, "sha256": None}], "biasband": VERSION, "error": problem.split("\n")}
 
 
 def design_json(design: Design) -> Json:
@@ -135,7 +135,7 @@ def _origin(stage: Stage) -> Json:
     return {
         "stage": {name: getattr(stage, name) for name in head},
         "files": [{"path": file.path, "sha256": file.sha256} for file in stage.files],
-        "biasband": version(),
+        "biasband": VERSION,
     }
 
 

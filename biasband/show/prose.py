@@ -5,9 +5,9 @@ from __future__ import annotations
 import math
 
 from biasband.circuit.topology import EMITTER_PARTS, Node
+from biasband.constants import VERSION
 from biasband.margins.records import Margin
 from biasband.quantity import Kind
-from biasband.show.release import version
 from biasband.show.table import figure, whole_percent, yield_percent
 from biasband.signoff.study import Review
 from biasband.stage import Stage, Transistor
@@ -106,7 +106,7 @@ def head(stage: Stage) -> tuple[str, ...]:
 def sampled(boards: Boards) -> str:
     """What was sampled, and by which program."""
     counts = f"{boards.boards} boards, seed {boards.seed}, {boards.points} points of use"
-    return f"{counts}, biasband {version()}"
+    return f"{counts}, biasband {VERSION}"
 
 
 def joint_yield(review: Review) -> str:
@@ -139,7 +139,7 @@ def _inside(review: Review, name: str) -> str:
 def formula(step: Step, stage: Stage) -> str:
     """A resistor's formula with its numbers: "(V_CC − V_C) / I = (9 V − 5.15 V) / 1 mA = 3.85 kΩ"."""
     result = figure(step.ohms, Kind.RESISTANCE)
-    if step.rule and step.high == step.low:  # the rule stands in the formula's place
+    if step.rule:
         return f"{step.rule} = {result}"
     names = _symbols(stage)
     high, low = figure(step.high, Kind.VOLTAGE), figure(step.low, Kind.VOLTAGE)
@@ -152,7 +152,7 @@ def formula(step: Step, stage: Stage) -> str:
     if step.beside:
         other = next(part for part in EMITTER_PARTS if part != step.resistor)
         letters, numbers = f"{letters} − {other}", f"{numbers} − {figure(step.beside, Kind.RESISTANCE)}"
-    rule = f", I = {step.rule}" if step.rule else ""
+    rule = f", I = {step.current_rule}" if step.current_rule else ""
     return f"{letters} = {numbers} = {result}{rule}"
 
 

@@ -5,12 +5,12 @@ from __future__ import annotations
 from collections.abc import Mapping, Sequence
 
 from biasband.circuit.quantities import Quantity
+from biasband.constants import VERSION
 from biasband.parts.derating import PROFILES
 from biasband.parts.series import Snap
 from biasband.show.analysis_tables import corners_table, design_table, snap_table, spread_tables
 from biasband.show.cautions import CAUTIONS
 from biasband.show.prose import frozen_or_chosen, head, joint_yield, rss_assumption, sampled
-from biasband.show.release import version
 from biasband.show.review_tables import margin_table, nominal_table, parts_table, summary_table
 from biasband.show.summary import Attempt
 from biasband.show.table import OUTCOME_TONES, Passage, Report
@@ -43,7 +43,7 @@ def summary_report(attempts: Sequence[Attempt]) -> Report:
 
 def design_report(design: Design) -> Report:
     """Ideal values with their formulas, and the preferred values."""
-    program = f"biasband {version()}"
+    program = f"biasband {VERSION}"
     return (_header(design, program), design_table(design), *_warnings(design.warnings), _CAUTIONS)
 
 
@@ -55,7 +55,7 @@ def snap_report(snaps: Sequence[Snap]) -> Report:
 def corners_report(design: Design, corners: Corners, words: Mapping[str, Quantity]) -> Report:
     """The corners of a stage in depth."""
     return (
-        _header(design, f"biasband {version()}"),
+        _header(design, f"biasband {VERSION}"),
         corners_table(corners, words),
         *_warnings(design.warnings),
         _CAUTIONS,

@@ -14,6 +14,7 @@ import numpy as np
 from biasband.circuit.operating_point import Region
 from biasband.circuit.quantities import Quantity, vocabulary
 from biasband.circuit.reading import Reading, read
+from biasband.constants import MOST_BOARDS
 from biasband.errors import UsageError
 from biasband.files.series_files import load_all, load_series
 from biasband.margins.checks import Standing, check_margins, standing_checks
@@ -145,8 +146,8 @@ def spread(stage: Stage, *, boards: int = BOARDS, seed: int = 1) -> sampling.Boa
 
 def check_sampling(boards: int, seed: int) -> None:
     """Refuse numbers of boards and seeds that cannot be sampled with."""
-    if boards < 1:
-        raise UsageError(f"boards: at least 1 is needed; read {boards}")
+    if not 1 <= boards <= MOST_BOARDS:
+        raise UsageError(f"boards: from 1 to {MOST_BOARDS}; read {boards}")
     if seed < 0:
         raise UsageError(f"seed: a whole number from 0; read {seed}")
 

@@ -127,7 +127,8 @@ class _Equations:
         span = self.span[Node.COLLECTOR_RAIL] - self.span[Node.EMITTER_RAIL]
         for wish in self._wished(aimed.need):
             off = wish.left_over(V_E, V_C)
-            if abs(off) > MET * span and Node.EMITTER not in self.wiring.ties:
+            is_tied = not wish.collector and Node.EMITTER in self.wiring.ties
+            if abs(off) > MET * span and not is_tied:
                 name, volts = ("collector_voltage", V_C) if wish.collector else ("emitter_voltage", V_E)
                 yield Miss(name, real * volts, real * (volts - off))
 

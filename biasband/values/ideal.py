@@ -25,7 +25,8 @@ class Step:
     """One resistor's formula with its numbers: `ohms = (high − low) / current − beside`.
 
     `high` and `low` are the real voltages [V] at `high_node` and `low_node`; `beside` [Ω] is a fixed
-    part in series (RE1). `rule` names the rule that replaced the formula, or set the current.
+    part in series (RE1). `current_rule` names the rule that set the current; `rule` the one that
+    stands in the formula's place.
     """
 
     resistor: str
@@ -36,6 +37,7 @@ class Step:
     low: float
     current: float
     beside: float = 0.0
+    current_rule: str = ""
     rule: str = ""
 
 
@@ -108,7 +110,7 @@ class _Walk:
             away = sum(self._leaving(node, other) for other in wires if other in self.currents)
             current = -(draw(node, wires, self.aim.need) + away)
             self.currents[wire] = current if wire.node is node else -current
-            steps.append(self._step(wire, ""))
+            steps.append(self._step(wire))
         return steps
 
     def _stiff_base(self, wire: Wire) -> Step:
@@ -128,7 +130,7 @@ class _Walk:
     def _across(self, wire: Wire) -> float:
         return self.aim.volts[wire.node] - self.aim.volts[wire.other]
 
-    def _step(self, wire: Wire, rule: str) -> Step:
+    def _step(self, wire: Wire, current_rule: str = "") -> Step:
         """The wire's one free part, written so that voltage and current are positive."""
         current, across = self.currents[wire], self._across(wire)
         beside = sum(self.fixed[part] for part in wire.parts if part in self.fixed)
@@ -138,5 +140,5 @@ class _Walk:
         ohms = (across / current if current else float("inf")) - beside
         return Step(
             resistor=name, ohms=ohms, high_node=ends[0], high=real[ends[0]], low_node=ends[1],
-            low=real[ends[1]], current=abs(current), beside=beside, rule=rule,
+            low=real[ends[1]], current=abs(current), beside=beside, current_rule=current_rule,
         )  # fmt: skip

@@ -124,7 +124,7 @@ def realise(stage: Stage, x: Coordinates) -> Scenarios:
     negative = stage.negative_supply
     return Scenarios(
         resistances={r.name: _resistance(r, x, rise) for r in stage.resistors},
-        gain=np.exp(_between(_logarithmic(transistor.gain), x.get(GAIN, 0.0))),
+        gain=_between(transistor.gain, x.get(GAIN, 0.0), logarithmic=True),
         base_emitter_voltage=_between(transistor.base_emitter_voltage, x.get(BASE_EMITTER, 0.0)),
         leakage=transistor.leakage * 0.5 * (x.get(LEAKAGE, -1.0) + 1.0),
         supply=_between(stage.supply.voltage, x.get(SUPPLY, 0.0)),
@@ -153,17 +153,13 @@ def _tempco_term(name: str, tempco: float, x: Coordinates, rise: Values) -> Valu
     return tempco * (x.get(name, 0.0) * np.abs(rise) if drawn is None else drawn * rise)
 
 
-def _between(limits: Limits, x: Values) -> Values:
+def _between(limits: Limits, x: Values, *, logarithmic: bool = False) -> Values:
     """The value at a coordinate, exactly the limits at −1 and +1 and the nominal at 0."""
-    if np.ndim(x) == 0 and x in (-1.0, 0.0, 1.0):
-        return {-1.0: limits.low, 0.0: limits.nominal, 1.0: limits.high}[float(x)]
-    x = np.asarray(x)
-    below = limits.nominal + x * (limits.nominal - limits.low)
-    above = limits.nominal + x * (limits.high - limits.nominal)
-    inside = np.where(x < 0.0, below, above)
-    return np.where(x == -1.0, limits.low, np.where(x == 1.0, limits.high, inside))
-
-
-def _logarithmic(limits: Limits) -> Limits:
-    low, nominal, high = (float(np.log(value)) for value in (limits.low, limits.nominal, limits.high))
-    return Limits(low=low, nominal=nominal, high=high)
+    exact = {-1.0: limits.low, 0.0: limits.nominal, 1.0: limits.high}
+    if np.ndim(x) == 0 and float(x) in exact:
+        return exact[float(x)]
+    x = np.asarray(x, dtype=float)
+    low, middle, high = (np.log(v) if logarithmic else v for v in exact.values())
+    inside = middle + x * np.where(x < 0.0, middle - low, high - middle)
+    value = np.exp(inside) if logarithmic else inside
+    return np.select([x == side for side in exact], list(exact.values()), value)

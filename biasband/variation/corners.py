@@ -16,7 +16,7 @@ import numpy as np
 from biasband.circuit.operating_point import Region
 from biasband.circuit.scenarios import Array
 from biasband.stage import Stage
-from biasband.variation.contributors import RIPPLE, Axis, axes, realise
+from biasband.variation.contributors import NEGATIVE, RIPPLE, Axis, axes, realise
 from biasband.variation.evaluation import Measures, Outcome, evaluate
 from biasband.variation.interior import Climbs, search
 from biasband.variation.polish import polish
@@ -68,11 +68,11 @@ def corners(stage: Stage, measures: Measures, *, cut_off: float) -> Corners:
     """Evaluate all 2^n corners and search the box from several of them."""
     box = axes(stage)
     vertices = _vertices(box)
-    points = np.vstack([vertices, [_middle(axis) for axis in box]])
+    points = np.vstack([vertices, [[_middle(axis) for axis in box]]]) if box else vertices
     outcome = evaluate(stage, _columns(box, points), measures, cut_off=cut_off)
     found = search(stage, box, _starts(box, points, measures, outcome), measures, cut_off=cut_off)
     found = polish(stage, box, found, measures, cut_off=cut_off)
-    regions = outcome.region[:-1]
+    regions = outcome.region[: len(vertices)]
     present = [Region(code) for code in np.unique(regions)]
     return Corners(
         ranges=_ranges(stage, box, measures, found),
@@ -84,7 +84,9 @@ def corners(stage: Stage, measures: Measures, *, cut_off: float) -> Corners:
 
 def values_at(stage: Stage, coordinates: Mapping[str, float]) -> dict[str, float]:
     """Every contributor's value in SI at these coordinates (formats: `low_at`)."""
-    return {name: float(value) for name, value in realise(stage, coordinates).named().items()}
+    values = realise(stage, coordinates).named()
+    absent = {NEGATIVE} if stage.negative_supply is None else set()
+    return {name: float(value) for name, value in values.items() if name not in absent}
 
 
 def _vertices(box: tuple[Axis, ...]) -> Array:
@@ -124,7 +126,7 @@ def _starts(box: tuple[Axis, ...], points: Array, measures: Measures, outcome: O
 
 def _best_vertices(box: tuple[Axis, ...], points: Array, scored: Array) -> list[int]:
     """The best vertex, and the best on either side of the axes along which extremes wander."""
-    best = int(np.argmax(scored[:-1]))
+    best = int(np.argmax(scored[: 2 ** len(box)]))
     others = {
         int(np.argmax(np.where(points[:, k] == side, scored, -np.inf)))
         for k, axis in enumerate(box)

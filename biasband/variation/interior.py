@@ -59,9 +59,9 @@ def scores(outcome: Outcome, names: tuple[str, ...], climbs: Climbs) -> Array:
 def search(
     stage: Stage, box: tuple[Axis, ...], climbs: Climbs, measures: Measures, *, cut_off: float
 ) -> Climbs:
-    """Drive every climb as high as it goes; a climb that nothing improves keeps its start."""
+    """Drive every climb as high as it goes; one that nothing improves, or not solved, keeps its start."""
     point, score = climbs.point.copy(), climbs.score.copy()
-    moved, live = np.zeros(len(score), dtype=bool), np.ones(len(score), dtype=bool)
+    moved, live = np.zeros(len(score), dtype=bool), np.isfinite(score)
     for count, step in enumerate(_STEPS if box else ()):
         rows = np.flatnonzero(live)
         for _ in range(_MOVES_PER_STEP):

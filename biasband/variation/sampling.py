@@ -70,7 +70,7 @@ def _shape(distribution: Distribution, u: Array) -> Array:
         from scipy.special import ndtr, ndtri
 
         tail = ndtr(-3.0)
-        return np.asarray(ndtri(tail + u * (1.0 - 2.0 * tail)) / 3.0)
+        return np.clip(ndtri(tail + u * (1.0 - 2.0 * tail)) / 3.0, -1.0, 1.0)
     if distribution == "triangular":
         return np.where(u < 0.5, np.sqrt(2.0 * u) - 1.0, 1.0 - np.sqrt(2.0 * (1.0 - u)))
     return 2.0 * u - 1.0

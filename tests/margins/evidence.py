@@ -35,7 +35,9 @@ def evidence(
     board_regions: Mapping[Region, int] | None = None,
 ) -> Evidence:
     """Evidence on one quantity; `boards` holds each board's value, or its (lowest, highest) in use."""
-    pair = boards if isinstance(boards, tuple) and len(boards) == 2 and np.ndim(boards[0]) else (boards, boards)
+    pair = (
+        boards if isinstance(boards, tuple) and len(boards) == 2 and np.ndim(boards[0]) else (boards, boards)
+    )
     lowest, highest = (np.array(values, dtype=float) for values in pair)
     spread = Spread(Sample(lowest), Sample(lowest), Sample(highest))
     found = Range(extreme(corners[0], gain=50.0), extreme(corners[1], gain=200.0))
@@ -44,9 +46,12 @@ def evidence(
         corners=Corners({quantity: found}, count=4, regions=regions or {Region.ACTIVE: 4}, region_at={}),
         rss={quantity: Interval(*(rss or corners))},
         boards=Boards(
-            {quantity: spread}, boards=lowest.size, seed=1, points=1,
+            {quantity: spread},
+            boards=lowest.size,
+            seed=1,
+            points=1,
             regions=board_regions or {Region.ACTIVE: lowest.size},
-        ),  # fmt: skip
+        ),
         causes={quantity: Causes({"gain": 0.7, "RB": 0.2}, {"RB": 0.6, "gain": 0.3})},
     )
 

@@ -5,6 +5,7 @@ from __future__ import annotations
 from dataclasses import replace
 
 import pytest
+from variation.stages import ROOM, ideal, limits, stage, with_resistors
 
 from biasband.circuit.quantities import vocabulary
 from biasband.margins.checks import check_margins, standing_checks
@@ -15,7 +16,6 @@ from biasband.variation.corners import corners
 from biasband.variation.points_of_use import points_of_use
 from biasband.variation.rss import rss
 from biasband.variation.sampling import sample
-from variation.stages import ROOM, ideal, limits, stage, with_resistors
 
 HOT = 358.15  # 85 °C
 RATINGS = {
@@ -130,7 +130,8 @@ def test_limits_are_the_profile_s_share_of_each_rating(profile):
     assert found["collector_current"].limit == pytest.approx(current * 0.12, rel=1e-12)
     assert found["emitter_base_voltage"].limit == pytest.approx(emitter_base * 5.0, rel=1e-12)
     assert found["junction_temperature"].limit == pytest.approx(junction, rel=1e-12)
-    # At 85 °C: (150 − 85)/280 K/W = 232 mW, less than P_tot; a resistor keeps (155 − 85)/(155 − 70) of 0.25 W.
+    # At 85 °C: (150 − 85)/280 K/W = 232 mW, less than P_tot; a resistor keeps (155 − 85)/(155 − 70) of
+    # 0.25 W.
     assert found["transistor_power"].limit == pytest.approx(power * 65.0 / 280.0, rel=1e-12)
     assert found["resistor_power.RC"].limit == pytest.approx(resistor * 0.25 * 70.0 / 85.0, rel=1e-12)
 
@@ -191,7 +192,9 @@ def test_split_supply_is_checked_rail_to_rail():
 
 def test_saturated_corner_fails_the_saturation_check():
     strong = rated()
-    of = replace(strong, resistors=tuple(replace(r, value=4.7e3) if r.name == "RC" else r for r in strong.resistors))
+    of = replace(
+        strong, resistors=tuple(replace(r, value=4.7e3) if r.name == "RC" else r for r in strong.resistors)
+    )
     row = rows(of)["saturation"]
     assert row.corners <= 0.3 + 1e-12
     assert not row.margin > 0.0

@@ -200,7 +200,11 @@ def inverting(**more):
 
 @pytest.mark.parametrize(
     ("asked", "worst", "rss", "margin"),
-    [({"at_least": 70.0}, 80.0, 90.0, 10.0), ({"at_most": 150.0}, 140.0, 130.0, 10.0), ({"at_most": 120.0}, 140.0, 130.0, -20.0)],
+    [
+        ({"at_least": 70.0}, 80.0, 90.0, 10.0),
+        ({"at_most": 150.0}, 140.0, 130.0, 10.0),
+        ({"at_most": 120.0}, 140.0, 130.0, -20.0),
+    ],
 )
 def test_inverting_gain_is_judged_by_magnitude(asked, worst, rss, margin):
     found = row(Requirement(id="R-2", quantity="voltage_gain", **asked), inverting())

@@ -5,6 +5,7 @@ from __future__ import annotations
 from dataclasses import replace
 
 import pytest
+from variation.stages import ideal, stage, with_resistor
 
 from biasband.circuit.operating_point import Region
 from biasband.circuit.quantities import vocabulary
@@ -13,7 +14,6 @@ from biasband.margins.requirements import requirement_margins
 from biasband.margins.verdict import Verdict, judge
 from biasband.stage import Limits, Requirement, Stage, Supply
 from margins.evidence import evidence, requirement
-from variation.stages import ideal, stage, with_resistor
 
 WORDS = vocabulary(("RB", "RC"))
 GOOD = {"nominal": 5.0, "corners": (4.0, 6.0), "boards": [5.0] * 1000}

@@ -1,8 +1,10 @@
 """Published designs: resistors from a target, by hand formulas, and the preferred values nearest to them.
 
 What our rules do not do is left out: Bell 5-16 has its base at ground without a resistor (ours takes
-R_B = 0.1·β·RE); Cathey 3.26 sizes the divider by R_B = β·RE/10, a rule that ours has for a split supply only, so
-its divider is not checked; Millman & Halkias 9-2 designs from limits of the current; Neamen 3.14 and Floyd 5-6
+R_B = 0.1·β·RE); Cathey 3.26 sizes the divider by R_B = β·RE/10, a rule that ours has for a split supply
+only, so
+its divider is not checked; Millman & Halkias 9-2 designs from limits of the current; Neamen 3.14 and
+Floyd 5-6
 are analyses, not designs.
 """
 
@@ -10,6 +12,9 @@ from __future__ import annotations
 
 import numpy as np
 import pytest
+from circuit.stages import value
+from variation.stages import Limits, stage
+from variation.stages import ideal as ideal_transistor
 
 from biasband.circuit.reading import read
 from biasband.files.series_files import load_series
@@ -18,9 +23,6 @@ from biasband.stage import IdealTransistor, Signal, Stage, Supply, Target
 from biasband.values.device import Device, hand, refined
 from biasband.values.ideal import ideal
 from biasband.variation.contributors import realise
-from circuit.stages import value
-from variation.stages import Limits, ideal as ideal_transistor
-from variation.stages import stage
 
 NAMES = {
     "base-resistor": ("RB", "RC"),
@@ -79,8 +81,10 @@ def test_bell_5_13_divider():
 
 
 def test_bell_5_14_snapping_to_twelve_values_per_decade():
-    # Bell 5-14: 12 V, V_E 5 V, V_CE 3 V, 1 mA: RE 5 k → 4.7 k; then V_B = 5.4 V, I_2 = I_C/10 gives 54 k → 56 k;
-    # then I_2 = 5.4/56 k = 96.4 µA and R1 = 6.6/96.4 µA = 68.4 k → 68 k. The book keeps I_C while RE is snapped.
+    # Bell 5-14: 12 V, V_E 5 V, V_CE 3 V, 1 mA: RE 5 k → 4.7 k; then V_B = 5.4 V, I_2 = I_C/10 gives 54
+    # k → 56 k;
+    # then I_2 = 5.4/56 k = 96.4 µA and R1 = 6.6/96.4 µA = 68.4 k → 68 k. The book keeps I_C while RE is
+    # snapped.
     series = load_series("E12")
     aim = Target(collector_current=1e-3, collector=8.0, emitter_voltage=5.0)
     of = target_stage("divider", 12.0, H_FE_100, aim)
@@ -122,8 +126,10 @@ def test_bell_5_16_collector_voltage_with_the_snapped_values():
 
 
 def test_cathey_3_26_maximum_swing_current():
-    # Cathey, Schaum's Electronic Devices and Circuits, 3.26: 15 V, RC 500, RE 300 bypassed, β 100: for maximum
-    # symmetric swing I_CQ = 9.375 mA (alpha taken as 1, V_CE(sat) 0): 15/(R_ac + R_dc) with R_ac = r_ac + r_e.
+    # Cathey, Schaum's Electronic Devices and Circuits, 3.26: 15 V, RC 500, RE 300 bypassed, β 100: for
+    # maximum
+    # symmetric swing I_CQ = 9.375 mA (alpha taken as 1, V_CE(sat) 0): 15/(R_ac + R_dc) with R_ac = r_ac
+    # + r_e.
     # The book has RE unbypassed for its load line: R_ac = R_dc = 800: I_CQ = 15/1600 = 9.375 mA. With that
     # current as the target and max-swing, our rule gives back the book's RC beside its RE.
     many = ideal_transistor(1e9)
@@ -135,7 +141,8 @@ def test_cathey_3_26_maximum_swing_current():
 
 
 def test_neamen_4_9_load_line():
-    # Neamen, Electronic Circuit Analysis and Design, ex. 4.9: 0.894 mA, RC 5 k, load 2 k: 2.55 V peak to peak,
+    # Neamen, Electronic Circuit Analysis and Design, ex. 4.9: 0.894 mA, RC 5 k, load 2 k: 2.55 V peak
+    # to peak,
     # limited by cut-off: 2 · I_CQ · (RC ‖ load). The divider is ours; it only has to keep V_CE high enough.
     of = stage(
         "divider",

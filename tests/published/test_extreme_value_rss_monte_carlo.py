@@ -22,7 +22,8 @@ MEASURES = {name: vocabulary(("R1", "R2", "RC", "RE"))[name] for name in NAMES}
 
 
 def divider() -> Stage:
-    """18 V ± 5 % by board, 33 k / 12 k / 1.2 k / 1 k all ± 5 %, β 50…200 uniform in ln β, V_BE 0.60…0.75 V."""
+    """18 V ± 5 % by board, 33 k / 12 k / 1.2 k / 1 k all ± 5 %, β 50…200 uniform in ln β, V_BE
+    0.60…0.75 V."""
     return stage(
         "divider",
         {"R1": 33e3, "R2": 12e3, "RC": 1.2e3, "RE": 1e3},
@@ -67,7 +68,10 @@ def nominal_use() -> dict[str, Sample]:
 
 @pytest.mark.parametrize(
     ("name", "low", "high", "tolerance"),
-    [("collector_current", 3.076e-3, 4.471e-3, 0.005e-3), ("collector_emitter_voltage", 8.337, 11.178, 0.005)],
+    [
+        ("collector_current", 3.076e-3, 4.471e-3, 0.005e-3),
+        ("collector_emitter_voltage", 8.337, 11.178, 0.005),
+    ],
 )
 def test_monte_carlo(nominal_use, name, low, high, tolerance):
     found = nominal_use[name]
@@ -80,7 +84,8 @@ def test_monte_carlo(nominal_use, name, low, high, tolerance):
 
 
 def test_highest_power_lies_inside_the_box():
-    # physics.md 5, computed for it: 12 V, RB 240 k, RC 2.2 k, no RE, V_BE 0.7 V, h_FE 30…100: V_CE·I_C is 12.6
+    # physics.md 5, computed for it: 12 V, RB 240 k, RC 2.2 k, no RE, V_BE 0.7 V, h_FE 30…100: V_CE·I_C
+    # is 12.6
     # and 7.7 mW at the corners, 16.4 mW at h_FE ≈ 58. Our power holds V_BE·I_B = 0.033 mW too.
     gain = Limits(low=30.0, nominal=np.sqrt(3000.0), high=100.0)
     of = stage("base-resistor", {"RB": 240e3, "RC": 2.2e3}, ideal(gain), 12.0)

@@ -1,7 +1,8 @@
 """The sampling engine on the cases of JCGM 101:2008, clause 9, and the bounds of a yield.
 
 Sources: JCGM 101:2008, "Propagation of distributions using a Monte Carlo method", clause 9 (figures from
-memory, re-run for the project's check values); Clopper & Pearson, Biometrika 26 (1934); Wilks, "Determination of
+memory, re-run for the project's check values); Clopper & Pearson, Biometrika 26 (1934); Wilks,
+"Determination of
 sample sizes for setting tolerance limits", Ann. Math. Statist. 12 (1941): 59, 93 and 124 draws.
 
 The engine's own streams, distributions and quantiles are used: inputs are the draws of `sampling`, sums are

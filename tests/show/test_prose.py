@@ -155,7 +155,8 @@ def test_part_in_series_is_taken_off():
 
 
 def test_rule_for_the_current_is_named_behind_the_formula():
-    assert formula(step(rule="10 times I_B"), reviewed(HIVE).stage).endswith("= 3.85 kΩ, I = 10 times I_B")
+    ruled = formula(step(current_rule="10 times I_B"), reviewed(HIVE).stage)
+    assert ruled.endswith("= 3.85 kΩ, I = 10 times I_B")
 
 
 def test_rule_in_the_formulas_place_stands_alone():

@@ -97,6 +97,15 @@ def test_verdict_comes_with_its_reasons():
     ]
 
 
+def test_warnings_stand_before_the_verdict():
+    review = replace(reviewed(HIVE), warnings=("first warning", "second warning"))
+    lines = shown(review)
+    start = lines.index("Warnings")
+    assert lines[start + 1 : start + 3] == ["  first warning", "  second warning"]
+    assert start < lines.index(review.verdict.line)
+    assert "Warnings" not in shown(replace(review, warnings=()))
+
+
 def test_every_report_on_a_stage_ends_with_the_cautions():
     for report in reports(HIVE)[:4]:
         text = " ".join(line.plain for line in lines_of(report, width=400, spelling=Spelling()))

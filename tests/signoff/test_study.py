@@ -8,6 +8,7 @@ from pathlib import Path
 import numpy as np
 import pandas as pd
 import pytest
+from variation.stages import ideal, limits, real, running_away, stage
 
 import biasband as bb
 from biasband.circuit.operating_point import Region
@@ -16,7 +17,6 @@ from biasband.files.stage_file import read_stage
 from biasband.signoff.frames import corner_frame, spread_frame
 from biasband.signoff.study import Review, review
 from biasband.stage import Limits, Stage, Supply
-from variation.stages import ideal, limits, real, running_away, stage
 
 SAMPLE = Path(__file__).parent.parent / "files" / "hive_microphone.toml"
 BOARDS = 2**11
@@ -152,7 +152,8 @@ def test_impossible_target_is_refused(hive):
 def plain(**transistor) -> Stage:
     """A divider in its middle, everything stated."""
     return stage(
-        "divider", {"R1": 68e3, "R2": 13e3, "RC": 3.9e3, "RE": 820.0}, real(**transistor), limits(8.1, 9.0, 9.9),
+        "divider", {"R1": 68e3, "R2": 13e3, "RC": 3.9e3, "RE": 820.0}, real(**transistor),
+        limits(8.1, 9.0, 9.9),
         resistor={"tolerance": 0.01}, ambient=limits(263.15, 298.15, 323.15),
     )  # fmt: skip
 
@@ -191,7 +192,9 @@ def test_saturating_corners_are_warned_of_and_counted():
 
 
 def test_high_supply_is_warned_of():
-    of = replace(plain(leakage=40e-9, thermal_resistance=280.0), supply=Supply(voltage=limits(60.0, 63.0, 66.0)))
+    of = replace(
+        plain(leakage=40e-9, thermal_resistance=280.0), supply=Supply(voltage=limits(60.0, 63.0, 66.0))
+    )
     assert "60 V DC" in warned(of)
 
 
@@ -230,7 +233,9 @@ def test_boards_join_the_point_of_use_of_an_interior_extreme():
     assert power.interior
     assert found.evidence.boards.points > 3  # nominal use, two limits and at least one within
     # 0.5 %: points of use are rounded to a hundredth of the half range, near a flat top.
-    assert found.spread["transistor_power"].highest_in_use.quantile(1.0) == pytest.approx(power.value, rel=5e-3)
+    assert found.spread["transistor_power"].highest_in_use.quantile(1.0) == pytest.approx(
+        power.value, rel=5e-3
+    )
 
 
 def test_monotone_stage_has_no_further_points_of_use():

@@ -6,8 +6,10 @@ from dataclasses import replace
 
 import numpy as np
 import pytest
+from circuit.stages import TOPOLOGY_RESISTORS, value
 from hypothesis import HealthCheck, assume, given, settings
 from hypothesis import strategies as st
+from variation.stages import real, with_resistor
 
 from biasband.circuit.reading import Reading, read
 from biasband.errors import PhysicallyImpossible
@@ -15,8 +17,6 @@ from biasband.stage import Limits, Resistor, Signal, Stage, Supply, Target
 from biasband.values.device import hand, refined
 from biasband.values.ideal import ideal
 from biasband.variation.contributors import realise
-from circuit.stages import TOPOLOGY_RESISTORS, value
-from variation.stages import real, with_resistor
 
 MET = 1e-3
 """physics.md 7: the ideal stage meets its target to 0.1 %."""
@@ -75,7 +75,15 @@ def targets(draw: st.DrawFn) -> Stage:
     """Any reasonable target in any topology and polarity."""
     topology = draw(st.sampled_from(sorted(TOPOLOGY_RESISTORS)))
     emitter = draw(
-        st.sampled_from([{}, {"emitter_voltage": 0.7}, {"emitter_voltage": 2.0}, {"supply_over": 9.0}, {"supply_over": 3.0}])
+        st.sampled_from(
+            [
+                {},
+                {"emitter_voltage": 0.7},
+                {"emitter_voltage": 2.0},
+                {"supply_over": 9.0},
+                {"supply_over": 3.0},
+            ]
+        )
     )
     supply = draw(st.floats(5.0, 24.0))
     polarity = draw(st.sampled_from(["npn", "pnp"]))
@@ -99,7 +107,9 @@ def targets(draw: st.DrawFn) -> Stage:
     )
 
 
-@settings(deadline=None, max_examples=150, suppress_health_check=[HealthCheck.too_slow, HealthCheck.filter_too_much])
+@settings(
+    deadline=None, max_examples=150, suppress_health_check=[HealthCheck.too_slow, HealthCheck.filter_too_much]
+)
 @given(of=targets())
 def test_ideal_stage_meets_current_collector_and_emitter(of):
     try:
@@ -112,7 +122,9 @@ def test_ideal_stage_meets_current_collector_and_emitter(of):
     assert value(reading, "collector_current") == pytest.approx(target.collector_current, rel=MET)
     names = {r.name for r in of.resistors}
     across = frame * (V_E - lower)
-    wished = target.emitter_voltage or (of.supply.voltage.nominal / target.supply_over if target.supply_over else None)
+    wished = target.emitter_voltage or (
+        of.supply.voltage.nominal / target.supply_over if target.supply_over else None
+    )
     if of.topology == "follower":
         # Without a wish the output stands midway between its rail and where the transistor saturates.
         middle = 0.5 * (frame * (upper - lower) - 0.3)
@@ -155,7 +167,12 @@ def test_hand_column_is_the_hand_calculation():
 
 
 def test_step_shows_the_numbers_of_its_formula():
-    of = target_stage("divider", Target(collector_current=1e-3), fixed={"RE1": 100.0}, names=("R1", "R2", "RC", "RE1", "RE2"))
+    of = target_stage(
+        "divider",
+        Target(collector_current=1e-3),
+        fixed={"RE1": 100.0},
+        names=("R1", "R2", "RC", "RE1", "RE2"),
+    )
     for device in (hand, refined):
         for step in ideal(of, of.target, {"RE1": 100.0}, device(of)).steps.values():
             assert step.ohms == pytest.approx((step.high - step.low) / step.current - step.beside, rel=1e-12)

@@ -28,9 +28,7 @@ def limits(low: float, nominal: float, high: float) -> Limits:
     return Limits(low=low, nominal=nominal, high=high, typical=True)
 
 
-def ideal(
-    gain: Limits | float, base_emitter_voltage: Limits | float = 0.7, **more: Any
-) -> IdealTransistor:
+def ideal(gain: Limits | float, base_emitter_voltage: Limits | float = 0.7, **more: Any) -> IdealTransistor:
     """A textbook transistor whose figures may vary; V_CE(sat) is 0 unless given."""
     as_limits = [x if isinstance(x, Limits) else Limits.exactly(x) for x in (gain, base_emitter_voltage)]
     figures = {"saturation_voltage": 0.0, **more}

@@ -33,7 +33,9 @@ def names(axes_of: tuple) -> list[str]:
 @pytest.mark.parametrize(("side", "sign"), [(-1.0, -1.0), (1.0, 1.0)])
 def test_resistor_limit_is_the_product_of_tolerance_drift_and_tempco(temperature, side, sign):
     # physics.md 4: low = R·(1−t)(1−d)(1−c·|ΔT|), high likewise with plus; |ΔT| = 35 K at both ends.
-    found = realise(warm(tolerance=0.05, life_drift=0.01, tempco=2e-4), {"RC": side, "temperature": temperature})
+    found = realise(
+        warm(tolerance=0.05, life_drift=0.01, tempco=2e-4), {"RC": side, "temperature": temperature}
+    )
     expected = 2.2e3 * (1 + sign * 0.05) * (1 + sign * 0.01) * (1 + sign * 2e-4 * 35.0)
     assert float(found.resistances["RC"]) == pytest.approx(expected, rel=ROUNDING)
     assert found.resistances["RB"] == 470e3
@@ -112,7 +114,9 @@ def test_tempco_is_an_axis_at_a_fixed_ambient_away_from_25_degrees():
         "base-resistor", OHMS, ideal(100.0), 18.0, resistor={"tempco": 1e-4}, ambient=Limits.exactly(HOT)
     )
     assert names(axes(hot)) == ["RB", "RC"]
-    assert float(realise(hot, {"RC": -1.0}).resistances["RC"]) == pytest.approx(2.2e3 * (1 - 35e-4), rel=ROUNDING)
+    assert float(realise(hot, {"RC": -1.0}).resistances["RC"]) == pytest.approx(
+        2.2e3 * (1 - 35e-4), rel=ROUNDING
+    )
 
 
 def test_board_and_use_are_told_apart():

@@ -7,6 +7,8 @@ from itertools import product
 
 import numpy as np
 import pytest
+from circuit import stages as cases
+from circuit.twin import Solver
 from hypothesis import HealthCheck, given, settings
 from hypothesis import strategies as st
 
@@ -16,8 +18,6 @@ from biasband.stage import Limits, Signal, Supply
 from biasband.variation.contributors import axes, realise
 from biasband.variation.corners import corners
 from biasband.variation.evaluation import cut_off_current, evaluate
-from circuit import stages as cases
-from circuit.twin import Solver
 from variation.stages import (
     ROOM,
     coupled,
@@ -109,9 +109,7 @@ def test_brute_force_by_the_scalar_twin_finds_the_same_extremes(polarity):
     }
     for gain, vbe, leak, supply, temperature, r1 in product(*sides.values()):
         R1 = 68e3 * (1 + r1 * 0.05) * (1 + r1 * 2e-4 * 35.0)
-        fixed = replace(
-            transistor, gain=Limits.exactly(gain), base_emitter_voltage=Limits.exactly(vbe)
-        )
+        fixed = replace(transistor, gain=Limits.exactly(gain), base_emitter_voltage=Limits.exactly(vbe))
         case = cases.Case(
             topology="divider",
             resistances={"R1": R1, "R2": 13e3, "RC": 3.3e3, "RE": 820.0},
@@ -167,6 +165,7 @@ COUPLES = Signal(source_resistance=10e3, bypassed=True)
 
 def feedthroughs() -> tuple[float, float]:
     """|dV_C/dV_CC| with capacitors open, from two solved supplies, and short, from g_m and r_π by hand."""
+
     def at(volts: float):
         quiet = replace(rippling(None), supply=Supply(voltage=Limits.exactly(volts)))
         return read(quiet, realise(quiet, {})).point

@@ -117,7 +117,8 @@ def test_no_random_point_of_the_box_beats_the_extremes(of):
     outcome = evaluate(of, anywhere(of, 3), some(of, *names), cut_off=cut_off)
     for name in names:
         low, high = found.ranges[name].low.value, found.ranges[name].high.value
-        # A local search: on a ridge or a flat top it stops within 1e-4 of the range (200 random stages: 1e-9).
+        # A local search: on a ridge or a flat top it stops within 1e-4 of the range (200 random stages:
+        # 1e-9).
         slack = 1e-4 * (high - low) + 1e-9 * abs(high)
         assert np.nanmin(outcome.low[name]) >= low - slack, name
         assert np.nanmax(outcome.high[name]) <= high + slack, name

@@ -6,14 +6,14 @@ from math import sqrt
 
 import numpy as np
 import pytest
+from circuit import stages as cases
+from circuit.twin import Solver
 
 from biasband.circuit.reading import read
 from biasband.stage import Limits, Stage, Supply
 from biasband.variation.contributors import board_axes, realise, use_axes
 from biasband.variation.points_of_use import points_of_use
 from biasband.variation.rss import rss
-from circuit import stages as cases
-from circuit.twin import Solver
 from variation.stages import (
     ROOM,
     coupled,
@@ -91,9 +91,7 @@ def test_contributor_that_moves_one_way_only_adds_to_one_side():
 
 def leaky() -> Stage:
     """A base-resistor stage between 25 and 85 °C in which only leakage differs from board to board."""
-    transistor = real(
-        gain=Limits.exactly(260.0), base_emitter_voltage=Limits.exactly(0.64), leakage=40e-9
-    )
+    transistor = real(gain=Limits.exactly(260.0), base_emitter_voltage=Limits.exactly(0.64), leakage=40e-9)
     return stage(
         "base-resistor",
         {"RB": 1.2e6, "RC": 2.2e3},

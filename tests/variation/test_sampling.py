@@ -55,14 +55,16 @@ def test_result_is_the_same_bytes_for_any_chunk(monkeypatch, chunk):
 def test_first_boards_are_the_same_in_a_larger_sample():
     few, many = (boards(coupled(), "collector_voltage", count=n) for n in (100, 1000))
     name = "collector_voltage"
-    assert np.array_equal(
-        few.spread[name].nominal_use.values, many.spread[name].nominal_use.values[:100]
-    )
+    assert np.array_equal(few.spread[name].nominal_use.values, many.spread[name].nominal_use.values[:100])
 
 
 def test_another_contributor_does_not_reshuffle_the_others():
     plain = stage("base-resistor", {"RB": 470e3, "RC": 2.2e3}, real(), 9.0, resistor={"tolerance": 0.01})
-    more = replace(plain, transistor=real(leakage=40e-9), supply=Supply(voltage=limits(8.0, 9.0, 10.0), varies="by board"))
+    more = replace(
+        plain,
+        transistor=real(leakage=40e-9),
+        supply=Supply(voltage=limits(8.0, 9.0, 10.0), varies="by board"),
+    )
     before, after = (coordinates(of, slice(0, 100), seed=1) for of in (plain, more))
     assert set(after) - set(before) == {"leakage", "supply"}
     for name, values in before.items():
@@ -85,7 +87,9 @@ def test_two_stages_are_drawn_alike_for_what_they_share():
 
 def test_seed_changes_the_boards_and_the_same_seed_does_not():
     one, same, other = (
-        boards(coupled(), "collector_voltage", count=50, seed=seed).spread["collector_voltage"].nominal_use.values
+        boards(coupled(), "collector_voltage", count=50, seed=seed)
+        .spread["collector_voltage"]
+        .nominal_use.values
         for seed in (1, 1, 2)
     )
     assert np.array_equal(one, same)
@@ -125,7 +129,9 @@ def test_every_draw_stays_between_the_contributor_s_limits(of):
             ratio = np.asarray(drawn.resistances[resistor.name]) / resistor.value
             assert np.all(ratio >= (1 - t) * (1 - d) * (1 - c) - 1e-12)  # rounding
             assert np.all(ratio <= (1 + t) * (1 + d) * (1 + c) + 1e-12)
-        assert np.all((np.asarray(drawn.gain) >= 165 * (1 - 1e-12)) & (np.asarray(drawn.gain) <= 410 * (1 + 1e-12)))
+        assert np.all(
+            (np.asarray(drawn.gain) >= 165 * (1 - 1e-12)) & (np.asarray(drawn.gain) <= 410 * (1 + 1e-12))
+        )
         assert np.all((np.asarray(drawn.leakage) >= 0) & (np.asarray(drawn.leakage) <= of.transistor.leakage))
 
 
