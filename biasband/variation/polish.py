@@ -133,7 +133,7 @@ def _highest(heights: Heights, box: tuple[Axis, ...], start: Array) -> Array:
         bounds=[*_bounds(box, start), (None, None)],
         constraints={"type": "ineq", "fun": room, "jac": slopes},
         method="SLSQP",
-        options={"maxiter": 40, "ftol": 1e-11},
+        options={"maxiter": 15, "ftol": 1e-10},
     )
     return _snapped(result.x[:-1], start)
 
