@@ -173,47 +173,75 @@ def _carefully(problem: Problem, R: float) -> Found:
 
 
 def _climb(problem: Problem, R: float, top: Array) -> Found:
-    """Walk from ambient to `top` [K] (the fixed point, where known, else the hottest junction).
+    """Walk from ambient to `top` [K] (a fixed point, where known, else the hottest junction).
 
     RUNAWAY where G reaches one at or before the first fixed point, or where there is none;
     UNSOLVED where the junctions could not be solved on the way. Whoever is decided walks no further.
     """
     start = problem.ambient + np.zeros_like(top)
-    low, high = start.copy(), start.copy()
+    low, high, gap = start.copy(), start.copy(), np.zeros_like(top)
     status = np.full(top.shape, Status.RUNAWAY, dtype=np.int8)
     walking = np.arange(top.size)
     for share in np.linspace(0.0, 1.0, _CLIMB_POINTS + 1):
-        T = start[walking] + (top - start)[walking] * share
-        gap, gain, solved = _gap(problem.part(walking), R, T)
-        arrives = solved & (gain < 1.0) & (gap <= SETTLED)
-        high[walking[arrives]] = T[arrives]
-        status[walking[arrives]] = Status.SOLVED
-        status[walking[~solved]] = Status.UNSOLVED
-        walks = solved & (gain < 1.0) & ~arrives
-        walking = walking[walks]
-        low[walking] = T[walks]
+        high[walking] = start[walking] + (top - start)[walking] * share
+        here = _gap(problem.part(walking), R, high[walking])
+        status[walking[~here.solved]] = Status.UNSOLVED
+        status[walking[here.arrived]] = Status.SOLVED
+        on = here.solved & (here.gain < 1.0) & ~here.arrived
+        walking = walking[on]
+        low[walking], gap[walking] = high[walking], here.gap[on]
         if not walking.size:
             break
-    T_j = _bisect(problem, R, low, high, np.flatnonzero(status == Status.SOLVED))
+    near = np.flatnonzero((status == Status.RUNAWAY) & (gap < 2.0 * (high - low)))
+    _look_into_dips(problem, R, low, high, status, near)
+    rows = np.flatnonzero(status == Status.SOLVED)
+    T_j = high.copy()
+    T_j[rows] = _bisect(problem.part(rows), R, low[rows], high[rows], lambda here: here.gap > 0.0)
     return Found(isothermal(problem, T_j), T_j, status)
 
 
-def _bisect(problem: Problem, R: float, low: Array, high: Array, rows: NDArray[np.intp]) -> Array:
-    """The junction temperature [K] between `low`, from where it still rises, and `high`, at `rows`."""
-    T_j, some, below, above = high.copy(), problem.part(rows), low[rows], high[rows]
-    for _ in range(_BISECTIONS if rows.size else 0):
-        middle = 0.5 * (below + above)
-        rises = _gap(some, R, middle)[0] > 0.0
-        below, above = np.where(rises, middle, below), np.where(rises, above, middle)
-    T_j[rows] = 0.5 * (below + above)
-    return T_j
+def _look_into_dips(
+    problem: Problem, R: float, low: Array, high: Array, status: NDArray[np.int8], rows: NDArray[np.intp]
+) -> None:
+    """Between two points the gap may dip below zero and rise again: it is least where G is one."""
+    if not rows.size:
+        return
+    some = problem.part(rows)
+    least = _bisect(some, R, low[rows], high[rows], lambda here: here.gain < 1.0)
+    dips = _gap(some, R, least).gap <= 0.0
+    high[rows[dips]] = least[dips]
+    status[rows[dips]] = Status.SOLVED
 
 
-def _gap(problem: Problem, R: float, T: Array) -> tuple[Array, Array, NDArray[np.bool_]]:
-    """How far [K] the junction wants to rise above T, the loop gain there, and where solved."""
+@dataclass(frozen=True)
+class _Gap:
+    """How far [K] the junction wants to rise above a temperature, the loop gain there, where solved."""
+
+    gap: Array
+    gain: Array
+    solved: NDArray[np.bool_]
+
+    @property
+    def arrived(self) -> NDArray[np.bool_]:
+        """Where a fixed point is reached, as exactly as one may be known."""
+        return self.solved & (self.gain < 1.0) & (self.gap <= _MOST_SLACK * SETTLED)
+
+
+def _bisect(
+    problem: Problem, R: float, low: Array, high: Array, below: Callable[[_Gap], NDArray[np.bool_]]
+) -> Array:
+    """The temperature [K] between `low` and `high` up to which `below` holds."""
+    for _ in range(_BISECTIONS if low.size else 0):
+        middle = 0.5 * (low + high)
+        up = below(_gap(problem, R, middle))
+        low, high = np.where(up, middle, low), np.where(up, high, middle)
+    return 0.5 * (low + high)
+
+
+def _gap(problem: Problem, R: float, T: Array) -> _Gap:
     bias = isothermal(problem, T)
     gain = R * power_slope(problem, T, bias)
-    return problem.ambient + _rise(bias, R) - T, gain, bias.solved
+    return _Gap(problem.ambient + _rise(bias, R) - T, gain, bias.solved)
 
 
 def _rise(bias: Bias, R: float) -> Array:
