@@ -125,12 +125,12 @@ def corners(stage: StageFile, json: AsJson = False) -> int:
     from biasband.show import export, report
     from biasband.signoff import study
 
-    chosen = study.design(read_stage(stage))
-    found, words = study.corners(chosen.stage), study.words(chosen.stage)
+    found = study.corners(read_stage(stage))
+    words = study.words(found.design.stage)
     _put(
         json,
-        lambda: export.corners_json(chosen, found, words),
-        lambda: report.corners_report(chosen, found, words),
+        lambda: export.corners_json(found.design, found.corners, words),
+        lambda: report.corners_report(found.design, found.corners, words),
     )
     return PASSED
 
@@ -143,13 +143,13 @@ def spread(stage: StageFile, json: AsJson = False, boards: BoardCount = 32768, s
     from biasband.show.output import busy
     from biasband.signoff import study
 
-    chosen = study.design(read_stage(stage))
     with busy(f"sampling {boards} boards"):
-        sampled = study.spread(chosen.stage, boards=boards, seed=seed)
+        drawn = study.spread(read_stage(stage), boards=boards, seed=seed)
+    words = study.words(drawn.design.stage)
     _put(
         json,
-        lambda: export.spread_json(chosen, sampled),
-        lambda: report.spread_report(chosen, sampled, study.words(chosen.stage)),
+        lambda: export.spread_json(drawn.design, drawn.boards),
+        lambda: report.spread_report(drawn.design, drawn.boards, words),
     )
     return PASSED
 

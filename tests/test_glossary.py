@@ -11,7 +11,7 @@ import pytest
 from biasband.margins.checks import NotMade, Standing
 from biasband.margins.records import Evidence, Margin
 from biasband.margins.verdict import Verdict
-from biasband.signoff.study import Nominal, Review
+from biasband.signoff.study import CornerStudy, Nominal, Review, SpreadStudy
 from biasband.values.choosing import Design, PartChoice
 from biasband.variation.causes import Causes
 from biasband.variation.corners import Corners, Extreme, Range
@@ -23,8 +23,8 @@ GLOSSARY = TEXT.split("## Glossary")[1].split("\n## ")[0]
 WORDS = set(re.findall(r"[A-Za-z_]+", GLOSSARY))
 
 RECORDS = (
-    Boards, Causes, Corners, Design, Evidence, Extreme, Interval, Margin, Nominal, NotMade,
-    PartChoice, Range, Review, Spread, Standing, Verdict,
+    Boards, Causes, Corners, CornerStudy, Design, Evidence, Extreme, Interval, Margin, Nominal, NotMade,
+    PartChoice, Range, Review, Spread, SpreadStudy, Standing, Verdict,
 )  # fmt: skip
 
 

@@ -87,6 +87,36 @@ class Review:
         return margin_frame(self.rows)
 
 
+@dataclass(frozen=True)
+class CornerStudy:
+    """The corners of a stage, and the design they were evaluated for."""
+
+    design: Design
+    corners: cornering.Corners
+
+    @property
+    def table(self) -> pd.DataFrame:
+        """A row per quantity: its extremes [SI] and where each lies."""
+        from biasband.signoff.frames import corner_frame
+
+        return corner_frame(self.corners)
+
+
+@dataclass(frozen=True)
+class SpreadStudy:
+    """The sampled boards of a stage, and the design they were drawn for."""
+
+    design: Design
+    boards: sampling.Boards
+
+    @property
+    def table(self) -> pd.DataFrame:
+        """A row per quantity and place: mean, deviation and quantiles [SI]."""
+        from biasband.signoff.frames import spread_frame
+
+        return spread_frame(self.boards.spread)
+
+
 def words(stage: Stage) -> Mapping[str, Quantity]:
     """The vocabulary of a stage."""
     return vocabulary(tuple(resistor.name for resistor in stage.resistors))
@@ -124,24 +154,23 @@ def _region(stage: Stage, reading: Reading) -> Region:
     return Region(int(reading.regions(cut_off_current(stage))[0]))
 
 
-def corners(stage: Stage) -> cornering.Corners:
+def corners(stage: Stage) -> CornerStudy:
     """Evaluate every quantity at all corners of a stage, its missing values designed first."""
-    chosen = design(stage).stage
-    return cornering.corners(chosen, words(chosen), cut_off=cut_off_current(chosen))
+    chosen = design(stage)
+    stage = chosen.stage
+    return CornerStudy(chosen, cornering.corners(stage, words(stage), cut_off=cut_off_current(stage)))
 
 
-def spread(stage: Stage, *, boards: int = BOARDS, seed: int = 1) -> sampling.Boards:
-    """Sample boards of a stage, its missing values designed first, at every point of use."""
-    chosen = design(stage).stage
+def spread(stage: Stage, *, boards: int = BOARDS, seed: int = 1) -> SpreadStudy:
+    """Sample boards of a stage, its missing values designed first, at every point of use.
+
+    Raises UsageError for a number of boards or a seed that cannot be sampled with.
+    """
     check_sampling(boards, seed)
-    return sampling.sample(
-        chosen,
-        words(chosen),
-        points_of_use(chosen),
-        boards=boards,
-        seed=seed,
-        cut_off=cut_off_current(chosen),
-    )
+    chosen = design(stage)
+    stage, points, cut_off = chosen.stage, points_of_use(chosen.stage), cut_off_current(chosen.stage)
+    drawn = sampling.sample(stage, words(stage), points, boards=boards, seed=seed, cut_off=cut_off)
+    return SpreadStudy(chosen, drawn)
 
 
 def check_sampling(boards: int, seed: int) -> None:

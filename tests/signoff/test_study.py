@@ -123,8 +123,9 @@ def test_corner_and_spread_frames_are_indexed_by_quantity(result):
 
 def test_analyses_can_be_asked_for_alone(hive, result):
     assert bb.design(hive) == result.design
-    assert bb.corners(hive).ranges["collector_voltage"] == result.evidence.corners.ranges["collector_voltage"]
-    drawn = bb.spread(hive, boards=64, seed=7).spread["collector_voltage"].nominal_use.values
+    found = bb.corners(hive).corners.ranges["collector_voltage"]
+    assert found == result.evidence.corners.ranges["collector_voltage"]
+    drawn = bb.spread(hive, boards=64, seed=7).boards.spread["collector_voltage"].nominal_use.values
     assert np.array_equal(drawn, result.spread["collector_voltage"].nominal_use.values[:64])
 
 
