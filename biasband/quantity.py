@@ -221,9 +221,12 @@ def _relative(tolerance: str, value: float, text: str, kind: Kind) -> float:
     return relative
 
 
-def format_quantity(value: float, kind: Kind, *, digits: int = 4, plain: bool = False) -> str:
-    """Write a figure for people: engineering prefixes, `digits` significant figures, no trailing zeros.
+def format_quantity(
+    value: float, kind: Kind, *, digits: int = 4, plain: bool = False, keep_zeros: bool = False
+) -> str:
+    """Write a figure for people: engineering prefixes and `digits` significant figures.
 
+    Trailing zeros are left out unless `keep_zeros` asks for them (a column of computed figures).
     Temperatures are shown in °C, ratios in %. `plain` uses ASCII only ("ohm", "u", "degC"). NaN is
     "n/a", an infinity "inf" with its sign.
     Worked case: format_quantity(4700.0, Kind.RESISTANCE) is "4.7 kΩ".
@@ -233,8 +236,9 @@ def format_quantity(value: float, kind: Kind, *, digits: int = 4, plain: bool = 
     if kind is Kind.TEMPERATURE:
         # Nine decimals: the subtraction leaves noise, which would else be shown near 0 °C.
         celsius = round(value - KELVIN_OFFSET, 9)
-        return f"{_digits(_rounded(celsius, digits))} {'degC' if plain else '°C'}"
-    return _written(_rounded(value, digits), kind, plain=plain)
+        shown = _digits(_rounded(celsius, digits), keep_zeros=keep_zeros)
+        return f"{shown} {'degC' if plain else '°C'}"
+    return _written(_rounded(value, digits), kind, plain=plain, keep_zeros=keep_zeros)
 
 
 def format_exact(value: float, kind: Kind) -> str:
@@ -251,19 +255,19 @@ def _rounded(value: float, digits: int) -> Decimal:
     return Decimal(f"{value:.{digits - 1}e}")
 
 
-def _written(number: Decimal, kind: Kind, *, plain: bool) -> str:
+def _written(number: Decimal, kind: Kind, *, plain: bool, keep_zeros: bool = False) -> str:
     vocabulary = _VOCABULARY[kind]
     power = number.adjusted() if number else 0
     fitting = [unit for unit, start in vocabulary.shown.items() if start <= power]
     unit = fitting[-1] if fitting else next(iter(vocabulary.shown))
-    text = _digits(number.scaleb(-vocabulary.units[unit]))
+    text = _digits(number.scaleb(-vocabulary.units[unit]), keep_zeros=keep_zeros)
     spelled = unit.replace("Ω", "ohm") if plain else unit.replace("u", "µ")
     return f"{text} {spelled}".rstrip()
 
 
-def _digits(number: Decimal) -> str:
-    """All digits of a number and no trailing zeros; with an exponent where it is far from one."""
+def _digits(number: Decimal, *, keep_zeros: bool = False) -> str:
+    """All digits of a number, trailing zeros if asked for; with an exponent where it is far from one."""
     if not number:
         return "0"
-    trimmed = number.normalize()
+    trimmed = number if keep_zeros else number.normalize()
     return f"{trimmed:f}" if -5 <= trimmed.adjusted() < 7 else f"{trimmed:e}"

@@ -8,7 +8,7 @@ from biasband.circuit.quantities import Quantity
 from biasband.parts.series import Snap
 from biasband.quantity import Kind
 from biasband.show.prose import formula, places
-from biasband.show.table import REGION_WORDS, Column, Row, Table, code, difference, figure, percent
+from biasband.show.table import REGION_WORDS, Column, Row, Table, code, computed, difference, figure, percent
 from biasband.stage import Stage
 from biasband.values.choosing import Design, PartChoice
 from biasband.values.ideal import Step
@@ -73,7 +73,7 @@ def _design_row(part: PartChoice, stage: Stage) -> Row:
 
 
 def _ohms(step: Step | None) -> str:
-    return "" if step is None else figure(step.ohms, Kind.RESISTANCE)
+    return "" if step is None else computed(step.ohms, Kind.RESISTANCE)
 
 
 def snap_table(snaps: Sequence[Snap]) -> Table:
@@ -98,8 +98,8 @@ def _corner_row(found: Range, quantity: Quantity) -> Row:
     return Row(
         (
             quantity.name,
-            figure(found.low.value, quantity.kind),
-            figure(found.high.value, quantity.kind),
+            computed(found.low.value, quantity.kind),
+            computed(found.high.value, quantity.kind),
             "inside the limits" if found.interior else "corners",
         ),
         (f"lowest: {places(found.low)}", f"highest: {places(found.high)}"),
@@ -124,6 +124,6 @@ def spread_tables(boards: Boards, words: Mapping[str, Quantity]) -> tuple[Table,
 
 
 def _spread_row(sample: Sample, quantity: Quantity) -> Row:
-    quantiles = (figure(sample.quantile(share), quantity.kind) for share in QUANTILES)
-    mean, sd = figure(sample.mean, quantity.kind), difference(sample.sd, quantity.kind)
+    quantiles = (computed(sample.quantile(share), quantity.kind) for share in QUANTILES)
+    mean, sd = computed(sample.mean, quantity.kind), difference(sample.sd, quantity.kind)
     return Row((quantity.name, mean, sd, *quantiles))

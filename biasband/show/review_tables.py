@@ -19,6 +19,7 @@ from biasband.show.table import (
     Table,
     Tone,
     code,
+    computed,
     difference,
     figure,
     percent,
@@ -81,8 +82,8 @@ def _part_row(part: PartChoice, resistor: Resistor, power: float) -> Row:
             resistor.series if part.chosen else "",
             percent(resistor.tolerance, digits=4) if resistor.tolerance_stated else "not stated",
             figure(resistor.tempco, Kind.RELATIVE_SLOPE),
-            "given" if part.ideal is None else figure(part.ideal.ohms, Kind.RESISTANCE),
-            figure(power, Kind.POWER),
+            "given" if part.ideal is None else computed(part.ideal.ohms, Kind.RESISTANCE),
+            computed(power, Kind.POWER),
             "not stated" if rating is None else figure(rating, Kind.POWER),
         )
     )
@@ -100,7 +101,7 @@ def nominal_table(review: Review) -> Table:
 
 def _nominal_row(name: str, value: float, quantity: Quantity) -> Row:
     inverting = quantity.by_magnitude and value < 0.0
-    return Row((f"{name} (inverting)" if inverting else name, figure(value, quantity.kind)))
+    return Row((f"{name} (inverting)" if inverting else name, computed(value, quantity.kind)))
 
 
 def margin_table(review: Review) -> Table:
@@ -119,9 +120,9 @@ def _margin_row(row: Margin) -> Row:
     cells = (
         label(row),
         f"{_SIGNS[row.side]} {figure(row.limit, row.kind)}",
-        figure(row.nominal, row.kind),
-        figure(row.corners, row.kind),
-        "" if row.standing else figure(row.rss, row.kind),
+        computed(row.nominal, row.kind),
+        computed(row.corners, row.kind),
+        "" if row.standing else computed(row.rss, row.kind),
         "" if row.standing else f"{yield_percent(row.yield_held)} (≥ {yield_percent(row.yield_low)})",
         difference(row.margin, row.kind),
         share_left(row),

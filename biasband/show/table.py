@@ -79,13 +79,18 @@ Report = tuple[Table | Passage, ...]
 
 
 def figure(value: float, kind: Kind, *, digits: int = 4) -> str:
-    """Write a figure with its unit; NaN is "n/a"."""
+    """Write a figure as it is given, with its unit; NaN is "n/a"."""
     return format_quantity(value, kind, digits=digits)
+
+
+def computed(value: float, kind: Kind, *, digits: int = 4) -> str:
+    """Write a computed figure with its unit, all its digits kept, so that a column reads evenly."""
+    return format_quantity(value, kind, digits=digits, keep_zeros=True)
 
 
 def difference(value: float, kind: Kind, *, digits: int = MARGIN_DIGITS) -> str:
     """Write a difference between two figures of a kind: between temperatures it is in K."""
-    return figure(value, Kind.TEMPERATURE_DIFFERENCE if kind is Kind.TEMPERATURE else kind, digits=digits)
+    return computed(value, Kind.TEMPERATURE_DIFFERENCE if kind is Kind.TEMPERATURE else kind, digits=digits)
 
 
 def percent(share: float, *, digits: int = 2) -> str:
