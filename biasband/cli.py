@@ -13,7 +13,7 @@ from typing import TYPE_CHECKING, Annotated, Any, ParamSpec
 
 import typer
 
-from biasband.constants import MOST_BOARDS, VERSION
+from biasband.constants import BOARDS, MOST_BOARDS, VERSION
 from biasband.errors import BiasbandError, UsageError
 
 if TYPE_CHECKING:
@@ -77,7 +77,7 @@ def _complain(text: str) -> None:
 
 
 @command
-def review(stages: StageFiles, json: AsJson = False, boards: BoardCount = 32768, seed: Seed = 1) -> int:
+def review(stages: StageFiles, json: AsJson = False, boards: BoardCount = BOARDS, seed: Seed = 1) -> int:
     """Hold stages against what varies: parts, margins, verdict. Of several, one line each."""
     from biasband.show import export, report
     from biasband.show.output import watched
@@ -136,7 +136,7 @@ def corners(stage: StageFile, json: AsJson = False) -> int:
 
 
 @command
-def spread(stage: StageFile, json: AsJson = False, boards: BoardCount = 32768, seed: Seed = 1) -> int:
+def spread(stage: StageFile, json: AsJson = False, boards: BoardCount = BOARDS, seed: Seed = 1) -> int:
     """Sample boards, each at every point of use: mean, deviation and quantiles of each quantity."""
     from biasband.files.stage_file import read_stage
     from biasband.show import export, report

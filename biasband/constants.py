@@ -3,6 +3,9 @@
 VERSION = "0.1.0"
 """The release; the build reads it here."""
 
+BOARDS = 2**15
+"""Boards sampled unless the caller says otherwise."""
+
 MOST_BOARDS = 2**22
 """About 2 GB of samples; more boards tell nothing more."""
 

@@ -107,7 +107,7 @@ _LONGEST = 100
 
 _NUMBER = r"[+-]?(?:[0-9]+(?:\.[0-9]+)?|\.[0-9]+)(?:[eE][+-]?[0-9]{1,3})?"
 _FIGURE = re.compile(rf"(?P<number>{_NUMBER})\s*(?P<unit>\S.*)?")
-_LETTER_CODE = re.compile(r"(?P<whole>[+-]?[0-9]+)(?P<unit>[RkKmMG])(?P<part>[0-9]+)\s*(?:Ω|ohm)?")
+_LETTER_CODE = re.compile(r"(?P<whole>[+-]?[0-9]*)(?P<unit>[RkKmMG])(?P<part>[0-9]+)\s*(?:Ω|ohm)?")
 """A letter in the point's place, as on a drawing: 4k7, 0R22 (IEC 60062)."""
 
 
@@ -158,7 +158,8 @@ def _from_text(text: str, kind: Kind) -> float:
         raise _error(text, kind, "a comma: write a decimal point, and no thousands separators")
     coded = _LETTER_CODE.fullmatch(clean) if kind is Kind.RESISTANCE else None
     if coded is not None:
-        return _scaled(f"{coded['whole']}.{coded['part']}", coded["unit"], text, kind)
+        whole = coded["whole"] if coded["whole"].strip("+-") else f"{coded['whole']}0"
+        return _scaled(f"{whole}.{coded['part']}", coded["unit"], text, kind)
     figure = _FIGURE.fullmatch(clean)
     if figure is None:
         raise _error(text, kind, "not a figure")

@@ -11,6 +11,7 @@ from dataclasses import dataclass, field
 from typing import Literal
 
 from biasband.constants import ASSUMED_SATURATION_VOLTAGE, KELVIN_OFFSET, REFERENCE_TEMPERATURE
+from biasband.errors import UsageError
 
 Polarity = Literal["npn", "pnp"]
 Varies = Literal["in use", "by board"]
@@ -22,15 +23,14 @@ Distribution = Literal["uniform", "normal", "triangular"]
 class Limits:
     """A figure with its limits, in one SI unit: `low <= nominal <= high`.
 
-    `stated` is False where the file gave a single figure and no variation; `typical` is True where
-    it gave a typical value beside the limits (then half the probability lies on each side of it).
+    `stated` is False where the file gave a single figure and no variation. Half the probability lies
+    on each side of the nominal value, which is the typical one where there is one, else the mean.
     """
 
     low: float
     nominal: float
     high: float
     stated: bool = True
-    typical: bool = False
 
     @classmethod
     def exactly(cls, value: float, *, stated: bool = True) -> Limits:
@@ -52,7 +52,8 @@ class Transistor:
     """A data sheet at 25 °C: [A], [V], [V/K], [1/K], [K], [K/W], [W]; absolute values for PNP.
 
     `base_emitter_drift` None means the band-gap law. A rating that is None is not stated, and what
-    depends on it is not checked; `saturation_voltage` None means that 0.2 V is assumed.
+    depends on it is not checked; `saturation_voltage` None means that 0.2 V is assumed. Raises
+    UsageError for an early_voltage without a test_voltage.
     """
 
     gain: Limits
@@ -75,6 +76,10 @@ class Transistor:
     max_junction: float | None = None
     source: str = ""
 
+    def __post_init__(self) -> None:
+        if self.early_voltage is not None and self.test_voltage is None:
+            raise UsageError("transistor: early_voltage needs the test_voltage of the gain")
+
 
 @dataclass(frozen=True, kw_only=True)
 class IdealTransistor:
@@ -82,7 +87,8 @@ class IdealTransistor:
 
     In the library only, never in a stage file, so that published answers can be checked to the
     digit. Valid in the active region; saturation is a status, with V_CE held at
-    `saturation_voltage`. The gain and V_BE may still vary between limits.
+    `saturation_voltage`. The gain and V_BE may still vary between limits. It never heats itself;
+    `thermal_resistance` serves the power and junction checks alone.
     """
 
     gain: Limits

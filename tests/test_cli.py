@@ -64,7 +64,7 @@ def test_review_of_a_passing_stage_is_status_0():
 def test_review_of_a_failing_stage_is_status_1():
     result = run("review", FAILING, *FEW)
     assert (result.exit_code, result.stderr) == (1, "")
-    assert "FAIL: 2 requirements" in result.stdout
+    assert "FAIL: 2 of 2 requirements and 1 of 8 standing checks made fail" in result.stdout
 
 
 def test_inconclusive_review_is_status_1(stage_path):
@@ -227,7 +227,7 @@ FAULTY = {
     "supply below V_BE": (TEXT.replace('"9 V ± 10 %"', '"0.5 V ± 1 %"'), "cannot turn on"),
     "target that saturates": (TEXT.replace('"mid-swing"', '"0.1 V"'), "V_CE(sat)"),
     "emitter above supply": (TEXT.replace('"supply / 9"', '"12 V"'), "target.emitter_voltage"),
-    "2-million-ohm RC": (TEXT.replace('"3k3"', '"2M"'), "resistors.RE: would have to be"),
+    "2-million-ohm RC": (TEXT.replace('"3k3"', '"2M"'), "1 mA through RC 2 MΩ would need the collector at"),
     "below 0 K": (TEXT.replace('"-10 degC"', '"-300 degC"'), "ambient.min: below 0 K"),
     "nominal ambient outside": (TEXT.replace('"25 degC"', '"80 degC"'), "ambient: the nominal value"),
     "unknown quantity": (TEXT.replace('"collector_voltage"', '"colector_voltage"'), "unknown quantity"),

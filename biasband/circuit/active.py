@@ -21,7 +21,7 @@ RESIDUAL = 1e-9
 """[V] Both port equations hold to this where a scenario is solved."""
 
 _REVERSE_OFF = -20.0
-"""V_BC in units of V_T below which the reverse current, under 2e-9 of I_S, is nothing."""
+"""V_BC in units of V_T below which the reverse current, e⁻²⁰ or 2.1e-9 of I_S, is nothing."""
 
 _LEAST_CHANGE = 0.1
 """A Newton step leaves at least this share of the forward current, which is never negative."""

@@ -1,8 +1,8 @@
 """The operating point: junctions and network solved together, for all scenarios at once.
 
-Newton's method on (V_BE, V_BC) in chunks that stay in the cache, started from the closed form of
-the active region. An element that does not converge is NaN with a status beside it, never an
-exception.
+In chunks that stay in the cache: one equation where the transistor is active (active.py), Newton's
+method on both junction voltages where it is not (newton.py), self-heating around both (heat.py). An
+element that does not converge is NaN with a status beside it, never an exception.
 """
 
 from __future__ import annotations
@@ -78,11 +78,12 @@ def regions(
     """The Region of every scenario, shape (N,).
 
     Saturated: V_CE at or below `saturation_voltage` [V], as exactly as voltages are solved. Cut off:
-    I_C below `cut_off_current` [A].
+    I_C below `cut_off_current` [A]; what is both is called saturated.
     """
     region = np.full(point.status.shape, Region.ACTIVE, dtype=np.int8)
-    region[point.collector_emitter <= saturation_voltage + RESIDUAL] = Region.SATURATED
     region[point.collector_current < cut_off_current] = Region.CUT_OFF
+    with np.errstate(invalid="ignore"):
+        region[point.collector_emitter <= saturation_voltage + RESIDUAL] = Region.SATURATED
     region[point.status == Status.RUNAWAY] = Region.RUNAWAY
     region[point.status == Status.UNSOLVED] = Region.UNSOLVED
     return region

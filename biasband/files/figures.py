@@ -13,6 +13,7 @@ from typing import Annotated, Any, Literal
 
 from pydantic import AfterValidator, BeforeValidator
 
+from biasband.constants import HOTTEST_JUNCTION
 from biasband.errors import QuantityError
 from biasband.files.ledger import nearest, shown
 from biasband.quantity import Kind, Toleranced, format_quantity, parse, parse_toleranced
@@ -133,11 +134,16 @@ PositiveOhms = Annotated[float, figure(Kind.RESISTANCE, above=0.0)]
 OhmsFromZero = Annotated[float, figure(Kind.RESISTANCE, least=0.0)]
 TolerancedOhms = Annotated[Toleranced, _toleranced(Kind.RESISTANCE, above=0.0)]
 Temperature = Annotated[float, figure(Kind.TEMPERATURE)]
+Ambient = Annotated[float, figure(Kind.TEMPERATURE, above=150.0, below=HOTTEST_JUNCTION)]
+"""Between −123 °C and the hottest junction that the model knows."""
+
 PositiveKelvins = Annotated[float, figure(Kind.TEMPERATURE_DIFFERENCE, above=0.0)]
 KelvinsPerWatt = Annotated[float, figure(Kind.THERMAL_RESISTANCE, least=0.0)]
-VoltsPerKelvin = Annotated[float, figure(Kind.VOLTAGE_SLOPE)]
-PerKelvin = Annotated[float, figure(Kind.RELATIVE_SLOPE)]
-PerKelvinFromZero = Annotated[float, figure(Kind.RELATIVE_SLOPE, least=0.0)]
+GainDrift = Annotated[float, figure(Kind.RELATIVE_SLOPE, above=-0.05, below=0.05)]
+"""Ten times what a transistor does either way; a bare number is usually a forgotten unit."""
+
+Tempco = Annotated[float, figure(Kind.RELATIVE_SLOPE, least=0.0, below=0.01)]
+"""Below 10 000 ppm/K: no resistor drifts more, a bare number is usually a forgotten unit."""
 Share = Annotated[float, figure(Kind.RATIO, least=0.0, below=1.0)]
 ProperShare = Annotated[float, figure(Kind.RATIO, above=0.0, below=1.0)]
 PositiveNumber = Annotated[float, figure(Kind.NUMBER, above=0.0)]

@@ -141,9 +141,13 @@ def _resistor(
 
 def _check_tracking(resistor: Resistor, own: ResistorSection | None, ledger: Ledger) -> None:
     if resistor.tracking is None:
+        if resistor.group is not None and resistor.tempco > 0.0:
+            in_own = own is not None and own.group is not None
+            path: KeyPath = ("resistors", resistor.name, "group") if in_own else ("resistors", "group")
+            ledger.add(path, "a group without tracking", hint='what the members share: tracking = "30 ppm/K"')
         return
     in_own = own is not None and own.tracking is not None
-    path: KeyPath = ("resistors", resistor.name, "tracking") if in_own else ("resistors", "tracking")
+    path = ("resistors", resistor.name, "tracking") if in_own else ("resistors", "tracking")
     if resistor.group is None:
         ledger.add(path, "tracking without a group", hint='name the reel or array: group = "A"')
     if resistor.tracking > resistor.tempco:

@@ -30,7 +30,7 @@ def _drift(value: Any) -> float | Literal["bandgap"]:
     if value == "bandgap":
         return "bandgap"
     try:
-        return parse(value, Kind.VOLTAGE_SLOPE)
+        return f.within(parse(value, Kind.VOLTAGE_SLOPE), value, Kind.VOLTAGE_SLOPE, above=-0.01, below=0.01)
     except QuantityError as error:
         raise Refusal(error.problem, allowed='"bandgap", or a slope such as "-2 mV/K"') from None
 
@@ -95,9 +95,9 @@ class SupplySection(Section):
 class AmbientSection(Section):
     """[ambient]"""
 
-    min: f.Temperature | None = None
-    nominal: f.Temperature | None = None
-    max: f.Temperature | None = None
+    min: f.Ambient | None = None
+    nominal: f.Ambient | None = None
+    max: f.Ambient | None = None
 
 
 class TransistorSection(Section):
@@ -109,7 +109,7 @@ class TransistorSection(Section):
     test_current: f.PositiveAmperes
     test_voltage: f.PositiveVolts | None = None
     base_emitter_drift: Drift | None = None
-    gain_drift: f.PerKelvin | None = None
+    gain_drift: f.GainDrift | None = None
     leakage: f.AmperesFromZero | None = None
     leakage_doubling: f.PositiveKelvins | None = None
     saturation_voltage: f.VoltsFromZero | None = None
@@ -146,12 +146,12 @@ class ResistorDefaults(Section):
 
     series: Annotated[str, choice(load_all)] | None = None
     tolerance: f.Share | None = None
-    tempco: f.PerKelvinFromZero | None = None
+    tempco: f.Tempco | None = None
     life_drift: f.Share | None = None
     power_rating: f.PositiveWatts | None = None
     distribution: Annotated[Distribution, choice(lambda: get_args(Distribution))] | None = None
     group: f.Text | None = None
-    tracking: f.PerKelvinFromZero | None = None
+    tracking: f.Tempco | None = None
     derate_from: f.Temperature | None = None
     derate_to: f.Temperature | None = None
 

@@ -10,7 +10,7 @@ from functools import partial
 
 from biasband.circuit.quantities import quantity_units
 from biasband.circuit.topology import TOPOLOGIES, Node
-from biasband.constants import DEFAULT_EMITTER_VOLTAGE
+from biasband.constants import DEFAULT_EMITTER_VOLTAGE, REFERENCE_TEMPERATURE
 from biasband.files.ledger import Ledger
 from biasband.files.toml_lines import KeyPath
 from biasband.quantity import Kind, format_quantity
@@ -27,6 +27,7 @@ def note_impossibilities(stage: Stage, ledger: Ledger) -> None:
         _supply_above_base_emitter_voltage,
         _room_above_emitter,
         _collector_between_rails,
+        _resistors_stay_positive,
         _requirements_in_order,
         _derating_in_order,
     ):
@@ -162,6 +163,15 @@ def _collector_between_rails(stage: Stage, ledger: Ledger) -> None:
             f"across the transistor: {_volts(emitter)} are across the emitter resistor"
         )
         ledger.add(path, problem)
+
+
+def _resistors_stay_positive(stage: Stage, ledger: Ledger) -> None:
+    ends = (stage.ambient.low, stage.ambient.high)
+    furthest = max(ends, key=lambda ambient: abs(ambient - REFERENCE_TEMPERATURE))
+    for resistor in stage.resistors:
+        if resistor.tempco * abs(furthest - REFERENCE_TEMPERATURE) >= 1.0:
+            problem = f"takes {resistor.name} to nothing at {format_quantity(furthest, Kind.TEMPERATURE)}"
+            ledger.add(("resistors", resistor.name, "tempco"), problem)
 
 
 def _requirements_in_order(stage: Stage, ledger: Ledger) -> None:

@@ -68,7 +68,7 @@ def _supply_limits(section: SupplySection, path: KeyPath, ledger: Ledger) -> Lim
 def _between(low: float, typical: float | None, high: float, *, geometric: bool = False) -> Limits:
     """Limits with the typical value as the nominal one, else with the mean of the limits."""
     if typical is not None:
-        return Limits(low=low, nominal=typical, high=high, typical=True)
+        return Limits(low=low, nominal=typical, high=high)
     mean = math.sqrt(low * high) if geometric else (low + high) / 2
     # Rounding, and overflow of absurd limits, must not push the mean outside.
     return Limits(low=low, nominal=max(low, min(mean, high)), high=high)
@@ -90,7 +90,7 @@ def read_transistor(table: object, ledger: Ledger) -> Transistor | None:
     """Read [transistor], once the keys of the file that it names are among its own."""
     check_companions("transistor", table, ("transistor",), ledger)
     section = check_section(TransistorSection, table, ("transistor",), ledger)
-    if section is None:
+    if section is None or (section.early_voltage is not None and section.test_voltage is None):
         return None
     given = _given(section, "type", "gain", "base_emitter_voltage", "base_emitter_drift")
     if section.base_emitter_drift is not None:

@@ -1,4 +1,8 @@
-"""Standing checks: what every stage is held to in every corner, without asking."""
+"""Standing checks: what every stage is held to in every corner, without asking.
+
+They look at the operating point, ripple in the rails and capacitors open; what ripple does to the
+output through capacitors stands in the headrooms.
+"""
 
 from __future__ import annotations
 
@@ -7,6 +11,7 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
+from biasband.circuit.active import RESIDUAL
 from biasband.circuit.quantities import Quantity, vocabulary
 from biasband.circuit.reading import Reading, read
 from biasband.circuit.scenarios import Values
@@ -70,12 +75,10 @@ def _checks(stage: Stage, profile: Profile, cut_off: float) -> Iterator[Check | 
     words = vocabulary(tuple(r.name for r in stage.resistors))
     sheet = stage.transistor
     V_CE, I_C = words["collector_emitter_voltage"], words["collector_current"]
-    yield _check("saturation", "at_least", V_CE, sheet.saturation_voltage, "saturation_voltage")
+    # Above V_CE(sat) by what voltages are solved to, so that a corner on it is saturated here as there.
+    yield Check("saturation", "at_least", V_CE, lambda r: stage.saturation_voltage + RESIDUAL)
     yield Check("cut_off", "at_least", I_C, lambda r: cut_off)
-    power = _power_limit(stage, profile)
-    yield _check(
-        "transistor_power", "at_most", words["transistor_power"], sheet.max_power, "max_power", power
-    )
+    yield _power_check(stage, profile, words["transistor_power"])
     yield _check(
         "supply_voltage", "at_most", _RAIL_TO_RAIL, sheet.max_collector_emitter, "max_collector_emitter",
         lambda r, rating: profile.supply_voltage * rating,
@@ -107,17 +110,21 @@ def _check(
     return Check(name, side, value, lambda r: limit(r, rating))
 
 
-def _power_limit(stage: Stage, profile: Profile) -> LimitOf:
-    """Factor × min(P_tot, (T_j max − T_a)/R_θJA); P_tot alone where either is not stated."""
-    hottest, per_watt = stage.transistor.max_junction, stage.transistor.thermal_resistance
+def _power_check(stage: Stage, profile: Profile, value: Quantity) -> Check | NotMade:
+    """Factor × min(P_tot, (T_j max − T_a)/R_θJA); what is not stated does not limit."""
+    sheet = stage.transistor
+    hottest, per_watt, max_power = sheet.max_junction, sheet.thermal_resistance, sheet.max_power
+    if max_power is None and (hottest is None or not per_watt):
+        return NotMade("transistor_power", "transistor.max_power")
 
-    def limit(reading: Reading, max_power: float) -> Values:
+    def limit(reading: Reading) -> Values:
+        total = np.inf if max_power is None else max_power
         if hottest is None or not per_watt:
-            return profile.transistor_power * max_power
-        at_ambient = (hottest - reading.scenarios.temperature) / per_watt
-        return profile.transistor_power * np.minimum(max_power, at_ambient)
+            return profile.transistor_power * total
+        at_ambient = np.maximum(hottest - reading.scenarios.temperature, 0.0) / per_watt
+        return profile.transistor_power * np.minimum(total, at_ambient)
 
-    return limit
+    return Check("transistor_power", "at_most", value, limit)
 
 
 def _junction_check(stage: Stage, profile: Profile, value: Quantity) -> Check | NotMade:
@@ -169,11 +176,11 @@ def _check_margin(check: Check, reading: Reading, row: int, evidence: Evidence) 
     count = reading.point.status.shape
     value = np.broadcast_to(check.value.read(reading), count)
     limit = np.broadcast_to(check.limit(reading), count)
-    slack = np.broadcast_to(check.slack.read(reading), count)
     here = min(row, count[0] - 1)
+    distance = float(value[0] - limit[here]) * (1.0 if check.side == "at_least" else -1.0)
     return Margin(
         id="", quantity=check.name, kind=check.value.kind, limit=float(limit[here]), side=check.side,
         judged_by="corners", nominal=float(value[0]), corners=float(value[here]), margin=extreme.value,
-        margin_share=share(extreme.value, float(slack[0])), passes_at_corners=extreme.value >= 0.0,
+        margin_share=share(extreme.value, distance), passes_at_corners=extreme.value >= 0.0,
         worst=replace(extreme, value=float(value[here])), causes=evidence.causes[name].low, standing=True,
     )  # fmt: skip

@@ -66,6 +66,11 @@ class Margin:
         return "pass" if self.margin >= 0.0 else "fail"
 
     @property
+    def judged(self) -> float:
+        """The value that is judged [SI]: the limit and the margin together."""
+        return self.limit + (self.margin if self.side == "at_least" else -self.margin)
+
+    @property
     def main_cause(self) -> str | None:
         """The contributor with the largest share of the way to the worst corner."""
         return next(iter(self.causes), None)

@@ -105,12 +105,14 @@ def joint_yield(
 def _yield_margin(boards: NDArray[np.float64], required: float) -> float:
     """The margin of the first board that may not fail: its sign is the verdict of the yield bound.
 
-    NaN where so few boards cannot show the required yield even if none of them fails.
+    NaN where so few boards cannot show the required yield even if none of them fails, or where that
+    board was not solved.
     """
     allowed = allowed_failures(boards.size, required)
     if allowed < 0:
         return NAN
-    return float(np.sort(np.where(np.isnan(boards), -np.inf, boards))[allowed])
+    decides = float(np.sort(np.where(np.isnan(boards), -np.inf, boards))[allowed])
+    return decides if np.isfinite(decides) else NAN
 
 
 def _notes(requirement: Requirement, found: _Side, rss_outside: bool, boards: int) -> Iterator[str]:

@@ -40,8 +40,9 @@ def judge(
     doubts = [*_doubts(nominal, margins, evidence), *_unstated(stage)]
     outcome: Outcome = "fail" if failures else "inconclusive" if doubts else "pass"
     reservations = [_reservation(margin) for margin in margins if margin.only_by_method]
-    because = (*failures, *doubts, *reservations)
-    return Verdict(outcome, because, _line(outcome, stage, standing, reservations))
+    return Verdict(
+        outcome, (*failures, *doubts), _line(outcome, stage, margins, standing, reservations)
+    )
 
 
 def _failures(nominal: Region, margins: Sequence[Margin], evidence: Evidence) -> Iterator[str]:
@@ -54,13 +55,14 @@ def _failures(nominal: Region, margins: Sequence[Margin], evidence: Evidence) ->
     if hot_boards and not hot:
         yield f"thermal runaway in {hot_boards} of {_scenarios(evidence)} sampled scenarios"
     for margin in margins:
-        if margin.verdict == "fail" and not _rss_unknown(margin):
+        if margin.verdict == "fail" and not _unknown(margin):
             yield f"{label(margin)}: {_how_it_fails(margin)}"
 
 
-def _rss_unknown(margin: Margin) -> bool:
-    """Whether a row is to be judged by an RSS that a scenario on the way left unsolved."""
-    return margin.judged_by == "rss" and isnan(margin.rss)
+def _unknown(margin: Margin) -> bool:
+    """Whether a row lacks the value that it is to be judged by: not solved, or not computable."""
+    needed = {"corners": margin.corners, "rss": margin.rss, "yield": margin.nominal}
+    return isnan(margin.nominal) or isnan(needed[margin.judged_by])
 
 
 def label(margin: Margin) -> str:
@@ -71,8 +73,6 @@ def label(margin: Margin) -> str:
 
 
 def _how_it_fails(margin: Margin) -> str:
-    if isnan(margin.nominal):
-        return "there is no nominal value to hold against it"
     if margin.margin_share is None:
         return "the nominal value is itself on or beyond the limit"
     return "fails by yield" if margin.judged_by == "yield" else f"fails by {margin.judged_by}"
@@ -92,8 +92,8 @@ def _doubts(nominal: Region, margins: Sequence[Margin], evidence: Evidence) -> I
     if sampled:
         yield f"{sampled} of {_scenarios(evidence)} sampled scenarios were not solved"
     for margin in margins:
-        if _rss_unknown(margin):
-            yield f"{label(margin)}: a scenario of its RSS was not solved"
+        if _unknown(margin):
+            yield f"{label(margin)}: could not be judged, a value that it needs is not there"
 
 
 def _scenarios(evidence: Evidence) -> int:
@@ -110,18 +110,29 @@ def _unstated(stage: Stage) -> Iterator[str]:
     missing += [f"tolerance of {r.name}" for r in stage.resistors if not r.tolerance_stated]
     missing += ["gain limits"] if not stage.transistor.gain.stated else []
     if missing:
-        yield f"not stated, so taken as no variation (write \"0 %\" if it is zero): {', '.join(missing)}"
+        how = 'write zero as "0 %", or as min = max'
+        yield f"not stated, so taken as no variation ({how}): {', '.join(missing)}"
 
 
-def _line(outcome: Outcome, stage: Stage, standing: Standing, reservations: Sequence[str]) -> str:
+def _line(
+    outcome: Outcome, stage: Stage, margins: Sequence[Margin], standing: Standing, reservations: Sequence[str]
+) -> str:
     made, total = len(standing.made), len(standing.made) + len(standing.not_made)
-    if stage.requirements:
-        count = len(stage.requirements)
-        rests_on = f"{count} requirement{'s' if count > 1 else ''}, {made} of {total} standing checks"
-    else:
-        rests_on = f"standing checks only, {made} of {total}"
-    text = f"{outcome.upper()}: {rests_on}"
+    asked = len(stage.requirements)
+    failing = [margin for margin in margins if margin.verdict == "fail"]
+    text = f"{_counted(asked, 'requirement')}, {made} of {total} standing checks"
+    if not asked:
+        text = f"standing checks only, {made} of {total}"
+    if outcome == "fail" and failing:
+        unmet = len({margin.id for margin in failing if not margin.standing})
+        broken = sum(margin.standing for margin in failing)
+        text = f"{unmet} of {_counted(asked, 'requirement')} and {broken} of {made} standing checks made fail"
+    text = f"{outcome.upper()}: {text}"
     if standing.not_made:
         keys = dict.fromkeys(check.missing for check in standing.not_made)
         text += f"; not checked, no limit given: {', '.join(keys)}"
     return "; ".join([text, *reservations])
+
+
+def _counted(count: int, what: str) -> str:
+    return f"{count} {what}" if count == 1 else f"{count} {what}s"

@@ -20,7 +20,7 @@ DESIGN_COLUMNS = (
     Column("hand"),
     Column("refined"),
     Column("value"),
-    Column("off refined"),
+    Column("off ideal"),
     Column("code", "left"),
     Column("series", "left", spare=1),
 )

@@ -72,7 +72,7 @@ def places(extreme: Extreme) -> str:
 def worst(row: Margin) -> str:
     """Where a row's worst corner is and what causes it, the main contributors only."""
     if math.isnan(row.worst.value):
-        return "worst: not solved"
+        return "worst: no corner has a value here"
     named = [name for name, share in row.causes.items() if share > MATTERS][:MOST_NAMED]
     if not named:
         return "worst: as nominal, nothing that varies moves it towards this limit"
@@ -99,8 +99,10 @@ def head(stage: Stage) -> tuple[str, ...]:
     document = [text for text in (stage.document, revision, designer) if text]
     label = stage.transistor.label if isinstance(stage.transistor, Transistor) else ""
     kind = [stage.topology, stage.polarity.upper(), *([label] if label else [])]
+    source = stage.transistor.source if isinstance(stage.transistor, Transistor) else ""
     files = [f"file {file.path}, SHA-256 {file.sha256[:12]}" for file in stage.files]
-    return (*([", ".join(document)] if document else []), ", ".join(kind), *files)
+    origin = [f"transistor data: {source}"] if source else []
+    return (*([", ".join(document)] if document else []), ", ".join(kind), *origin, *files)
 
 
 def sampled(boards: Boards) -> str:

@@ -13,6 +13,7 @@ from biasband.show.cautions import CAUTIONS
 from biasband.show.prose import frozen_or_chosen, head, joint_yield, rss_assumption, sampled
 from biasband.show.review_tables import margin_table, nominal_table, parts_table, summary_table
 from biasband.show.summary import Attempt
+from biasband.show.surroundings import surroundings
 from biasband.show.table import OUTCOME_TONES, Passage, Report
 from biasband.signoff.study import Review
 from biasband.values.choosing import Design
@@ -26,6 +27,7 @@ def review_report(review: Review) -> Report:
     """A review as a reviewer reads it, top to bottom, in a minute."""
     return (
         _header(review.design, sampled(review.evidence.boards), PROFILES[review.stage.derating].sentence),
+        Passage("Held against", surroundings(review.stage, review.nominal)),
         parts_table(review),
         nominal_table(review),
         margin_table(review),

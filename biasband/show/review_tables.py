@@ -81,7 +81,7 @@ def _part_row(part: PartChoice, resistor: Resistor, power: float) -> Row:
             code(part.value),
             resistor.series if part.chosen else "",
             percent(resistor.tolerance, digits=4) if resistor.tolerance_stated else "not stated",
-            figure(resistor.tempco, Kind.RELATIVE_SLOPE),
+            figure(resistor.tempco, Kind.RELATIVE_SLOPE) if resistor.tempco else "0 ppm/K",
             "given" if part.ideal is None else computed(part.ideal.ohms, Kind.RESISTANCE),
             computed(power, Kind.POWER),
             "not stated" if rating is None else figure(rating, Kind.POWER),
@@ -145,13 +145,13 @@ def share_left(row: Margin) -> str:
 
 
 def _below(row: Margin) -> Iterator[str]:
-    yield worst(row)
+    if row.judged_by != "corners":
+        yield f"judged by {row.judged_by}{_required(row)}: {computed(row.judged, row.kind)}"
     if row.only_by_method:
         yield f"pass by {row.judged_by}, FAILS AT CORNERS"
+    yield worst(row)
     if row.margin_share is None and not math.isnan(row.nominal):
         yield "the nominal value is itself on or beyond the limit"
-    if row.judged_by != "corners":
-        yield f"judged by {row.judged_by}" + _required(row)
     if row.notes:
         yield "; ".join(row.notes)
     if row.reason:

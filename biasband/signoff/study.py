@@ -14,7 +14,7 @@ import numpy as np
 from biasband.circuit.operating_point import Region
 from biasband.circuit.quantities import Quantity, vocabulary
 from biasband.circuit.reading import Reading, read
-from biasband.constants import MOST_BOARDS
+from biasband.constants import BOARDS, MOST_BOARDS
 from biasband.errors import UsageError
 from biasband.files.series_files import load_all, load_series
 from biasband.margins.checks import Standing, check_margins, standing_checks
@@ -35,9 +35,6 @@ from biasband.variation.points_of_use import PointOfUse, points_of_use
 
 if TYPE_CHECKING:
     import pandas as pd
-
-BOARDS = 32768
-"""Boards sampled unless the caller says otherwise."""
 
 _INTERIOR_DIGITS = 2
 """Interior points of use closer than this in every coordinate are one point."""
@@ -155,7 +152,10 @@ def _region(stage: Stage, reading: Reading) -> Region:
 
 
 def corners(stage: Stage) -> CornerStudy:
-    """Evaluate every quantity at all corners of a stage, its missing values designed first."""
+    """Evaluate every quantity at all corners of a stage, its missing values designed first.
+
+    Raises PhysicallyImpossible where the target cannot be met.
+    """
     chosen = design(stage)
     stage = chosen.stage
     return CornerStudy(chosen, cornering.corners(stage, words(stage), cut_off=cut_off_current(stage)))
@@ -164,7 +164,9 @@ def corners(stage: Stage) -> CornerStudy:
 def spread(stage: Stage, *, boards: int = BOARDS, seed: int = 1) -> SpreadStudy:
     """Sample boards of a stage, its missing values designed first, at every point of use.
 
-    Raises UsageError for a number of boards or a seed that cannot be sampled with.
+    The points of use are nominal use and the limits; a review adds those where its corner search
+    found an extreme inside. Raises UsageError for a number of boards or a seed that cannot be sampled
+    with, PhysicallyImpossible where the target cannot be met.
     """
     check_sampling(boards, seed)
     chosen = design(stage)
@@ -174,7 +176,13 @@ def spread(stage: Stage, *, boards: int = BOARDS, seed: int = 1) -> SpreadStudy:
 
 
 def check_sampling(boards: int, seed: int) -> None:
-    """Refuse numbers of boards and seeds that cannot be sampled with."""
+    """Refuse numbers of boards and seeds that cannot be sampled with.
+
+    Raises UsageError for anything but a whole number of boards from 1 to 2^22 and a seed from 0.
+    """
+    for name, number in (("boards", boards), ("seed", seed)):
+        if not isinstance(number, int) or isinstance(number, bool):
+            raise UsageError(f"{name}: a whole number; read {number!r}")
     if not 1 <= boards <= MOST_BOARDS:
         raise UsageError(f"boards: from 1 to {MOST_BOARDS}; read {boards}")
     if seed < 0:
@@ -184,7 +192,8 @@ def check_sampling(boards: int, seed: int) -> None:
 def review(stage: Stage, *, boards: int = BOARDS, seed: int = 1) -> Review:
     """Review a stage: design what is missing, run the three methods, judge.
 
-    Raises UsageError for fewer than one board, PhysicallyImpossible where the target cannot be met.
+    Raises UsageError for a number of boards or a seed that cannot be sampled with, PhysicallyImpossible
+    where the target cannot be met.
     """
     check_sampling(boards, seed)
     chosen = design(stage)
@@ -229,11 +238,9 @@ def _interior_points(
     """The in-use coordinates of interior extremes: points that boards must be solved at too."""
     inside = {axis.name for axis in use_axes(stage)}
     extremes = [extreme for name in measures for extreme in _ends(found.ranges[name]) if extreme.interior]
-    places = [
-        {name: round(x, _INTERIOR_DIGITS) for name, x in extreme.coordinates.items() if name in inside}
-        for extreme in extremes
-    ]
-    unique = {tuple(sorted(p.items())): p for p in places if any(abs(x) < 1.0 for x in p.values())}
+    places = [{name: x for name, x in e.coordinates.items() if name in inside} for e in extremes]
+    within = [place for place in places if any(abs(x) < 1.0 for x in place.values())]
+    unique = {tuple(round(x, _INTERIOR_DIGITS) for x in place.values()): place for place in within}
     return tuple(PointOfUse(place) for place in unique.values())
 
 

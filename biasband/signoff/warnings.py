@@ -11,6 +11,8 @@ from biasband.stage import Stage, Transistor
 from biasband.values.choosing import Design
 
 DECADE = 10.0
+"""Nominal currents this many times above or below the test current are far from it (common practice)."""
+
 HIGH_VOLTAGE = 60.0
 """[V] DC above which a supply can hurt (common practice; local codes decide)."""
 

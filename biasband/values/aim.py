@@ -49,6 +49,11 @@ class Aim:
     need: Need
     missed: tuple[Miss, ...] = ()
 
+    @property
+    def V_CE(self) -> float:
+        """V_CE [V]."""
+        return self.volts[Node.COLLECTOR] - self.volts[Node.EMITTER]
+
 
 @dataclass(frozen=True)
 class _Equation:
@@ -99,7 +104,7 @@ class _Equations:
         """Pass after pass until V_CE, and with it V_BE and I_B, stands still."""
         V_CE = 0.5 * (self.span[Node.COLLECTOR_RAIL] - self.span[Node.EMITTER_RAIL])
         for _ in range(_PASSES):
-            need = device(I_C, V_CE)
+            need = device(I_C, max(V_CE, self.stage.saturation_voltage))
             V_E, V_C = _voltages([*self._given(need), *self._wished(need)])
             before, V_CE = V_CE, V_C - V_E
             if abs(V_CE - before) < 1e-12:

@@ -16,9 +16,6 @@ from biasband.values.aim import Miss
 from biasband.values.device import hand, refined
 from biasband.values.ideal import Ideal, Step, ideal
 
-SNAPPING = 0.1
-"""A target that frozen values miss by less than this share was missed by snapping."""
-
 
 @dataclass(frozen=True, kw_only=True)
 class PartChoice:
@@ -110,16 +107,15 @@ def _snapped(
 
 
 def _frozen_away(stage: Stage, fixed: Mapping[str, float]) -> Iterator[str]:
-    """Where a stage whose values are all given misses its target by more than snapping explains."""
+    """By how much a stage whose values are all given misses its target."""
     if stage.target is None:
         return
     try:
         exact = ideal(stage, stage.target, fixed, refined(stage))
     except PhysicallyImpossible:
-        return  # no active point: the review says what region the stage stands in
-    for miss in exact.aim.missed:
-        if abs(miss.reached - miss.wished) > SNAPPING * abs(miss.wished):
-            yield from _missed((miss,), fixed)
+        yield "the target cannot be met near the values given: they leave the transistor no such point"
+        return
+    yield from _missed(exact.aim.missed, fixed)
 
 
 def _missed(misses: tuple[Miss, ...], fixed: Mapping[str, float]) -> Iterator[str]:

@@ -15,8 +15,9 @@ from biasband.circuit.network import sign, total
 from biasband.circuit.reading import wiring_of
 from biasband.circuit.topology import TERMINALS, Node, Wire, Wiring
 from biasband.errors import Fault, PhysicallyImpossible
+from biasband.quantity import Kind, format_quantity
 from biasband.stage import Stage, Target
-from biasband.values.aim import STIFF_BASE, Aim, aim, draw, fed_from_ground, wires_at
+from biasband.values.aim import MET, STIFF_BASE, Aim, aim, draw, fed_from_ground, wires_at
 from biasband.values.device import Device
 
 
@@ -52,7 +53,8 @@ class Ideal:
 def ideal(stage: Stage, target: Target, fixed: Mapping[str, float], device: Device) -> Ideal:
     """Design the resistors that are not fixed [Ω].
 
-    Raises PhysicallyImpossible where one of them would have to be zero or negative.
+    Raises PhysicallyImpossible where the fixed ones leave no V_CE, or where a free one would have to
+    be zero or negative.
     """
     try:
         aimed = aim(stage, target, fixed, device)
@@ -60,6 +62,8 @@ def ideal(stage: Stage, target: Target, fixed: Mapping[str, float], device: Devi
         held = ", ".join(fixed) or "the target"
         problem = f"no collector current satisfies {held} at this supply"
         raise PhysicallyImpossible((Fault(_file(stage), None, "resistors", problem),)) from None
+    if not _between_rails(aimed) or not aimed.V_CE > stage.saturation_voltage:
+        raise PhysicallyImpossible((_no_room(stage, fixed, aimed),))
     steps = {step.resistor: step for step in _Walk(stage, target, fixed, aimed).steps()}
     bad = [step for step in steps.values() if not step.ohms > 0.0]
     if bad:
@@ -67,9 +71,35 @@ def ideal(stage: Stage, target: Target, fixed: Mapping[str, float], device: Devi
     return Ideal(steps, aimed)
 
 
+def _no_room(stage: Stage, fixed: Mapping[str, float], aimed: Aim) -> Fault:
+    current = format_quantity(aimed.need.I_C, Kind.CURRENT)
+    held = ", ".join(f"{name} {format_quantity(ohms, Kind.RESISTANCE)}" for name, ohms in fixed.items())
+    real = sign(stage.polarity)
+    nodes = (Node.COLLECTOR, Node.EMITTER, Node.COLLECTOR_RAIL, Node.EMITTER_RAIL)
+    collector, emitter, upper, lower = (_volts(real * aimed.volts[node]) for node in nodes)
+    problem = (
+        f"{current} through {held or 'this stage'} would need the collector at {collector} and the emitter "
+        f"at {emitter}: not between the rails, {lower} and {upper}, with more than V_CE(sat), "
+        f"{_volts(stage.saturation_voltage)}, between them"
+    )
+    hint = "lower the current or the resistors that carry it, or raise the supply"
+    return Fault(_file(stage), None, "target.collector_current", problem, hint=hint)
+
+
+def _between_rails(aimed: Aim) -> bool:
+    lower, upper = aimed.volts[Node.EMITTER_RAIL], aimed.volts[Node.COLLECTOR_RAIL]
+    places = (aimed.volts[Node.EMITTER], aimed.volts[Node.COLLECTOR])
+    return all(lower - MET <= volts <= upper + MET for volts in places)
+
+
+def _volts(volts: float) -> str:
+    return format_quantity(volts, Kind.VOLTAGE, digits=3)
+
+
 def _negative(stage: Stage, step: Step) -> Fault:
-    ends = f"{step.high_node} at {step.high:.3g} V, {step.low_node} at {step.low:.3g} V"
-    problem = f"would have to be {step.ohms:.4g} ohm: {ends}, {step.current:.3g} A through it"
+    ends = f"{step.high_node} at {_volts(step.high)}, {step.low_node} at {_volts(step.low)}"
+    ohms, current = format_quantity(step.ohms, Kind.RESISTANCE), format_quantity(step.current, Kind.CURRENT)
+    problem = f"would have to be {ohms}: {ends}, {current} through it"
     key = f"resistors.{step.resistor}"
     return Fault(_file(stage), None, key, problem, hint="move the target or the fixed values")
 

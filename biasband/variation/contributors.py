@@ -15,8 +15,9 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from biasband.circuit.scenarios import Scenarios, Values
+from biasband.circuit.scenarios import Array, Scenarios, Values
 from biasband.constants import REFERENCE_TEMPERATURE
+from biasband.errors import UsageError
 from biasband.stage import Limits, Resistor, Stage, Supply
 
 GAIN, BASE_EMITTER, LEAKAGE = "gain", "base_emitter_voltage", "leakage"
@@ -63,6 +64,11 @@ def use_axes(stage: Stage) -> tuple[Axis, ...]:
     names += [name for name, rail in _supplies(stage) if rail.varies == "in use"]
     names += [RIPPLE] if stage.supply.ripple_peak > 0.0 else []
     return tuple(Axis(name, in_use=True) for name in names)
+
+
+def columns(box: tuple[Axis, ...], points: Array) -> dict[str, Array]:
+    """Points of the box, shape (M, K), as coordinates by name."""
+    return {axis.name: points[:, k] for k, axis in enumerate(box)}
 
 
 def group_axis(group: str) -> str:
@@ -116,7 +122,8 @@ def realise(stage: Stage, x: Coordinates) -> Scenarios:
     """The scenarios at these coordinates.
 
     A resistor is `R·(1 + t·x_t)·(1 + d·x_d)·(1 + (own·x_c + common·x_g)·(T_a − T0))`; by its own name,
-    `|T_a − T0|`, so that its low limit is R·(1−t)(1−d)(1−c·|ΔT|).
+    `|T_a − T0|`, so that its low limit is R·(1−t)(1−d)(1−c·|ΔT|). Raises UsageError where a resistor
+    has no value yet.
     """
     transistor = stage.transistor
     temperature = _between(stage.ambient, x.get(TEMPERATURE, 0.0))
@@ -137,7 +144,7 @@ def realise(stage: Stage, x: Coordinates) -> Scenarios:
 def _resistance(resistor: Resistor, x: Coordinates, rise: Values) -> Values:
     """A resistor [Ω] after tolerance, life drift and tempco; `value` must be chosen by now."""
     if resistor.value is None:
-        raise ValueError(f"{resistor.name} has no value yet: design the stage first")
+        raise UsageError(f"{resistor.name} has no value yet: design the stage first")
     tempco = tempcos(resistor)
     limit = x.get(resistor.name, 0.0)
     heat = _tempco_term(resistor.name, tempco.own, x, rise)

@@ -16,7 +16,7 @@ import numpy as np
 from biasband.circuit.operating_point import Region
 from biasband.circuit.scenarios import Array
 from biasband.stage import Stage
-from biasband.variation.contributors import NEGATIVE, RIPPLE, Axis, axes, realise
+from biasband.variation.contributors import NEGATIVE, RIPPLE, Axis, axes, columns, realise
 from biasband.variation.evaluation import Measures, Outcome, evaluate
 from biasband.variation.interior import Climbs, search
 from biasband.variation.polish import polish
@@ -69,9 +69,10 @@ def corners(stage: Stage, measures: Measures, *, cut_off: float) -> Corners:
     box = axes(stage)
     vertices = _vertices(box)
     points = np.vstack([vertices, [[_middle(axis) for axis in box]]]) if box else vertices
-    outcome = evaluate(stage, _columns(box, points), measures, cut_off=cut_off)
+    outcome = evaluate(stage, columns(box, points), measures, cut_off=cut_off)
     found = search(stage, box, _starts(box, points, measures, outcome), measures, cut_off=cut_off)
     found = polish(stage, box, found, measures, cut_off=cut_off)
+    found = _shared(found, evaluate(stage, columns(box, found.point), measures, cut_off=cut_off), measures)
     regions = outcome.region[: len(vertices)]
     present = [Region(code) for code in np.unique(regions)]
     return Corners(
@@ -102,10 +103,6 @@ def _middle(axis: Axis) -> float:
     return -1.0 if axis.name == RIPPLE else axis.nominal
 
 
-def _columns(box: tuple[Axis, ...], points: Array) -> dict[str, Array]:
-    return {axis.name: points[:, k] for k, axis in enumerate(box)}
-
-
 def _point(box: tuple[Axis, ...], row: Array) -> dict[str, float]:
     return {axis.name: float(value) for axis, value in zip(box, row, strict=True)}
 
@@ -134,6 +131,26 @@ def _best_vertices(box: tuple[Axis, ...], points: Array, scored: Array) -> list[
         for side in (-1.0, 1.0)
     }
     return [best, *sorted(others - {best})]
+
+
+def _shared(found: Climbs, outcome: Outcome, measures: Measures) -> Climbs:
+    """The climbs, and for each measure either way the best of all points that others climbed to."""
+    rows, measure, sign, score = [], [], [], []
+    for k, name in enumerate(measures):
+        for side, values in ((-1.0, outcome.low[name]), (1.0, outcome.high[name])):
+            scored = np.where(np.isnan(values), -np.inf, side * values)
+            best = int(np.argmax(scored))
+            rows.append(best)
+            measure.append(k)
+            sign.append(side)
+            score.append(scored[best])
+    more = Climbs(np.array(measure), np.array(sign), found.point[rows], np.array(score))
+    return Climbs(
+        np.append(found.measure, more.measure),
+        np.append(found.sign, more.sign),
+        np.vstack([found.point, more.point]),
+        np.append(found.score, more.score),
+    )
 
 
 def _ranges(stage: Stage, box: tuple[Axis, ...], measures: Measures, found: Climbs) -> dict[str, Range]:

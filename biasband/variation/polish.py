@@ -3,7 +3,7 @@
 Two kinds stall: a long curved crest (power against gain and temperature), and a ridge where the
 least of several smooth pieces is greatest (a symmetric swing where up equals down). Both are
 "maximise t with every piece ≥ t", smooth again, which a library's sequential quadratic programming
-(scipy.optimize, SLSQP) solves from where the compass search stopped.
+(scipy.optimize, SLSQP; Kraft, DFVLR-FB 88-28, 1988) solves from where the compass search stopped.
 """
 
 from __future__ import annotations
@@ -19,7 +19,7 @@ from biasband.circuit.quantities import Pieces, Quantity
 from biasband.circuit.reading import read
 from biasband.circuit.scenarios import Array
 from biasband.stage import Stage
-from biasband.variation.contributors import RIPPLE, Axis, realise
+from biasband.variation.contributors import RIPPLE, Axis, columns, realise
 from biasband.variation.evaluation import Measures, evaluate
 from biasband.variation.interior import Climbs
 
@@ -27,7 +27,7 @@ _STARTS = 2
 """So many of a measure's best climbs are polished."""
 
 _DIFFERENCE = 1e-6
-"""Step of the slopes, in coordinates: the square root of rounding, near enough."""
+"""Step of the slopes, in coordinates: far above the 1e-9 V that points are solved to."""
 
 _SHORT_WAY, _WORTHWHILE = 0.02, 1e-6
 """A climb goes on where so short a way, in coordinates, may gain this share of the height."""
@@ -74,19 +74,15 @@ def _heights(
 
     def on_ridge(points: Array) -> Array:
         with np.errstate(all="ignore"):
-            reading = read(stage, realise(stage, _columns(box, points)))
+            reading = read(stage, realise(stage, columns(box, points)))
             assert isinstance(pieces, Pieces)
             return sign * np.stack([np.broadcast_to(p, len(points)) for p in pieces.read(reading)], axis=1)
 
     def alone(points: Array) -> Array:
-        outcome = evaluate(stage, _columns(box, points), {name: measure}, cut_off=cut_off)
+        outcome = evaluate(stage, columns(box, points), {name: measure}, cut_off=cut_off)
         return sign * (outcome.low if sign < 0.0 else outcome.high)[name][:, None]
 
     return on_ridge if _on_ridge(measure, sign) else alone
-
-
-def _columns(box: tuple[Axis, ...], points: Array) -> dict[str, Array]:
-    return {axis.name: points[:, k] for k, axis in enumerate(box)}
 
 
 def _rises(heights: Heights, box: tuple[Axis, ...], start: Array) -> bool:

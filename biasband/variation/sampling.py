@@ -154,7 +154,7 @@ def sample(
             outcome = evaluate(stage, {**drawn, **point.coordinates}, measures, cut_off=cut_off)
             regions += np.bincount(outcome.region, minlength=len(Region))
             _gather(table, rows, outcome, first=count == 0)
-    spread = {name: Spread(*(Sample(row) for row in rows_of)) for name, rows_of in table.items()}
+    spread = {name: Spread(*(Sample(row) for row in kept)) for name, kept in table.items()}
     counted = {region: int(regions[region]) for region in Region if regions[region]}
     return Boards(spread, boards, seed, len(points), counted)
 

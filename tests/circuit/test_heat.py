@@ -128,3 +128,69 @@ def test_power_slope_is_the_finite_difference_of_the_scalar_twin(case: Case) -> 
     # A central difference over 0.02 K: curvature (1e-6 of the slope's scale) and rounding of the power.
     scale = abs(solver.at(T).power)
     assert slope == pytest.approx(expected, rel=1e-4, abs=1e-6 * scale + 1e-12)
+
+
+SHALLOW = powered(31.25, 2796138.734430808, 560.0, 376.0)
+"""Its gap R·P − (T_j − T_a) dips below zero near 349 K, rises again, and falls for good in saturation."""
+
+
+def gap(case: Case, T: float) -> float:
+    """T_a + R_θ·P(T) − T [K] by the scalar twin."""
+    return case.temperature + (case.transistor.thermal_resistance or 0.0) * Solver(case).at(T).power - T
+
+
+def test_fixed_point_in_a_shallow_dip_between_two_steps_of_the_climb_is_found() -> None:
+    found = warmed(SHALLOW, step=0.1)
+    assert found.point is not None
+    # By the twin G stays below one up to the dip, which is shallower than 50 mK and less than 2.5 K wide;
+    # a climb to 250 °C in 32 steps strides 7 K over it.
+    assert found.worst_gain < 1.0
+    assert -0.05 < gap(SHALLOW, found.point.T_j + 0.2) < 0.0 < gap(SHALLOW, found.point.T_j + 2.5)
+    point = SHALLOW.reading().point
+    assert point.status[0] == Status.SOLVED
+    # Settled to 1e-6 K of the gap, which 1 − G = 0.06 makes 2e-5 K of the temperature.
+    assert point.junction_temperature[0] == pytest.approx(found.point.T_j, abs=2e-5)
+
+
+def test_gain_above_one_on_a_short_way_into_saturation_is_runaway() -> None:
+    case = Case(
+        topology="base-resistor",
+        resistances={"RB": 1.8e6, "RC": 182.0},
+        supply=11.15,
+        temperature=357.0,
+        leakage=0.293e-6,
+        transistor=real(gain=564.0, thermal_resistance=250.8),
+    )
+    found = warmed(case, step=0.25)
+    assert found.point is not None
+    assert found.worst_gain > 1.1
+    # The first step is no long one, and in saturation the power is less than at ambient: G is negative on
+    # average and at the hot end, and small as the slope of that first step. Only that it falls tells.
+    assert 18.0 < found.point.T_j - case.temperature < gap(case, case.temperature) < 35.0
+    assert case.reading().point.status[0] == Status.RUNAWAY
+    assert np.isnan(case.reading().point.junction_temperature[0])
+
+
+def test_gain_above_one_on_a_long_way_is_runaway_though_it_is_negative_at_both_ends() -> None:
+    case = powered(30.0, 100074.66886630584, 10.0, 380.0)
+    found = warmed(case, step=2.0)
+    assert found.point is not None
+    assert gap(case, case.temperature) > 40.0  # the plain first step is a long way
+    assert found.worst_gain > 1.0
+    assert case.reading().point.status[0] == Status.RUNAWAY
+
+
+def test_junction_that_takes_a_whisper_of_power_from_the_network_stays_at_ambient() -> None:
+    case = Case(
+        topology="divider",
+        resistances={"R1": 1e6, "R2": 1e3, "RC": 1e6, "RE": 10.0},
+        supply=0.2,
+        temperature=358.15,
+        leakage=1e-6,
+        transistor=real(thermal_resistance=500.0),
+    )
+    # The leakage pulls the collector below the base: V_CE·I_C is negative, by the twin 1.4 mK worth.
+    assert -2e-3 < gap(case, case.temperature) < -1e-3
+    for ambient in (358.15, 298.15):
+        here = replace(case, temperature=ambient)
+        assert here.value("junction_temperature") == ambient  # exactly: nothing cools below ambient

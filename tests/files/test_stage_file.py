@@ -97,10 +97,10 @@ def test_sample_of_the_format_is_read_to_the_stage_it_describes(read, tmp_path):
         ambient=Limits(low=263.15, nominal=298.15, high=323.15),
         transistor=Transistor(
             label="invented small-signal NPN",
-            gain=Limits(low=165.0, nominal=260.0, high=410.0, typical=True),
+            gain=Limits(low=165.0, nominal=260.0, high=410.0),
             test_current=1.5e-3,
             test_voltage=6.0,
-            base_emitter_voltage=Limits(low=0.57, nominal=0.64, high=0.72, typical=True),
+            base_emitter_voltage=Limits(low=0.57, nominal=0.64, high=0.72),
             base_emitter_drift=-2e-3,
             gain_drift=5e-3,
             leakage=40e-9,
@@ -168,7 +168,7 @@ def test_path_is_taken_as_text_too(tmp_path):
         ('voltage = "8 V"\ntolerance = "25 %"', Limits(low=6.0, nominal=8.0, high=10.0)),
         ('voltage = "8 V +/- 2 V"', Limits(low=6.0, nominal=8.0, high=10.0)),
         ('min = "8 V"\nmax = "10 V"', Limits(low=8.0, nominal=9.0, high=10.0)),
-        ('min = 8\nnominal = 8.5\nmax = "10 V"', Limits(low=8.0, nominal=8.5, high=10.0, typical=True)),
+        ('min = 8\nnominal = 8.5\nmax = "10 V"', Limits(low=8.0, nominal=8.5, high=10.0)),
     ],
 )
 def test_supply_is_stated_only_where_its_variation_is_given(read, written, limits):
@@ -215,7 +215,6 @@ def test_gain_without_typical_value_has_the_geometric_mean(read, written, limits
 def test_base_emitter_voltage_without_typical_value_has_the_arithmetic_mean(read):
     voltage = read(changed((', typ = "0.64 V"', ""))).transistor.base_emitter_voltage
     assert voltage.nominal == (0.57 + 0.72) / 2
-    assert not voltage.typical
 
 
 def test_bandgap_drift_is_none(read):
@@ -713,3 +712,36 @@ def test_sample_with_values_changed_is_a_stage_or_an_error_of_ours(read, numbers
         if value or number not in numbers
     ]
     _is_stage_or_error(read, "\n".join(lines))
+
+
+# --- figures at the end of what floating point holds, and a stage without an emitter resistor -----
+
+
+@pytest.mark.parametrize(
+    ("low", "high", "nominal"),
+    [
+        (1e200, 1e201, 1e201),  # the product of the limits overflows
+        (1e-201, 1e-200, 1e-201),  # and here it vanishes
+    ],
+)
+def test_mean_of_absurd_limits_stays_between_them(read, low, high, nominal):
+    written = f"gain = {{ min = {low}, max = {high} }}"
+    text = changed(("gain = { min = 165, typ = 260, max = 410 }", written))
+    assert read(text).transistor.gain == Limits(low=low, nominal=nominal, high=high)
+
+
+@pytest.mark.parametrize("topology", ["base-resistor", "collector-feedback"])
+def test_one_volt_rule_takes_no_room_where_there_is_no_emitter_resistor(read, faults, topology):
+    text = changed(
+        ('topology = "divider"', f'topology = "{topology}"'),
+        ('emitter_voltage = "supply / 9"', ""),
+        ("bypassed = true", ""),
+        ('value = "3k3"', ""),
+        ('voltage = "9 V ± 10 %"', 'voltage = "1.2 V ± 10 %"'),
+    )
+    # The emitter is grounded: 1.2 V turn the transistor on (0.64 V) and leave it 0.9 V above V_CE(sat).
+    assert [r.name for r in read(text).resistors] == ["RB", "RC"]
+    # With the resistor the rule holds, and 1 V + 0.3 V are more than there is.
+    with_emitter = text.replace("[[require]]\nid", "[resistors.RE]\n[[require]]\nid", 1)
+    found = faults(with_emitter, PhysicallyImpossible)
+    assert "the 1 V rule holds" in found["target.emitter_voltage"].problem

@@ -160,7 +160,7 @@ def test_pass_by_yield_that_fails_at_corners_is_repeated_in_the_line():
     assert found.outcome == "pass"
     # formats.md, word for word.
     assert "pass by yield, FAILS AT CORNERS" in found.line
-    assert any("pass by yield, FAILS AT CORNERS" in reason for reason in found.because)
+    assert found.because == ()
 
 
 def test_row_that_fails_at_nominal_says_so():
@@ -191,3 +191,73 @@ def test_line_without_requirements_says_standing_checks_only():
 def test_line_starts_with_the_outcome(found, word):
     assert verdict(found).line.startswith(f"{word}: ")
     assert verdict(GOOD, of=UNSTATED["gain"][0]).line.startswith("INCONCLUSIVE: ")
+
+
+NOWHERE = float("nan")
+
+
+@pytest.mark.parametrize("lost", [(NOWHERE, NOWHERE), (NOWHERE, 5.5)])
+def test_row_judged_by_an_rss_that_is_not_known_is_a_doubt_and_no_failure(lost):
+    found = verdict({**GOOD, "rss": lost}, asked=(requirement(at_least=3.0, judged_by="rss"),))
+    assert found.outcome == "inconclusive"
+    assert len(found.because) == 1
+    assert "R-1 collector_voltage" in found.because[0]
+    assert "fails" not in found.because[0]
+    assert found.line.startswith("INCONCLUSIVE: ")
+
+
+@pytest.mark.parametrize("method", ["corners", "yield"])
+def test_rss_that_is_not_known_is_no_matter_where_another_method_judges(method):
+    asked = (requirement(at_least=3.0, judged_by=method, yield_at_least=0.9),)
+    assert verdict({**GOOD, "rss": (NOWHERE, NOWHERE)}, asked=asked).outcome == "pass"
+
+
+def test_known_rss_that_fails_is_a_failure():
+    asked = (requirement(at_least=3.0, judged_by="rss"),)
+    found = verdict({**BAD, "rss": (2.5, 5.5)}, asked=asked)
+    assert found.outcome == "fail"
+    assert "fails by rss" in found.because[0]
+
+
+UNKNOWN = {"nominal": NOWHERE, "corners": (NOWHERE, NOWHERE), "boards": [NOWHERE] * 10}
+
+
+def test_row_without_a_nominal_value_is_a_doubt_and_no_failure():
+    found = verdict(UNKNOWN, nominal=Region.UNSOLVED)
+    assert found.outcome == "inconclusive"
+    assert any("R-1 collector_voltage" in reason for reason in found.because)
+    assert not any("fail" in reason for reason in found.because)
+
+
+def test_row_without_a_nominal_value_is_a_doubt_even_where_the_nominal_point_is_solved():
+    # A quantity may have no value at a point that is solved.
+    found = verdict(UNKNOWN)
+    assert found.outcome == "inconclusive"
+    assert len(found.because) == 1 and "R-1 collector_voltage" in found.because[0]
+
+
+def test_row_without_a_nominal_value_is_a_doubt_even_where_its_corners_hold():
+    found = verdict({**GOOD, "nominal": NOWHERE})
+    assert found.outcome == "inconclusive"
+    assert len(found.because) == 1 and "R-1 collector_voltage" in found.because[0]
+
+
+def test_row_without_a_corner_value_is_a_doubt_and_no_failure():
+    found = verdict({**GOOD, "corners": (NOWHERE, 6.0), "regions": {Region.ACTIVE: 3, Region.UNSOLVED: 1}})
+    assert found.outcome == "inconclusive"
+    assert not any("fails" in reason for reason in found.because)
+
+
+def test_row_without_a_value_does_not_hide_thermal_runaway():
+    for where in ({"nominal": Region.RUNAWAY}, {"found": {"regions": {Region.RUNAWAY: 4}}}):
+        found = verdict({**UNKNOWN, **where.get("found", {})}, nominal=where.get("nominal", Region.ACTIVE))
+        assert found.outcome == "fail"
+        assert "runaway" in found.because[0]
+
+
+def test_row_without_a_value_does_not_hide_one_that_fails():
+    asked = (requirement(at_least=3.0, judged_by="rss"), requirement(id="R-2", at_least=4.5))
+    found = verdict({**GOOD, "rss": (NOWHERE, NOWHERE)}, asked=asked)
+    assert found.outcome == "fail"
+    assert "R-2" in found.because[0] and "fails by corners" in found.because[0]
+    assert any("R-1" in reason for reason in found.because[1:])

@@ -48,7 +48,7 @@ def test_only_contributors_that_matter_are_named_and_four_at_most():
 
 
 def test_worst_that_was_not_solved_says_so():
-    assert worst(row_with({"R1": NAN}, {"R1": 1.0}, value=NAN)) == "worst: not solved"
+    assert worst(row_with({"R1": NAN}, {"R1": 1.0}, value=NAN)) == "worst: no corner has a value here"
 
 
 def test_worst_without_causes_is_nominal():

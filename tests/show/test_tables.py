@@ -76,7 +76,8 @@ def with_row(**changes):
 def test_requirement_that_fails_at_corners_only_says_both():
     table = margin_table(with_row(judged_by="yield", yield_at_least=0.9973, passes_at_corners=False))
     assert "pass by yield, FAILS AT CORNERS" in table.rows[0].below
-    assert "judged by yield, at least 99.730 %" in table.rows[0].below
+    # What decides comes first, with the value that is judged: 7 V less the margin of the row.
+    assert table.rows[0].below[0] == "judged by yield, at least 99.730 %: 6.674 V"
     assert (table.rows[0].tone, cells(table, "verdict")) == ("doubt", ["pass"])
 
 
@@ -93,7 +94,7 @@ def test_what_was_not_solved_reads_as_not_known():
     for heading in ("nominal", "corners", "RSS", "margin", "share"):
         assert cells(table, heading) == ["n/a"]
     assert cells(table, "verdict") == ["FAIL"]
-    assert table.rows[0].below[0] == "worst: not solved"
+    assert table.rows[0].below[0] == "worst: no corner has a value here"
 
 
 def test_reason_of_a_requirement_is_kept_as_written():

@@ -157,7 +157,7 @@ def test_stage_without_target_is_taken_as_it_is():
 
 def test_impossible_target_is_refused():
     of = target_stage("divider", Target(collector_current=1e-3, emitter_voltage=12.0))
-    with pytest.raises(PhysicallyImpossible, match="R1"):
+    with pytest.raises(PhysicallyImpossible, match="not between the rails"):
         choose(of, SERIES)
 
 

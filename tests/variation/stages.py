@@ -25,7 +25,7 @@ ROOM = 298.15
 
 def limits(low: float, nominal: float, high: float) -> Limits:
     """Limits with a typical value."""
-    return Limits(low=low, nominal=nominal, high=high, typical=True)
+    return Limits(low=low, nominal=nominal, high=high)
 
 
 def ideal(gain: Limits | float, base_emitter_voltage: Limits | float = 0.7, **more: Any) -> IdealTransistor:

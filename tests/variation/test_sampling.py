@@ -265,3 +265,39 @@ def test_sampling_at_nominal_use_alone_has_no_in_use_spread():
 def test_ideal_gain_without_limits_draws_nothing_for_it():
     of = stage("base-resistor", {"RB": 470e3, "RC": 2.2e3}, ideal(100.0), 18.0)
     assert "gain" not in {draw.name for draw in draws(of)}
+
+
+@pytest.mark.parametrize("ambient", [358.15, 263.15])
+def test_resistors_of_a_group_share_the_common_part_of_their_tempco(ambient):
+    # Two 10 k of one reel that nothing else varies: 100 ppm/K each, of which 30 ppm/K is their own.
+    tempco, tracking, rise, count = 100e-6, 30e-6, ambient - ROOM, 20_000
+    of = stage(
+        "base-resistor", {"RB": 10e3, "RC": 10e3}, ideal(100.0), 9.0,
+        resistor={"tempco": tempco, "group": "reel", "tracking": tracking},
+        ambient=Limits.exactly(ambient),
+    )  # fmt: skip
+    drawn = realise(of, coordinates(of, slice(0, count), seed=1)).resistances
+    shift = {name: np.asarray(drawn[name]) / 10e3 - 1.0 for name in ("RB", "RC")}
+    # By hand: shift = (t·x + (c − t)·g)·ΔT, x its own and g in common, uniform in [−1, 1]: variance 1/3.
+    own, common = tracking**2, (tempco - tracking) ** 2
+    expected = common / (common + own)  # 0.845
+    # The standard deviation of a correlation is (1 − ρ²)/√N = 0.002; five of them.
+    assert np.corrcoef(shift["RB"], shift["RC"])[0, 1] == pytest.approx(
+        expected, abs=5 * (1.0 - expected**2) / np.sqrt(count)
+    )
+    for name in ("RB", "RC"):
+        # A variance of N draws flatter than normal ones strays by less than √(2/N) of itself: 1 %; five.
+        variance = (own + common) / 3.0 * rise**2
+        assert np.var(shift[name]) == pytest.approx(variance, rel=5 * np.sqrt(2 / count))
+        assert np.abs(shift[name]).max() <= tempco * abs(rise) * (1.0 + 1e-9)  # rounding
+
+
+def test_resistors_of_two_groups_share_nothing():
+    of = stage(
+        "base-resistor", {"RB": 10e3, "RC": 10e3}, ideal(100.0), 9.0,
+        resistor={"tempco": 100e-6, "tracking": 30e-6}, ambient=Limits.exactly(358.15),
+    )  # fmt: skip
+    of = with_resistor(with_resistor(of, "RB", group="one"), "RC", group="two")
+    drawn = realise(of, coordinates(of, slice(0, 20_000), seed=1)).resistances
+    # Independent draws: 1/√N = 0.007; five of them.
+    assert abs(np.corrcoef(drawn["RB"], drawn["RC"])[0, 1]) < 5 / np.sqrt(20_000)

@@ -1,0 +1,86 @@
+"""What a stage was held against, in a few lines: the first question in a review."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+
+from biasband.quantity import Kind
+from biasband.show.table import figure, percent
+from biasband.signoff.study import Nominal
+from biasband.stage import AnyTransistor, Limits, Signal, Stage, Supply, Transistor
+
+
+def surroundings(stage: Stage, nominal: Nominal) -> tuple[str, ...]:
+    """Ambient and supplies, the transistor's limits, ageing, coupling, and the target reached."""
+    return (
+        "; ".join(_in_use(stage)),
+        "; ".join(_transistor(stage.transistor)),
+        _life_drift(stage),
+        _coupling(stage),
+        *_target(stage, nominal),
+    )
+
+
+def _span(limits: Limits, kind: Kind) -> str:
+    low, middle, high = (figure(value, kind) for value in (limits.low, limits.nominal, limits.high))
+    return middle if limits.low == limits.high else f"{low} to {high} ({middle})"
+
+
+def _in_use(stage: Stage) -> Iterator[str]:
+    yield f"ambient {_span(stage.ambient, Kind.TEMPERATURE)}"
+    yield _supply("supply", stage.supply)
+    if stage.supply.ripple_peak:
+        yield f"ripple ±{figure(stage.supply.ripple_peak, Kind.VOLTAGE)}"
+    if stage.negative_supply is not None:
+        yield _supply("negative supply", stage.negative_supply)
+
+
+def _supply(name: str, supply: Supply) -> str:
+    by_board = " by board" if supply.varies == "by board" else ""
+    return f"{name} {_span(supply.voltage, Kind.VOLTAGE)}{by_board}"
+
+
+def _transistor(transistor: AnyTransistor) -> Iterator[str]:
+    yield f"h_FE {_span(transistor.gain, Kind.NUMBER)}"
+    yield f"V_BE {_span(transistor.base_emitter_voltage, Kind.VOLTAGE)}"
+    if not isinstance(transistor, Transistor):
+        return
+    drift = transistor.base_emitter_drift
+    at_current = f"both at {figure(transistor.test_current, Kind.CURRENT)} and 25 °C"
+    slope = "by the band-gap law" if drift is None else figure(drift, Kind.VOLTAGE_SLOPE)
+    yield f"{at_current}, V_BE drifting {slope}, h_FE {figure(transistor.gain_drift, Kind.RELATIVE_SLOPE)}"
+    yield f"I_CBO up to {figure(transistor.leakage, Kind.CURRENT)} at 25 °C"
+
+
+def _life_drift(stage: Stage) -> str:
+    drifts = {resistor.name: percent(resistor.life_drift, digits=3) for resistor in stage.resistors}
+    if len(set(drifts.values())) == 1:
+        return f"resistors as listed, life drift ±{next(iter(drifts.values()))}"
+    each = ", ".join(f"{name} ±{drift}" for name, drift in drifts.items())
+    return f"resistors as listed, life drift {each}"
+
+
+def _coupling(stage: Stage) -> str:
+    signal = stage.signal
+    if signal is None:
+        return "no signal section: capacitors open, emitter resistor not bypassed, no load"
+    coupling = ", ".join(_signal(signal))
+    if not stage.supply.ripple_peak:
+        return coupling
+    return f"{coupling}; ripple at the output: the larger of capacitors open and short"
+
+
+def _signal(signal: Signal) -> Iterator[str]:
+    yield f"source {figure(signal.source_resistance, Kind.RESISTANCE)}"
+    yield "no load" if signal.load is None else f"load {figure(signal.load, Kind.RESISTANCE)}"
+    yield "emitter resistor bypassed" if signal.bypassed else "emitter resistor not bypassed"
+
+
+def _target(stage: Stage, nominal: Nominal) -> Iterator[str]:
+    if stage.target is None:
+        return
+    wished, reached = stage.target.collector_current, nominal.values["collector_current"]
+    yield (
+        f"target: collector current {figure(wished, Kind.CURRENT)}, nominal {figure(reached, Kind.CURRENT)} "
+        f"({100.0 * (reached / wished - 1.0):+.1f} %)"
+    )
