@@ -53,7 +53,8 @@ _BISECTIONS = 32
 def power_slope(problem: Problem, temperature: Values, bias: Bias) -> Array:
     """dP/dT_j [W/K] at a solved bias, resistors held: the circuit answers with both voltages.
 
-    From the port equations `J·dv + Z·∂i/∂T·dT = 0` and P = V_CE·I_C + V_BE·I_B.
+    From the port equations `J·dv + Z·∂i/∂T·dT = 0` and P = V_CE·I_C + V_BE·I_B. Times R_θJA it is
+    the thermal loop gain. Source: implicit differentiation of the model.
     """
     ports, law = problem.ports, problem.laws(temperature)
     V_BE, V_CE = bias.V_BE, bias.V_BE - bias.V_BC

@@ -96,7 +96,8 @@ def solve(
 
     Solved means that both junction voltages satisfy the network to 1e-9 V and, with a thermal
     resistance, that the junction temperature moves less than 1e-6 K. Peak memory beyond the result
-    is that of one chunk.
+    is that of one chunk. Worked case: an ideal transistor, β 50, V_BE 0.7 V, 12 V, RB 240 k, RC 2.2 k
+    has I_B 47.083 µA, I_C 2.3542 mA, V_C 6.8208 V (Boylestad & Nashelsky, ex. 4.1).
     """
     count = len(scenarios)
     heated = bool(transistor.thermal_resistance)

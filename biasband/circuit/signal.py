@@ -80,7 +80,11 @@ class Answer:
 
 
 def answer(ports: Ports, law: Laws, point: OperatingPoint) -> Answer:
-    """Solve `v = open − Z·Y·v` for the junction voltages, then the terminals follow."""
+    """Solve `v = open − Z·Y·v` for the junction voltages, then the terminals follow.
+
+    Y is the junctions' Jacobian at the point; shape (N,) throughout. Source: small-signal analysis as
+    in any text on electronic circuits ("common practice").
+    """
     here = tangent(ports, law, point.base_emitter, point.base_collector)
     v_be, v_bc = here.solve(ports.open_be, ports.open_bc)
     i_b = here.flow.base_be * v_be + here.flow.base_bc * v_bc
@@ -96,7 +100,10 @@ def feedthrough(coupled: Coupled, law: Laws, point: OperatingPoint, polarity: Po
 
 
 def voltage_gain(coupled: Coupled, law: Laws, point: OperatingPoint) -> Values:
-    """From the source's EMF to the output."""
+    """From the source's EMF to the output, a ratio; negative where the stage inverts.
+
+    Worked case: bypassed, no load, a stiff source: −g_m·(RC ‖ r_o), g_m = I_C/V_T.
+    """
     ports = condense(coupled.wiring, coupled.resistances, {**_QUIET, Node.SOURCE: 1.0})
     return answer(ports, law, point).volts[coupled.wiring.output]
 

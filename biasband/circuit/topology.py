@@ -45,7 +45,11 @@ class Branch:
 
 @dataclass(frozen=True)
 class Topology:
-    """A named bias network; `ties` maps terminals that sit directly on a rail."""
+    """A named bias network; `ties` maps terminals that sit directly on a rail.
+
+    A branch that ends on a rail names it as `other`; a base with two branches has one of them to the
+    emitter rail, which carries the divider current when both are designed.
+    """
 
     name: str
     branches: tuple[Branch, ...]

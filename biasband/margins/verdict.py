@@ -55,12 +55,17 @@ def _failures(nominal: Region, margins: Sequence[Margin], evidence: Evidence) ->
     if hot_boards and not hot:
         yield f"thermal runaway in {hot_boards} of {_scenarios(evidence)} sampled scenarios"
     for margin in margins:
-        if margin.verdict == "fail" and not _unknown(margin):
+        if margin.verdict == "fail" and not _unknown(margin, evidence):
             yield f"{label(margin)}: {_how_it_fails(margin)}"
 
 
-def _unknown(margin: Margin) -> bool:
-    """Whether a row lacks the value that it is to be judged by: not solved, or not computable."""
+def _unknown(margin: Margin, evidence: Evidence) -> bool:
+    """Whether a row lacks the value that it is to be judged by: not solved, or not computable.
+
+    A yield that fails while boards are unsolved is unknown: they count as failed, and may not be.
+    """
+    if margin.judged_by == "yield" and evidence.boards.regions.get(Region.UNSOLVED):
+        return margin.verdict == "fail"
     needed = {"corners": margin.corners, "rss": margin.rss, "yield": margin.nominal}
     return isnan(margin.nominal) or isnan(needed[margin.judged_by])
 
@@ -92,7 +97,7 @@ def _doubts(nominal: Region, margins: Sequence[Margin], evidence: Evidence) -> I
     if sampled:
         yield f"{sampled} of {_scenarios(evidence)} sampled scenarios were not solved"
     for margin in margins:
-        if _unknown(margin):
+        if _unknown(margin, evidence):
             yield f"{label(margin)}: could not be judged, a value that it needs is not there"
 
 

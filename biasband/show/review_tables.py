@@ -60,6 +60,11 @@ SUMMARY_COLUMNS = (
     Column("smallest margin", "left"),
 )
 
+STANDING_NOTE = (
+    "Rows without an id are standing checks, held to the derating profile in every corner: saturation "
+    "is V_CE, cut_off is I_C, supply_voltage is rail to rail against V_CEO."
+)
+
 _SIGNS = {"at_least": "≥", "at_most": "≤"}
 
 
@@ -110,7 +115,7 @@ def margin_table(review: Review) -> Table:
     if any(not row.standing for row in review.rows):
         notes.append("yield: boards that hold the limit at every point of use (≥ its lower 95 % bound).")
     if any(row.standing for row in review.rows):
-        notes.append("Rows without an id are standing checks, held to the derating profile in every corner.")
+        notes.append(STANDING_NOTE)
     rows = tuple(_margin_row(row) for row in review.rows)
     return Table("Margins, smallest first", MARGIN_COLUMNS, rows, tuple(notes))
 

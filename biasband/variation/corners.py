@@ -65,7 +65,12 @@ class Corners:
 
 
 def corners(stage: Stage, measures: Measures, *, cut_off: float) -> Corners:
-    """Evaluate all 2^n corners and search the box from several of them."""
+    """Evaluate all 2^n corners and search the box from several of them.
+
+    Worked case: 12 V, RB 240 k, RC 2.2 k, V_BE 0.7 V, h_FE 30…100: V_CE·I_C is 12.6 and 7.7 mW at
+    the corners, 16.4 mW inside. A measure that no corner solves has NaN extremes.
+    Source: extreme-value (worst-case) analysis, "common practice".
+    """
     box = axes(stage)
     vertices = _vertices(box)
     points = np.vstack([vertices, [[_middle(axis) for axis in box]]]) if box else vertices
