@@ -64,7 +64,7 @@ def test_review_of_a_passing_stage_is_status_0():
 def test_review_of_a_failing_stage_is_status_1():
     result = run("review", FAILING, *FEW)
     assert (result.exit_code, result.stderr) == (1, "")
-    assert "FAIL: 2 of 2 requirements and 1 of 8 standing checks made fail" in result.stdout
+    assert "FAIL: 2 of 2 requirements fail, 1 of 8 standing checks fail" in result.stdout
 
 
 def test_inconclusive_review_is_status_1(stage_path):

@@ -91,19 +91,18 @@ def _first_forward(ports: Ports, law: Laws, line: _Line) -> Array:
 
 @dataclass(frozen=True)
 class _Guess:
-    """The equation at a forward current F: V_BE [V], G [A], the residual [V], and F times its slope."""
+    """The equation at a forward current F: V_BE [V], G [A], the residual [V] and its parts."""
 
     V_BE: Array
     G: Array
     residual: Array
-    slope: Array
+    base: Array
+    creep: Array
+    room: Array
 
 
 def _guess(ports: Ports, law: Laws, line: _Line, F: Array) -> _Guess:
-    """Evaluate `V_BE(F) + z_base·F + z12·G(F) − drive`, in place where it can be: the hottest lines here.
-
-    dG/dF·F is exactly (G + creep·F²)/room.
-    """
+    """Evaluate `V_BE(F) + z_base·F + z12·G(F) − drive`, in place where it can be: the hottest lines here."""
     V_BE = F / law.reference_current
     np.log(V_BE, out=V_BE)
     V_BE *= law.thermal_voltage
@@ -116,14 +115,25 @@ def _guess(ports: Ports, law: Laws, line: _Line, F: Array) -> _Guess:
     residual += V_BE
     residual += base
     residual -= line.drive
-    slope = creep
+    return _Guess(V_BE, G, residual, base, creep, room)
+
+
+def _advanced(ports: Ports, law: Laws, guess: _Guess, F: Array) -> Array:
+    """The forward current after a Newton step; uses up the guess.
+
+    F times the slope is V_T + z_base·F + z12·F·dG/dF, and F·dG/dF is exactly (G + creep·F²)/room.
+    """
+    slope = guess.creep
     slope *= F
-    slope += G
-    slope /= room
+    slope += guess.G
+    slope /= guess.room
     slope *= ports.z12
-    slope += base
+    slope += guess.base
     slope += law.thermal_voltage
-    return _Guess(V_BE, G, residual, slope)
+    change = 1.0 - guess.residual / slope
+    np.maximum(change, _LEAST_CHANGE, out=change)
+    change *= F
+    return change
 
 
 def active_region(
@@ -134,11 +144,10 @@ def active_region(
     `solved` is False where the equation does not hold to 1e-9 V or the reverse junction matters.
     """
     line = _fold(ports, law)
-    F = _first_forward(ports, law, line) if forward is None else forward.copy()
+    F = _first_forward(ports, law, line) if forward is None else forward
     guess = _guess(ports, law, line, F)
     for _ in range(steps):
-        change = 1.0 - guess.residual / guess.slope
-        F *= np.maximum(change, _LEAST_CHANGE, out=change)
+        F = _advanced(ports, law, guess, F)
         guess = _guess(ports, law, line, F)
     I_B, I_C = F * line.base_share, guess.G
     I_B -= line.base_constant

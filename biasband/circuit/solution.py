@@ -73,8 +73,10 @@ def isothermal(problem: Problem, temperature: Values) -> Bias:
     """Solve a chunk at the junction temperature [K]: as active, and patiently what is not."""
     law = problem.laws(temperature)
     bias, _ = active_region(problem.ports, law)
+    if bias.solved.all():
+        return bias
     left = ~bias.solved
-    return merged(bias, left, patient(problem.part(left), rows_of(temperature, left))) if left.any() else bias
+    return merged(bias, left, patient(problem.part(left), rows_of(temperature, left)))
 
 
 def merged(bias: Bias, rows: NDArray[np.bool_], other: Bias) -> Bias:

@@ -131,7 +131,7 @@ def _line(
     if outcome == "fail" and failing:
         unmet = len({margin.id for margin in failing if not margin.standing})
         broken = sum(margin.standing for margin in failing)
-        text = f"{unmet} of {_counted(asked, 'requirement')} and {broken} of {made} standing checks made fail"
+        text = f"{unmet} of {_counted(asked, 'requirement')} fail, {broken} of {made} standing checks fail"
     text = f"{outcome.upper()}: {text}"
     if standing.not_made:
         keys = dict.fromkeys(check.missing for check in standing.not_made)

@@ -64,16 +64,23 @@ def _coupling(stage: Stage) -> str:
     signal = stage.signal
     if signal is None:
         return "no signal section: capacitors open, emitter resistor not bypassed, no load"
-    coupling = ", ".join(_signal(signal))
+    coupling = ", ".join(_signal(signal, _bypassed_to(stage)))
     if not stage.supply.ripple_peak:
         return coupling
     return f"{coupling}; ripple at the output: the larger of capacitors open and short"
 
 
-def _signal(signal: Signal) -> Iterator[str]:
+def _bypassed_to(stage: Stage) -> str:
+    """Where the bypass capacitor across the emitter resistor ends: on the emitter's rail."""
+    if stage.polarity == "pnp":
+        return "the positive supply"
+    return "ground" if stage.negative_supply is None else "the negative supply"
+
+
+def _signal(signal: Signal, bypassed_to: str) -> Iterator[str]:
     yield f"source {figure(signal.source_resistance, Kind.RESISTANCE)}"
     yield "no load" if signal.load is None else f"load {figure(signal.load, Kind.RESISTANCE)}"
-    yield "emitter resistor bypassed" if signal.bypassed else "emitter resistor not bypassed"
+    yield f"emitter bypassed to {bypassed_to}" if signal.bypassed else "emitter resistor not bypassed"
 
 
 def _target(stage: Stage, nominal: Nominal) -> Iterator[str]:
