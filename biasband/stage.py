@@ -48,32 +48,41 @@ class Supply:
 
 
 @dataclass(frozen=True, kw_only=True)
-class Transistor:
-    """A data sheet at 25 °C: [A], [V], [V/K], [1/K], [K], [K/W], [W]; absolute values for PNP.
+class Ratings:
+    """What any transistor states: limits of gain and V_BE [V], leakage [A], ratings [V], [A], [W], [K].
 
-    `base_emitter_drift` None means the band-gap law. A rating that is None is not stated, and what
-    depends on it is not checked; `saturation_voltage` None means that 0.2 V is assumed. Raises
-    UsageError for an early_voltage without a test_voltage.
+    A rating that is None is not stated, and what depends on it is not checked; `saturation_voltage`
+    None means that 0.2 V is assumed. Absolute values for PNP.
     """
 
     gain: Limits
     base_emitter_voltage: Limits
-    test_current: float
-    label: str = ""
-    test_voltage: float | None = None
-    base_emitter_drift: float | None = -2e-3
-    gain_drift: float = 5e-3
     leakage: float = 0.0
-    leakage_doubling: float = 10.0
     saturation_voltage: float | None = None
-    early_voltage: float | None = None
-    reverse_gain: float = 4.0
     thermal_resistance: float | None = None
     max_collector_emitter: float | None = None
     max_emitter_base: float | None = None
     max_current: float | None = None
     max_power: float | None = None
     max_junction: float | None = None
+
+
+@dataclass(frozen=True, kw_only=True)
+class Transistor(Ratings):
+    """A data sheet at 25 °C: test point [A], [V]; drifts [V/K], [1/K]; leakage doubles every [K].
+
+    `base_emitter_drift` None means the band-gap law. Raises UsageError for an early_voltage without a
+    test_voltage.
+    """
+
+    test_current: float
+    label: str = ""
+    test_voltage: float | None = None
+    base_emitter_drift: float | None = -2e-3
+    gain_drift: float = 5e-3
+    leakage_doubling: float = 10.0
+    early_voltage: float | None = None
+    reverse_gain: float = 4.0
     source: str = ""
 
     def __post_init__(self) -> None:
@@ -82,7 +91,7 @@ class Transistor:
 
 
 @dataclass(frozen=True, kw_only=True)
-class IdealTransistor:
+class IdealTransistor(Ratings):
     """A textbook transistor: constant V_BE, no Early effect, no leakage, no temperature.
 
     In the library only, never in a stage file, so that published answers can be checked to the
@@ -90,17 +99,6 @@ class IdealTransistor:
     `saturation_voltage`. The gain and V_BE may still vary between limits. It never heats itself;
     `thermal_resistance` serves the power and junction checks alone.
     """
-
-    gain: Limits
-    base_emitter_voltage: Limits
-    saturation_voltage: float | None = None
-    leakage: float = 0.0
-    thermal_resistance: float | None = None
-    max_collector_emitter: float | None = None
-    max_emitter_base: float | None = None
-    max_current: float | None = None
-    max_power: float | None = None
-    max_junction: float | None = None
 
 
 AnyTransistor = Transistor | IdealTransistor
