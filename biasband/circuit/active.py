@@ -85,8 +85,11 @@ def _fold(ports: Ports, law: Laws) -> _Line:
 def _first_forward(ports: Ports, law: Laws, line: _Line) -> Array:
     """A forward current [A] to start from: V_BE as at the test point, the Early effect half known."""
     drive = np.maximum(line.drive - law.reference_voltage, law.thermal_voltage)
-    F = drive / (line.z_base + ports.z12)
-    return drive / (line.z_base + ports.z12 * (line.early / (1.0 - line.lean * F)))
+    first = drive / (line.z_base + ports.z12)
+    share = line.early / (1.0 - line.lean * first)
+    share *= ports.z12
+    share += line.z_base
+    return np.asarray(drive / share)
 
 
 @dataclass(frozen=True)
@@ -107,7 +110,8 @@ def _guess(ports: Ports, law: Laws, line: _Line, F: Array) -> _Guess:
     np.log(V_BE, out=V_BE)
     V_BE *= law.thermal_voltage
     V_BE += law.reference_voltage
-    base, creep, room = line.z_base * F, line.creep * F, 1.0 - line.lean * F
+    base, creep = line.z_base * F, line.creep * F
+    room = 1.0 - line.lean * F
     G = line.early + creep
     G *= F
     G /= room
@@ -152,7 +156,8 @@ def active_region(
     I_B, I_C = F * line.base_share, guess.G
     I_B -= line.base_constant
     I_C += line.collector_constant
-    V_BC = ports.open_bc - ports.z21 * I_B - ports.z22 * I_C
+    V_BC = ports.open_bc - ports.z21 * I_B
+    V_BC -= ports.z22 * I_C
     solved = np.abs(guess.residual) < RESIDUAL
     solved &= V_BC < _REVERSE_OFF * law.thermal_voltage
     return Bias(guess.V_BE, V_BC, I_B, I_C, solved), F

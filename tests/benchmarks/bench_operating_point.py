@@ -27,7 +27,7 @@ Vector = NDArray[np.float64]
 BOARDS = 1_000_000
 SCALAR_BOARDS = 200
 IN_CACHE = 4096
-REPEATS = 3
+REPEATS = 10
 
 WIRING = wire(TOPOLOGIES["divider"], ("R1", "R2", "RC", "RE"))
 COOL = Transistor(
