@@ -18,6 +18,9 @@ from biasband.errors import QuantityError
 from biasband.files.ledger import nearest, shown
 from biasband.quantity import Kind, Toleranced, format_quantity, parse, parse_toleranced
 
+_SMALLEST, _LARGEST = 1e-21, 1e15
+"""In SI: no figure of a stage lies outside, and what lies inside overflows nowhere."""
+
 
 class Refusal(ValueError):
     """A word that is none of the allowed ones."""
@@ -55,6 +58,9 @@ def within(
     below: float | None = None,
 ) -> float:
     """Return the number where it is in range; raise QuantityError, naming `value`, where it is not."""
+    if number != 0.0 and not _SMALLEST <= abs(number) <= _LARGEST:
+        allowed = f"0, or from {_SMALLEST:g} to {_LARGEST:g} in SI"
+        raise QuantityError(shown(value), f"no {kind.value} that a stage can have", allowed)
     bounds = (
         ("above", above, above is None or number > above),
         ("at least", least, least is None or number >= least),

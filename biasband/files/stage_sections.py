@@ -70,8 +70,7 @@ def _between(low: float, typical: float | None, high: float, *, geometric: bool 
     if typical is not None:
         return Limits(low=low, nominal=typical, high=high)
     mean = math.sqrt(low * high) if geometric else (low + high) / 2
-    # Rounding, and overflow of absurd limits, must not push the mean outside.
-    return Limits(low=low, nominal=max(low, min(mean, high)), high=high)
+    return Limits(low=low, nominal=mean, high=high)
 
 
 def read_ambient(table: object, ledger: Ledger) -> Limits | None:
