@@ -33,11 +33,9 @@ def solve(ports: Ports, transistor: IdealTransistor, part: Scenarios) -> Trial:
     V_BE = np.where(drive > 0.0, V_BE, ports.open_be)
     V_BC = ports.open_bc - ports.z21 * I_B - ports.z22 * I_C
     saturated = V_BE - V_BC <= V_sat
-    determinant = ports.z11 * ports.z22 - ports.z12 * ports.z21
-    over_be, over_bc = ports.open_be - V_BE, ports.open_bc - (V_BE - V_sat)
     with np.errstate(divide="ignore", invalid="ignore"):
-        I_B = np.where(saturated, (ports.z22 * over_be - ports.z12 * over_bc) / determinant, I_B)
-        I_C = np.where(saturated, (ports.z11 * over_bc - ports.z21 * over_be) / determinant, I_C)
+        held_B, held_C = ports.currents(V_BE, V_BE - V_sat)
+        I_B, I_C = np.where(saturated, held_B, I_B), np.where(saturated, held_C, I_C)
     V_BC = np.where(saturated, V_BE - V_sat, V_BC)
     solved = np.isfinite(I_B) & np.isfinite(I_C) & np.isfinite(V_BC)
     status = np.where(solved, np.int8(Status.SOLVED), np.int8(Status.UNSOLVED))

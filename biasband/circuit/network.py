@@ -45,6 +45,15 @@ class Ports:
             node_z={node: (rows_of(b, rows), rows_of(c, rows)) for node, (b, c) in self.node_z.items()},
         )  # fmt: skip
 
+    def currents(self, V_BE: Values, V_BC: Values) -> tuple[Values, Values]:
+        """(I_B, I_C) [A] that the network drives with both junction voltages [V] held: Z⁻¹·(open − v)."""
+        over_be, over_bc = self.open_be - V_BE, self.open_bc - V_BC
+        determinant = self.z11 * self.z22 - self.z12 * self.z21
+        return (
+            (self.z22 * over_be - self.z12 * over_bc) / determinant,
+            (self.z11 * over_bc - self.z21 * over_be) / determinant,
+        )
+
     def voltage(self, node: Node, base_current: Values, collector_current: Values) -> Values:
         """Voltage [V] of a terminal while the transistor draws these currents [A]."""
         z_base, z_collector = self.node_z[node]

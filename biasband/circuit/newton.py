@@ -82,14 +82,11 @@ def _active_start(ports: Ports, law: Laws) -> tuple[Array, Array]:
 def _saturated_flow(ports: Ports, law: Laws) -> tuple[Array, Array]:
     """Forward and reverse currents [A] that carry what the network drives through a closed switch.
 
-    With both junction voltages held, i = Z⁻¹·(open − v); I_C = F − R − R/β_R and I_B = F/β + R/β_R
+    With both junction voltages held the network gives I_B and I_C; I_C = F − R − R/β_R and I_B = F/β + R/β_R
     then give F and R. Not positive where the transistor is not saturated.
     """
-    held_be, held_bc = law.reference_voltage, law.reference_voltage - _SATURATED_START
-    over_be, over_bc = ports.open_be - held_be, ports.open_bc - held_bc
-    determinant = ports.z11 * ports.z22 - ports.z12 * ports.z21
-    I_B = (ports.z22 * over_be - ports.z12 * over_bc) / determinant
-    I_C = (ports.z11 * over_bc - ports.z21 * over_be) / determinant
+    held = law.reference_voltage
+    I_B, I_C = ports.currents(held, held - _SATURATED_START)
     back = law.inverse_reverse_gain
     reverse = (I_B - I_C / law.forward_gain) / ((1.0 + back) / law.forward_gain + back)
     return np.asarray(I_C + reverse * (1.0 + back)), np.asarray(reverse)

@@ -7,13 +7,13 @@ chunk, not of the million.
 
 from __future__ import annotations
 
-import time
 import tracemalloc
-from collections.abc import Callable
 from dataclasses import replace
+from functools import partial
 from math import exp
 
 import numpy as np
+from clock import shortest as shortest_of
 from numpy.typing import NDArray
 from scipy import optimize
 
@@ -28,6 +28,7 @@ BOARDS = 1_000_000
 SCALAR_BOARDS = 200
 IN_CACHE = 4096
 REPEATS = 10
+shortest = partial(shortest_of, repeats=REPEATS)
 
 WIRING = wire(TOPOLOGIES["divider"], ("R1", "R2", "RC", "RE"))
 COOL = Transistor(
@@ -59,16 +60,6 @@ def boards(count: int) -> Scenarios:
         negative_supply=0.0,
         temperature=323.15,
     )
-
-
-def shortest(task: Callable[[], object]) -> float:
-    """The shortest of a few runs [s]: what the machine does when nobody disturbs it."""
-    times = []
-    for _ in range(REPEATS):
-        start = time.perf_counter()
-        task()
-        times.append(time.perf_counter() - start)
-    return min(times)
 
 
 def exponential_pass() -> None:

@@ -9,11 +9,12 @@ from __future__ import annotations
 
 import subprocess
 import sys
-import time
 from collections.abc import Callable
+from functools import partial
 from pathlib import Path
 
 import numpy as np
+from clock import shortest as shortest_of
 
 from biasband.files.stage_file import read_stage
 from biasband.signoff import study
@@ -23,16 +24,7 @@ from biasband.variation.evaluation import cut_off_current, evaluate
 ROOT = Path(__file__).parent.parent.parent
 SAMPLE = "samples/hive_microphone.toml"
 REPEATS = 5
-
-
-def shortest(task: Callable[[], object]) -> float:
-    """The shortest of a few runs [s]."""
-    times = []
-    for _ in range(REPEATS):
-        start = time.perf_counter()
-        task()
-        times.append(time.perf_counter() - start)
-    return min(times)
+shortest = partial(shortest_of, repeats=REPEATS)
 
 
 def process(*words: str) -> Callable[[], object]:
