@@ -105,7 +105,7 @@ def settle(ports: Ports, transistor: Transistor, part: Scenarios) -> Trial:
     if not transistor.thermal_resistance:
         bias = isothermal(problem, problem.ambient)
         status = np.where(bias.solved, np.int8(Status.SOLVED), np.int8(Status.UNSOLVED))
-        return Trial.of(ports, bias, T_j=problem.ambient, status=status)
+        return Trial.of(bias, T_j=problem.ambient, status=status)
     R = transistor.thermal_resistance
     heated = _warm_up(
         problem, R, lambda T, F: active_region(ports, problem.laws(T), F, steps=_WARM_STEPS), steps=_QUICKLY
@@ -116,7 +116,7 @@ def settle(ports: Ports, transistor: Transistor, part: Scenarios) -> Trial:
         found = _carefully(problem.part(doubtful), R)
         merged(heated.bias, doubtful, found.bias)
         heated.T_j[doubtful], status[doubtful] = found.T_j, found.status
-    return Trial.of(ports, heated.bias, T_j=heated.T_j, status=status)
+    return Trial.of(heated.bias, T_j=heated.T_j, status=status)
 
 
 Solver = Callable[[Values, Array | None], tuple[Bias, Array | None]]

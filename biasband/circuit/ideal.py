@@ -10,7 +10,6 @@ import numpy as np
 from biasband.circuit.network import Ports
 from biasband.circuit.scenarios import Scenarios
 from biasband.circuit.solution import Status, Trial
-from biasband.circuit.topology import Node
 from biasband.constants import ASSUMED_SATURATION_VOLTAGE
 from biasband.stage import IdealTransistor
 
@@ -39,4 +38,4 @@ def solve(ports: Ports, transistor: IdealTransistor, part: Scenarios) -> Trial:
     V_BC = np.where(saturated, V_BE - V_sat, V_BC)
     solved = np.isfinite(I_B) & np.isfinite(I_C) & np.isfinite(V_BC)
     status = np.where(solved, np.int8(Status.SOLVED), np.int8(Status.UNSOLVED))
-    return Trial(V_BE, V_BC, ports.voltage(Node.EMITTER, I_B, I_C), I_B, I_C, part.temperature, status)
+    return Trial(V_BE, V_BC, I_B, I_C, part.temperature, status)

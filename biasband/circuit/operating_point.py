@@ -29,13 +29,12 @@ CHUNK = 24576
 class OperatingPoint:
     """N solved scenarios in the transistor's frame: positive in conduction for both polarities.
 
-    Junction voltages, the emitter's node voltage [V], currents [A], junction temperature [K] and
-    `status`; all of shape (N,). NaN where not SOLVED.
+    Junction voltages [V], currents [A], junction temperature [K] and `status`; all of shape (N,).
+    NaN where not SOLVED.
     """
 
     base_emitter: Array
     base_collector: Array
-    emitter: Array
     base_current: Array
     collector_current: Array
     junction_temperature: Array
@@ -45,16 +44,6 @@ class OperatingPoint:
     def collector_emitter(self) -> Array:
         """V_CE [V]."""
         return self.base_emitter - self.base_collector
-
-    @property
-    def base(self) -> Array:
-        """The base's node voltage [V] in the transistor's frame."""
-        return self.emitter + self.base_emitter
-
-    @property
-    def collector(self) -> Array:
-        """The collector's node voltage [V] in the transistor's frame."""
-        return self.base - self.base_collector
 
     @property
     def power(self) -> Array:
@@ -72,9 +61,7 @@ class Region(IntEnum):
     UNSOLVED = 4
 
 
-def regions(
-    point: OperatingPoint, *, saturation_voltage: float, cut_off_current: float
-) -> NDArray[np.int8]:
+def regions(point: OperatingPoint, *, saturation_voltage: float, cut_off_current: float) -> NDArray[np.int8]:
     """The Region of every scenario, shape (N,).
 
     Saturated: V_CE at or below `saturation_voltage` [V], as exactly as voltages are solved. Cut off:
@@ -101,7 +88,7 @@ def solve(
     """
     count = len(scenarios)
     heated = bool(transistor.thermal_resistance)
-    rows_out = np.empty((6 if heated else 5, count))
+    rows_out = np.empty((5 if heated else 4, count))
     status = np.empty(count, dtype=np.int8)
     for rows in chunks(count, CHUNK):
         trial = _solve_chunk(wiring, transistor, polarity, scenarios.part(rows))
@@ -112,17 +99,18 @@ def solve(
     if failed.any():
         rows_out[:, failed] = np.nan
     ambient = np.broadcast_to(np.asarray(scenarios.temperature, dtype=float), count)
-    T_j = rows_out[5] if heated else np.where(failed, np.nan, ambient) if failed.any() else ambient
+    T_j = rows_out[4] if heated else np.where(failed, np.nan, ambient) if failed.any() else ambient
     return OperatingPoint(
-        base_emitter=rows_out[0], base_collector=rows_out[1], emitter=rows_out[2],
-        base_current=rows_out[3], collector_current=rows_out[4],
-        junction_temperature=T_j, status=status,
-    )  # fmt: skip
+        base_emitter=rows_out[0],
+        base_collector=rows_out[1],
+        base_current=rows_out[2],
+        collector_current=rows_out[3],
+        junction_temperature=T_j,
+        status=status,
+    )
 
 
-def _solve_chunk(
-    wiring: Wiring, transistor: AnyTransistor, polarity: Polarity, part: Scenarios
-) -> Trial:
+def _solve_chunk(wiring: Wiring, transistor: AnyTransistor, polarity: Polarity, part: Scenarios) -> Trial:
     ports = condense(wiring, part.resistances, rails(polarity, part))
     if isinstance(transistor, IdealTransistor):
         return ideal.solve(ports, transistor, part)

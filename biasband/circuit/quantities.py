@@ -52,11 +52,8 @@ class Quantity:
 
 def _node_voltage(node: Node) -> Callable[[Reading], Values]:
     def read(reading: Reading) -> Values:
-        if node in reading.wiring.ties:
-            return reading.real(reading.rails[reading.wiring.ties[node]])
-        point = reading.quiet if node is reading.wiring.output else reading.point
-        frame = {Node.BASE: point.base, Node.COLLECTOR: point.collector, Node.EMITTER: point.emitter}
-        return reading.real(frame[node])
+        volts = reading.quiet_volts if node is reading.wiring.output else reading.volts
+        return reading.real(volts[node])
 
     return read
 
@@ -101,12 +98,12 @@ def _unbypassed(reading: Reading) -> Values:
 
 def _into_cut_off(reading: Reading) -> Values:
     """Peak [V] the output can move while the transistor turns off, never beyond its rail."""
-    point, output = reading.quiet, reading.wiring.output
+    point, volts, output = reading.quiet, reading.quiet_volts, reading.wiring.output
     if output is Node.EMITTER:
         swing = (point.base_current + point.collector_current) / _output_conductance(reading)
-        return np.minimum(swing, point.emitter - reading.quiet_rails[Node.EMITTER_RAIL])
+        return np.minimum(swing, volts[Node.EMITTER] - volts[Node.EMITTER_RAIL])
     swing = point.collector_current / _output_conductance(reading)
-    return np.minimum(swing, reading.quiet_rails[Node.COLLECTOR_RAIL] - point.collector)
+    return np.minimum(swing, volts[Node.COLLECTOR_RAIL] - volts[Node.COLLECTOR])
 
 
 def _into_saturation(reading: Reading) -> Values:

@@ -16,7 +16,7 @@ from numpy.typing import NDArray
 
 from biasband.circuit import signal
 from biasband.circuit.junction import Laws, laws, sheet
-from biasband.circuit.network import rails, sign, total
+from biasband.circuit.network import condense, rails, sign, total
 from biasband.circuit.operating_point import OperatingPoint, regions, solve
 from biasband.circuit.scenarios import Array, Scenarios, Values
 from biasband.circuit.topology import TOPOLOGIES, Node, Wire, Wiring, wire
@@ -104,12 +104,23 @@ class Reading:
         """A node voltage [V] to the stage's ground from one in the transistor's frame."""
         return sign(self.stage.polarity) * frame_voltage
 
-    def volts(self, node: Node) -> Values:
-        """A terminal's or rail's voltage [V] in the transistor's frame."""
-        if node in self.rails:
-            return self.rails[node]
-        terminals = {Node.BASE: self.point.base, Node.COLLECTOR: self.point.collector}
-        return terminals.get(node, self.point.emitter)
+    @cached_property
+    def volts(self) -> Mapping[Node, Values]:
+        """The voltage [V] of every terminal and rail, in the transistor's frame."""
+        return self._volts(self.point, self.rails)
+
+    @cached_property
+    def quiet_volts(self) -> Mapping[Node, Values]:
+        """The voltage [V] of every terminal and rail at the quiet point, in the transistor's frame."""
+        return self.volts if self.quiet is self.point else self._volts(self.quiet, self.quiet_rails)
+
+    def _volts(self, point: OperatingPoint, rail_voltages: Mapping[Node, Values]) -> Mapping[Node, Values]:
+        ports = condense(self.wiring, self.scenarios.resistances, rail_voltages)
+        emitter = ports.voltage(Node.EMITTER, point.base_current, point.collector_current)
+        collector, base = emitter + point.collector_emitter, emitter + point.base_emitter
+        terminals = {Node.BASE: base, Node.COLLECTOR: collector, Node.EMITTER: emitter}
+        tied = {node: rail_voltages[rail] for node, rail in self.wiring.ties.items()}
+        return {**rail_voltages, **terminals, **tied}
 
     def wire_of(self, resistor: str) -> Wire:
         """The wire that a resistor is part of."""
@@ -117,7 +128,7 @@ class Reading:
 
     def wire_current(self, wire: Wire) -> Array:
         """The current [A] from a wire's first node to its other."""
-        across = np.asarray(self.volts(wire.node) - self.volts(wire.other))
+        across = np.asarray(self.volts[wire.node] - self.volts[wire.other])
         return across / total(wire, self.scenarios.resistances)
 
     def regions(self, cut_off_current: float) -> NDArray[np.int8]:

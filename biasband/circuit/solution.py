@@ -13,7 +13,6 @@ from biasband.circuit.junction import Laws, Sheet, laws, sheet
 from biasband.circuit.network import Ports
 from biasband.circuit.newton import newton, start
 from biasband.circuit.scenarios import Array, Rows, Scenarios, Values, rows_of
-from biasband.circuit.topology import Node
 from biasband.stage import Transistor
 
 _FEW, _MANY = 4, 200
@@ -92,17 +91,15 @@ class Trial:
 
     V_BE: Array
     V_BC: Array
-    V_E: Values
     I_B: Array
     I_C: Array
     T_j: Values
     status: NDArray[np.int8]
 
     @classmethod
-    def of(cls, ports: Ports, bias: Bias, *, T_j: Values, status: NDArray[np.int8]) -> Trial:
+    def of(cls, bias: Bias, *, T_j: Values, status: NDArray[np.int8]) -> Trial:
         """The trial that a solved bias amounts to."""
-        V_E = ports.voltage(Node.EMITTER, bias.I_B, bias.I_C)
-        return cls(bias.V_BE, bias.V_BC, V_E, bias.I_B, bias.I_C, T_j, status)
+        return cls(bias.V_BE, bias.V_BC, bias.I_B, bias.I_C, T_j, status)
 
     def rows(self) -> tuple[Values, ...]:
         """The values in the order of the fields, status left out."""

@@ -155,7 +155,7 @@ _RAIL_TO_RAIL = Quantity(
 """The highest supply, rail to rail: what the transistor sees when it is cut off."""
 
 _HELD_UP = Quantity(
-    "emitter_base_voltage", Kind.VOLTAGE, lambda r: r.volts(Node.EMITTER) - r.rails[Node.EMITTER_RAIL]
+    "emitter_base_voltage", Kind.VOLTAGE, lambda r: r.volts[Node.EMITTER] - r.volts[Node.EMITTER_RAIL]
 )
 """What the bypass capacitor holds between emitter and base when the supply is switched off."""
 

@@ -9,11 +9,10 @@ from __future__ import annotations
 
 import tracemalloc
 from dataclasses import replace
-from functools import partial
 from math import exp
 
 import numpy as np
-from clock import shortest as shortest_of
+from clock import Task, shortest, shortest_each
 from numpy.typing import NDArray
 from scipy import optimize
 
@@ -27,8 +26,7 @@ Vector = NDArray[np.float64]
 BOARDS = 1_000_000
 SCALAR_BOARDS = 200
 IN_CACHE = 4096
-REPEATS = 10
-shortest = partial(shortest_of, repeats=REPEATS)
+REPEATS = 20
 
 WIRING = wire(TOPOLOGIES["divider"], ("R1", "R2", "RC", "RE"))
 COOL = Transistor(
@@ -115,15 +113,21 @@ def peak_memory(transistor: Transistor, scenarios: Scenarios) -> float:
 
 def main() -> None:
     """Print the ratios."""
-    unit, scenarios = shortest(exponential_pass), boards(BOARDS)
-    for name, transistor, goal in (("without self-heating", COOL, 60), ("with self-heating", WARM, 150)):
-        seconds = shortest(lambda part=transistor: solve(WIRING, part, "npn", scenarios))  # type: ignore[misc]
+    scenarios = boards(BOARDS)
+    tasks: dict[str, Task] = {
+        "np.exp": exponential_pass,
+        "cool": lambda: solve(WIRING, COOL, "npn", scenarios),
+        "warm": lambda: solve(WIRING, WARM, "npn", scenarios),
+    }
+    seconds = shortest_each(tasks, repeats=REPEATS)
+    for name, transistor, goal in (("cool", COOL, 60), ("warm", WARM, 150)):
+        passes = seconds[name] / seconds["np.exp"]
         megabytes = peak_memory(transistor, scenarios) / 2**20
-        print(f"{name}: {seconds / unit:.0f} passes of np.exp (goal: at most {goal}), "
+        print(f"{name}: {passes:.0f} passes of np.exp (goal: at most {goal}), "
               f"peak memory beyond inputs and result {megabytes:.1f} MiB")  # fmt: skip
     few = boards(SCALAR_BOARDS)
-    loop = shortest(lambda: scalar_loop(few)) / SCALAR_BOARDS
-    own = shortest(lambda: solve(WIRING, COOL, "npn", scenarios)) / BOARDS
+    loop = shortest(lambda: scalar_loop(few), repeats=3) / SCALAR_BOARDS
+    own = seconds["cool"] / BOARDS
     same = np.abs(scalar_loop(few) / solve(WIRING, COOL, "npn", few).collector_current - 1.0).max()
     print(
         f"against a loop of scipy.optimize.root: {loop / own:.0f} times faster (currents agree to {same:.0e})"

@@ -14,6 +14,7 @@ from hypothesis import strategies as st
 
 from biasband.circuit.operating_point import Region
 from biasband.circuit.reading import Reading, read
+from biasband.circuit.topology import Node
 from biasband.stage import Limits, Signal, Supply
 from biasband.variation.contributors import axes, realise
 from biasband.variation.corners import corners
@@ -166,12 +167,12 @@ COUPLES = Signal(source_resistance=10e3, bypassed=True)
 def feedthroughs() -> tuple[float, float]:
     """|dV_C/dV_CC| with capacitors open, from two solved supplies, and short, from g_m and r_π by hand."""
 
-    def at(volts: float):
+    def at(volts: float) -> Reading:
         quiet = replace(rippling(None), supply=Supply(voltage=Limits.exactly(volts)))
-        return read(quiet, realise(quiet, {})).point
+        return read(quiet, realise(quiet, {}))
 
-    below, above, here = at(8.999), at(9.001), at(9.0)
-    opened = float(above.collector[0] - below.collector[0]) / 0.002
+    below, above, here = at(8.999), at(9.001), at(9.0).point
+    opened = float((above.volts[Node.COLLECTOR] - below.volts[Node.COLLECTOR])[0]) / 0.002
     V_T = 1.380649e-23 * 298.15 / 1.602176634e-19
     g_m = float(here.collector_current[0]) / V_T
     r_pi = V_T / float(here.base_current[0])
@@ -187,7 +188,7 @@ def test_coupled_ripple_moves_the_output_by_the_larger_feedthrough():
     of = rippling(COUPLES)
     opened, shorted = feedthroughs()
     assert shorted > 3.0 * opened  # the case is the one that physics.md 4 warns of
-    quiet = float(read(rippling(None), realise(rippling(None), {})).point.collector[0])
+    quiet = float(read(rippling(None), realise(rippling(None), {})).volts[Node.COLLECTOR][0])
     found = extremes(of, "collector_voltage")["collector_voltage"]
     # 1 %: the textbook g_m, r_π, r_o by hand leave out the base's share of the Early effect.
     assert quiet - found.low.value == pytest.approx(0.05 * shorted, rel=0.01)

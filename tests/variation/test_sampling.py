@@ -11,6 +11,7 @@ from scipy import stats
 
 from biasband.circuit.operating_point import Region
 from biasband.circuit.reading import read
+from biasband.circuit.topology import Node
 from biasband.stage import Limits, Stage, Supply
 from biasband.variation import sampling
 from biasband.variation.contributors import realise
@@ -155,9 +156,8 @@ def test_lowest_and_highest_in_use_are_those_of_the_points_of_use():
     of = coupled()
     found = boards(of, "base_voltage", count=64).spread["base_voltage"]
     drawn = coordinates(of, slice(0, 64), seed=1)
-    each = np.stack(
-        [read(of, realise(of, {**drawn, **point.coordinates})).point.base for point in points_of_use(of)]
-    )
+    uses = [realise(of, {**drawn, **point.coordinates}) for point in points_of_use(of)]
+    each = np.stack([read(of, use).volts[Node.BASE] for use in uses])
     assert found.nominal_use.values == pytest.approx(each[0], abs=1e-8)  # residuals below 1e-9 V
     assert found.lowest_in_use.values == pytest.approx(each.min(axis=0), abs=1e-8)
     assert found.highest_in_use.values == pytest.approx(each.max(axis=0), abs=1e-8)
