@@ -14,7 +14,7 @@ from typing import Literal
 
 from biasband.circuit.operating_point import Region
 from biasband.errors import UsageError
-from biasband.parts.marking import letter_code
+from biasband.parts.letter_code import letter_code
 from biasband.quantity import Kind, format_quantity
 
 Align = Literal["left", "right"]

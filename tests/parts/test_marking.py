@@ -1,4 +1,7 @@
-"""The letter code of IEC 60062, both ways."""
+"""All marks of a part together, and a mark of any kind read back.
+
+"check values" is the project's shared document, "Marking".
+"""
 
 from __future__ import annotations
 
@@ -11,84 +14,137 @@ from hypothesis import strategies as st
 
 from biasband.errors import QuantityError, UsageError
 from biasband.files.series_files import load_series
-from biasband.parts.marking import letter_code, read_letter_code
+from biasband.parts.mark_reading import MarkKind
+from biasband.parts.marking import markings, read_mark
 
-# IEC 60062 as quoted in the project's check values, "Marking".
-STANDARD = [("R47", 0.47), ("4R7", 4.7), ("470R", 470.0), ("4K7", 4700.0), ("47K3", 47300.0), ("1M0", 1e6)]
-# The standard's other examples, from memory.
-FROM_MEMORY = [
-    ("R10", 0.1),
-    ("R332", 0.332),
-    ("1R0", 1.0),
-    ("10R", 10.0),
-    ("33R2", 33.2),
-    ("1K0", 1e3),
-    ("10K", 1e4),
-    ("332K", 332e3),
-    ("3M32", 3.32e6),
-    ("10M", 1e7),
-    ("1G0", 1e9),
-]
-# L stands for 10⁻³ (check values); that it begins below 0.1 Ω is our choice.
-MILLIOHMS = [("47L", 0.047), ("4L7", 0.0047), ("L47", 0.00047)]
+LETTER, BANDS = MarkKind.LETTER_CODE, MarkKind.COLOUR_BANDS
+THREE, FOUR, E96 = MarkKind.CHIP_THREE, MarkKind.CHIP_FOUR, MarkKind.CHIP_E96
 
 
-@pytest.mark.parametrize(("code", "ohms"), STANDARD + FROM_MEMORY + MILLIOHMS)
-def test_code_and_value_are_each_others(code: str, ohms: float) -> None:
-    assert letter_code(ohms) == code
-    assert read_letter_code(code) == ohms
+# 4K7J, 472, 4701: check values; the bands by hand from the colours there.
+def test_part_of_five_per_cent_has_its_marks() -> None:
+    marks = markings(4700.0, tolerance=0.05, tempco=250e-6)
+    assert marks.letter_code == "4K7J"
+    assert marks.bands.text == "yellow violet red gold (±5 %)"
+    assert "±2 % and tighter only" in marks.six_bands.reason
+    assert (marks.chip_three, marks.chip_four, marks.chip_e96) == ("472", "4701", None)
+
+
+# 01C is 10 kΩ: check values; the bands by hand from the colours there.
+def test_part_of_one_per_cent_has_its_marks() -> None:
+    marks = markings(1e4, tolerance=0.01, tempco=50e-6)
+    assert marks.letter_code == "10KF"
+    assert marks.bands.text == "brown black black red brown (±1 %)"
+    assert marks.six_bands.text == "brown black black red brown red (±1 %, 50 ppm/K)"
+    assert (marks.chip_three, marks.chip_four, marks.chip_e96) == ("103", "1002", "01C")
+
+
+def test_tempco_without_a_colour_leaves_five_bands() -> None:
+    marks = markings(1e4, tolerance=0.01, tempco=200e-6)
+    assert marks.bands.text == "brown black black red brown (±1 %)"
+    assert marks.six_bands.colours is None
+    assert "200 ppm/K" in marks.six_bands.reason
+
+
+def test_tolerance_that_is_not_stated_is_not_marked() -> None:
+    marks = markings(4700.0)
+    assert marks.letter_code == "4K7"
+    assert marks.bands.text.startswith("none: no tolerance is stated")
+    assert marks.six_bands.text.startswith("none: no tempco is stated")
+
+
+def test_tolerance_without_letter_or_colour_is_not_marked() -> None:
+    marks = markings(4700.0, tolerance=0.03)
+    assert (marks.letter_code, marks.bands.text) == ("4K7", "none: no colour stands for ±3 %")
+
+
+def test_value_that_no_mark_can_say_has_none() -> None:
+    marks = markings(1e300, tolerance=0.01)
+    assert (marks.letter_code, marks.bands.colours) == (None, None)
+    assert (marks.chip_three, marks.chip_four, marks.chip_e96) == (None, None, None)
+
+
+@pytest.mark.parametrize("ohms", [0.0, -4700.0, inf, -inf, nan])
+def test_no_resistance_has_no_markings(ohms: float) -> None:
+    with pytest.raises(UsageError, match="a marking needs a resistance above 0 and finite"):
+        markings(ohms, tolerance=0.05)
 
 
 @pytest.mark.parametrize(
-    ("text", "ohms"), [("2M", 2e6), ("0R22", 0.22), (" 4K7\n", 4700.0), ("4700R", 4700.0)]
+    ("text", "readings"),
+    [
+        # One kind alone: check values.
+        ("4K7J", [(LETTER, 4700.0, 0.05)]),
+        ("10K", [(LETTER, 1e4, None)]),
+        ("472", [(THREE, 4700.0, None)]),
+        ("4701", [(FOUR, 4700.0, None)]),
+        ("01C", [(E96, 1e4, None)]),
+        ("yellow violet red gold", [(BANDS, 4700.0, 0.05)]),
+        ("Yellow-violet-red", [(BANDS, 4700.0, 0.2)]),
+        (" 39D ", [(E96, 249e3, None)]),
+        # Two kinds that agree.
+        ("4R7", [(LETTER, 4.7, None), (THREE, 4.7, None)]),
+        ("49R9", [(LETTER, 49.9, None), (FOUR, 49.9, None)]),
+        # Two that do not: check values, R for 10⁻²; E96 places 10, 68 and 1 are 124, 499 and 100.
+        ("10R", [(LETTER, 10.0, None), (E96, 1.24, None)]),
+        ("68R", [(LETTER, 68.0, None), (E96, 4.99, None)]),
+        ("01R", [(LETTER, 1.0, None), (E96, 1.0, None)]),
+        ("97R", [(LETTER, 97.0, None)]),
+    ],
 )
-def test_loosely_written_codes_are_read(text: str, ohms: float) -> None:
-    assert read_letter_code(text) == ohms
-
-
-def test_ten_k_is_ten_kilohm_not_a_tolerance() -> None:
-    assert read_letter_code("10K") == 1e4  # check values, "Marking"
+def test_every_reading_of_a_mark_is_returned(
+    text: str, readings: list[tuple[MarkKind, float, float | None]]
+) -> None:
+    assert [(each.kind, each.ohms, each.tolerance) for each in read_mark(text)] == readings
 
 
 @pytest.mark.parametrize(
-    "text",
-    ["", "K", "4700", "4k7", "4m7", "4K7J", "4K7K", "4.7K", "4,7K", "-4K7", "4K 7", "1e3R", "٤K7", "4K7Ω"],
+    ("text", "problem"),
+    [
+        ("", "not a letter code, not a chip mark"),
+        ("4k7", "not a letter code, not a chip mark; read .4k7"),
+        ("4.7 kΩ", "not a letter code, not a chip mark"),
+        ("97C", "not a letter code, E96 has no place 97"),
+        ("1000G", "a resistance outside the letter code, not a chip mark"),
+        ("000", "a zero-ohm mark"),
+        ("0R0", "a zero-ohm mark"),
+        ("black", "a zero-ohm mark"),
+        ("yelow violet red gold", "did you mean yellow"),
+        ("4K7 gold", "'4k7' is no colour of a band"),
+        ("red", "3, 4, 5 or 6 bands are read, not 1"),
+        ("4K7" * 40, "too long for a mark"),
+    ],
 )
-def test_other_text_is_no_letter_code(text: str) -> None:
-    with pytest.raises(QuantityError, match="not a letter code"):
-        read_letter_code(text)
+def test_text_without_a_reading_is_an_error_that_says_why(text: str, problem: str) -> None:
+    with pytest.raises(QuantityError, match=f"{problem}.*allowed: (a letter code in capitals|3 to 6 of)"):
+        read_mark(text)
 
 
-@pytest.mark.parametrize("text", ["0R", "R0", "L09", "1000G", "9" * 400 + "G", "R" + "0" * 400 + "1"])
-def test_value_outside_the_code_is_not_read(text: str) -> None:
-    with pytest.raises(QuantityError, match="outside the letter code"):
-        read_letter_code(text)
-
-
-@pytest.mark.parametrize("ohms", [0.0, -1.0, 9.9e-5, 1e12, inf, nan])
-def test_value_outside_the_code_is_not_written(ohms: float) -> None:
-    with pytest.raises(UsageError, match=r"from 0\.1 mΩ to below 1 TΩ"):
-        letter_code(ohms)
-
-
-@given(st.sampled_from(load_series("E96").mantissas), st.integers(-4, 11))
-def test_every_e96_value_survives_the_round_trip(mantissa: Decimal, decade: int) -> None:
+@given(
+    st.sampled_from([*load_series("E96").mantissas, *load_series("E24").mantissas]),
+    st.integers(-1, 8),
+    st.sampled_from([None, 0.001, 0.01, 0.02, 0.03, 0.05, 0.2]),
+    st.sampled_from([None, 25e-6, 100e-6, 200e-6]),
+)
+def test_every_mark_of_a_part_can_be_read_as_that_part(
+    mantissa: Decimal, decade: int, tolerance: float | None, tempco: float | None
+) -> None:
     ohms = float(mantissa.scaleb(decade))
-    code = letter_code(ohms)
-    assert read_letter_code(code) == ohms
-    assert 3 <= len(code) <= 4  # three figures at most, two at least, and the letter
+    marks = markings(ohms, tolerance=tolerance, tempco=tempco)
+    written = [marks.letter_code, marks.chip_three, marks.chip_four, marks.chip_e96]
+    written += [" ".join(bands.colours) for bands in (marks.bands, marks.six_bands) if bands.colours]
+    for mark in filter(None, written):
+        own = [each for each in read_mark(mark) if each.ohms == ohms]
+        assert own
+        assert all(each.tolerance in (None, tolerance) for each in own)
+        assert all(each.tempco in (None, tempco) for each in own)
 
 
-@given(st.floats(1e-4, 1e12, exclude_max=True))
-def test_any_resistance_survives_the_round_trip(ohms: float) -> None:
-    assert read_letter_code(letter_code(ohms)) == ohms
-
-
-@given(st.text())
-def test_no_text_gives_anything_but_a_value_or_a_quantity_error(text: str) -> None:
+@given(st.text() | st.text("0123456789RKMLGJABCred -,", max_size=6))
+def test_no_text_gives_anything_but_readings_or_a_quantity_error(text: str) -> None:
     try:
-        ohms = read_letter_code(text)
+        readings = read_mark(text)
     except QuantityError as error:
-        assert repr(text) in str(error)
+        assert error.allowed
     else:
-        assert 1e-4 <= ohms < 1e12
+        assert readings
