@@ -6,7 +6,7 @@ from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
     from biasband.errors import BadlyWritten, BiasbandError, PhysicallyImpossible, UsageError
-    from biasband.files.stage_file import read_stage
+    from biasband.signoff.intake import read_stage
     from biasband.signoff.study import corners, design, review, snap, spread
     from biasband.stage import Stage
 
@@ -18,7 +18,7 @@ _ROOMS = {
     "UsageError": "errors",
     "corners": "signoff.study",
     "design": "signoff.study",
-    "read_stage": "files.stage_file",
+    "read_stage": "signoff.intake",
     "review": "signoff.study",
     "snap": "signoff.study",
     "spread": "signoff.study",

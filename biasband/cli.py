@@ -9,6 +9,7 @@ from __future__ import annotations
 
 import functools
 from collections.abc import Callable, Sequence
+from functools import partial
 from typing import TYPE_CHECKING, Annotated, Any, ParamSpec
 
 import typer
@@ -17,9 +18,10 @@ from biasband.constants import BOARDS, MOST_BOARDS, VERSION
 from biasband.errors import BiasbandError, UsageError
 
 if TYPE_CHECKING:
-    from biasband.parts.series import Snap
     from biasband.show.summary import Attempt
     from biasband.show.table import Report
+    from biasband.signoff.parts_list import PartLine
+    from biasband.stage import Stage
     from biasband.values.choosing import Design
 
 PASSED, NOT_PASSED, BAD_INPUT, INTERRUPTED = 0, 1, 2, 130
@@ -44,8 +46,25 @@ Seed = Annotated[int, typer.Option("--seed", min=0, help="Which random numbers a
 NewFile = Annotated[
     str | None, typer.Option("--write", metavar="FILE", help="A new stage file with the values frozen.")
 ]
-Resistances = Annotated[list[str], typer.Argument(metavar="VALUE...", help='Such as 4k7 or "130 ohm".')]
-SeriesName = Annotated[str, typer.Option("--series", help="A preferred series, E3 to E192.")]
+Resistances = Annotated[
+    list[str], typer.Argument(metavar="VALUE...", help='Such as 4k7, "130 ohm", 4K7J, 01C or "red red gold".')
+]
+SeriesName = Annotated[
+    str, typer.Option("--series", help="A preferred series, E3 to E192, or one of --tables.")
+]
+PartsFile = Annotated[
+    str | None, typer.Option("--parts", metavar="FILE", help="A new CSV file: the parts list to order from.")
+]
+Tables = Annotated[
+    str | None, typer.Option("--tables", metavar="DIR", help="A folder of series tables of your own.")
+]
+StockList = Annotated[
+    str | None, typer.Option("--stock", metavar="FILE", help="A stock list (CSV) to choose from.")
+]
+Kept = Annotated[
+    list[str] | None,
+    typer.Option("--keep", metavar="NAME=VALUE", help="A value for this run, as in RC=3k3 (repeatable)."),
+]
 Arguments = ParamSpec("Arguments")
 
 
@@ -77,16 +96,33 @@ def _complain(text: str) -> None:
 
 
 @command
-def review(stages: StageFiles, json: AsJson = False, boards: BoardCount = BOARDS, seed: Seed = 1) -> int:
+def review(
+    stages: StageFiles,
+    json: AsJson = False,
+    boards: BoardCount = BOARDS,
+    seed: Seed = 1,
+    parts: PartsFile = None,
+    tables: Tables = None,
+    stock: StockList = None,
+    keep: Kept = None,
+) -> int:
     """Hold stages against what varies: parts, margins, verdict. Of several, one line each."""
     from biasband.show import export, report
     from biasband.show.output import watched
 
     paths = _stage_files(stages)
-    attempts = [_attempt(path, boards, seed) for path in watched(paths, doing="reviewing")]
+    if parts is not None and len(paths) > 1:
+        raise UsageError(f"--parts: the parts list of one stage; read {len(paths)} stages")
+    read = partial(_read, tables=tables, stock=stock, keep=keep)
+    attempts = [
+        _attempt(path, read, boards=boards, seed=seed, progress=progress)
+        for path, progress in watched(paths, doing="reviewing")
+    ]
     for attempt in attempts:
         _complain(attempt.problem)
     first = attempts[0].review
+    if parts is not None and first is not None:
+        _write_parts(parts, first.parts_list)
     if paths != stages or len(paths) > 1:
         _put(json, lambda: export.summary_json(attempts), lambda: report.summary_report(attempts))
     elif first is not None:
@@ -95,61 +131,105 @@ def review(stages: StageFiles, json: AsJson = False, boards: BoardCount = BOARDS
 
 
 @command
-def design(stage: StageFile, json: AsJson = False, write: NewFile = None) -> int:
+def design(
+    stage: StageFile,
+    json: AsJson = False,
+    write: NewFile = None,
+    parts: PartsFile = None,
+    tables: Tables = None,
+    stock: StockList = None,
+    keep: Kept = None,
+) -> int:
     """Show ideal values with their formulas and the preferred parts; write the stage with them frozen."""
-    from biasband.files.stage_file import read_stage
     from biasband.show import export, report
+    from biasband.show.output import bar
     from biasband.signoff import study
+    from biasband.signoff.parts_list import parts_list
 
-    result = study.design(read_stage(stage))
+    with bar("choosing values") as progress:
+        result = study.design(_read(stage, tables, stock, keep), progress=progress)
     if write is not None:
-        _write_frozen(stage, result, write)
+        _write_frozen(stage, result, write, tables)
+    if parts is not None:
+        _write_parts(parts, parts_list(result, {}))
     _put(json, lambda: export.design_json(result), lambda: report.design_report(result))
     return PASSED
 
 
 @command
-def snap(values: Resistances, series: SeriesName = "E24", json: AsJson = False) -> int:
-    """Find the preferred values nearest to resistances, and their codes."""
+def snap(
+    values: Resistances,
+    series: SeriesName = "E24",
+    tables: Tables = None,
+    stock: StockList = None,
+    pair: Annotated[bool, typer.Option("--pair", help="Pairs in series and parallel, too.")] = False,
+    tolerance: Annotated[
+        str | None, typer.Option("--tolerance", help="That of the parts; else the series' usual one.")
+    ] = None,
+    mark: Annotated[bool, typer.Option("--mark", help="Read digits alone as a chip's mark.")] = False,
+    json: AsJson = False,
+) -> int:
+    """Find the preferred values nearest to resistances; read codes and marks of parts."""
+    from biasband.quantity import Kind, parse
     from biasband.show import export, report
+    from biasband.signoff.snapping import snap_texts
 
-    snaps = _snapped(values, series)
-    _put(json, lambda: export.snap_json(snaps), lambda: report.snap_report(snaps))
+    share = None if tolerance is None else parse(tolerance, Kind.RATIO)
+    found = snap_texts(
+        values, series=series, tables=tables, stock=stock, tolerance=share, as_marks=mark, pair=pair
+    )
+    _put(json, lambda: export.snap_json(found), lambda: report.snap_report(found))
     return PASSED
 
 
 @command
-def corners(stage: StageFile, json: AsJson = False) -> int:
+def corners(
+    stage: StageFile,
+    json: AsJson = False,
+    tables: Tables = None,
+    stock: StockList = None,
+    keep: Kept = None,
+) -> int:
     """Evaluate every corner: the extremes of each quantity, and where they are."""
-    from biasband.files.stage_file import read_stage
+    from biasband.margins.holding import words
     from biasband.show import export, report
+    from biasband.show.output import bar
     from biasband.signoff import study
 
-    found = study.corners(read_stage(stage))
-    words = study.words(found.design.stage)
+    with bar("looking into every corner") as progress:
+        found = study.corners(_read(stage, tables, stock, keep), progress=progress)
+    vocabulary = words(found.design.stage)
     _put(
         json,
-        lambda: export.corners_json(found.design, found.corners, words),
-        lambda: report.corners_report(found.design, found.corners, words),
+        lambda: export.corners_json(found.design, found.corners, vocabulary),
+        lambda: report.corners_report(found.design, found.corners, vocabulary),
     )
     return PASSED
 
 
 @command
-def spread(stage: StageFile, json: AsJson = False, boards: BoardCount = BOARDS, seed: Seed = 1) -> int:
+def spread(
+    stage: StageFile,
+    json: AsJson = False,
+    boards: BoardCount = BOARDS,
+    seed: Seed = 1,
+    tables: Tables = None,
+    stock: StockList = None,
+    keep: Kept = None,
+) -> int:
     """Sample boards, each at every point of use: mean, deviation and quantiles of each quantity."""
-    from biasband.files.stage_file import read_stage
+    from biasband.margins.holding import words
     from biasband.show import export, report
-    from biasband.show.output import busy
+    from biasband.show.output import bar
     from biasband.signoff import study
 
-    with busy(f"sampling {boards} boards"):
-        drawn = study.spread(read_stage(stage), boards=boards, seed=seed)
-    words = study.words(drawn.design.stage)
+    with bar(f"sampling {boards} boards") as progress:
+        read = _read(stage, tables, stock, keep)
+        drawn = study.spread(read, boards=boards, seed=seed, progress=progress)
     _put(
         json,
         lambda: export.spread_json(drawn.design, drawn.boards),
-        lambda: report.spread_report(drawn.design, drawn.boards, words),
+        lambda: report.spread_report(drawn.design, drawn.boards, words(drawn.design.stage)),
     )
     return PASSED
 
@@ -166,13 +246,24 @@ def _put(json: bool, as_data: Callable[[], Any], as_report: Callable[[], Report]
         show(as_report())
 
 
-def _attempt(path: str, boards: int, seed: int) -> Attempt:
-    from biasband.files.stage_file import read_stage
+def _read(path: str, tables: str | None, stock: str | None, keep: Sequence[str] | None) -> Stage:
+    """Read a stage file and what the command line adds to it."""
+    from biasband.signoff.intake import read_stage
+
+    pairs = [text.partition("=") for text in keep or ()]
+    wrong = ["".join(pair) for pair in pairs if not (pair[0] and pair[2])]
+    if wrong:
+        raise UsageError(f"--keep: not NAME=VALUE, as in RC=3k3; read {', '.join(map(repr, wrong))}")
+    values = {name.strip(): value.strip() for name, _, value in pairs}
+    return read_stage(path, tables=tables, stock=stock, keep=values)
+
+
+def _attempt(path: str, read: Callable[[str], Stage], **how: Any) -> Attempt:
     from biasband.show.summary import Attempt
     from biasband.signoff import study
 
     try:
-        return Attempt(path, study.review(read_stage(path), boards=boards, seed=seed))
+        return Attempt(path, study.review(read(path), **how))
     except BiasbandError as error:
         return Attempt(path, None, str(error))
 
@@ -193,31 +284,22 @@ def _stage_files(names: Sequence[str]) -> list[str]:
     return [path for files in found for path in files.stages]
 
 
-def _snapped(values: Sequence[str], series: str) -> list[Snap]:
-    """Snap every value; all faults are reported at once."""
-    from biasband.files.series_files import load_series
-    from biasband.parts.series import nearest
-    from biasband.quantity import Kind, parse
-
-    preferred = load_series(series)
-    snaps, faults = [], []
-    for text in values:
-        try:
-            snaps.append(nearest(preferred, parse(text, Kind.RESISTANCE)))
-        except BiasbandError as error:
-            faults.append(str(error))
-    if faults:
-        raise UsageError("\n".join(dict.fromkeys(faults)))
-    return snaps
-
-
-def _write_frozen(path: str, result: Design, new_path: str) -> None:
+def _write_frozen(path: str, result: Design, new_path: str, tables: str | None) -> None:
+    from biasband.files.series_folder import load_tables
     from biasband.files.stage_writer import frozen_text, write_new
     from biasband.quantity import Kind, format_exact
 
     values = {part.name: format_exact(part.value, Kind.RESISTANCE) for part in result.parts}
-    write_new(new_path, frozen_text(path, values, new_path=new_path))
+    write_new(new_path, frozen_text(path, values, new_path=new_path, tables=load_tables(tables)))
     _complain(f"{new_path}: written, {len(values)} values frozen")
+
+
+def _write_parts(path: str, lines: Sequence[PartLine]) -> None:
+    from biasband.files.stage_writer import write_new
+    from biasband.show.parts_csv import parts_csv
+
+    write_new(path, parts_csv(lines))
+    _complain(f"{path}: written, {len(lines)} kinds of part")
 
 
 def _show_version(asked: bool) -> None:

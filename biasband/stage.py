@@ -7,7 +7,9 @@ rests on an unstated variation is inconclusive.
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass, field
+from decimal import Decimal
 from typing import Literal
 
 from biasband.constants import ASSUMED_SATURATION_VOLTAGE, KELVIN_OFFSET, REFERENCE_TEMPERATURE
@@ -16,7 +18,35 @@ from biasband.errors import UsageError
 Polarity = Literal["npn", "pnp"]
 Varies = Literal["in use", "by board"]
 Method = Literal["corners", "rss", "yield"]
-Distribution = Literal["uniform", "normal", "triangular"]
+Snapping = Literal["margin", "nearest"]
+PlainName = Literal["uniform", "normal", "triangular", "sine"]
+DistributionName = Literal[PlainName, "hollow", "batch"]
+
+
+@dataclass(frozen=True, kw_only=True)
+class Distribution:
+    """How a figure that differs from board to board lies between its limits.
+
+    `normal` means limits at ±3σ, cut there; `sine` the arc-sine law, limits likeliest; `hollow` that
+    parts within `hollow_within` of nominal are missing; `batch` that boards lie within
+    ±`within_batch` of their batch's mean, which differs from batch to batch. The two companions are
+    shares for resistors and for h_FE (there a ratio: 5 % is a factor of 1.05 either way), volts for
+    V_BE. Raises UsageError for a companion without its name or a name without its companion.
+    """
+
+    name: DistributionName = "uniform"
+    hollow_within: float | None = None
+    within_batch: float | None = None
+
+    def __post_init__(self) -> None:
+        for name, key in COMPANIONS.items():
+            value = getattr(self, key)
+            if (value is not None) != (self.name == name) or (value is not None and not value >= 0.0):
+                raise UsageError(f'distribution: "{name}" goes with {key}, from 0')
+
+
+COMPANIONS: Mapping[DistributionName, str] = {"hollow": "hollow_within", "batch": "within_batch"}
+"""The figure that each of these distributions cannot do without."""
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -25,12 +55,14 @@ class Limits:
 
     `stated` is False where the file gave a single figure and no variation. Half the probability lies
     on each side of the nominal value, which is the typical one where there is one, else the mean.
+    `distribution` matters only where the figure differs from board to board.
     """
 
     low: float
     nominal: float
     high: float
     stated: bool = True
+    distribution: Distribution = Distribution()
 
     @classmethod
     def exactly(cls, value: float, *, stated: bool = True) -> Limits:
@@ -58,6 +90,7 @@ class Ratings:
     gain: Limits
     base_emitter_voltage: Limits
     leakage: float = 0.0
+    leakage_distribution: Distribution = Distribution()
     saturation_voltage: float | None = None
     thermal_resistance: float | None = None
     max_collector_emitter: float | None = None
@@ -108,9 +141,12 @@ AnyTransistor = Transistor | IdealTransistor
 class Resistor:
     """One resistor of the stage: [Ω], tolerances as fractions, tempco [1/K], rating [W].
 
-    `value` None means that biasband chooses it. `tolerance_stated` is False where the file says
-    nothing about tolerance. Resistors of one `group` share all of their tempco but `tracking`
-    [1/K]. The rating is derated linearly from `derate_from` [K] to zero at `derate_to` [K].
+    `value` None means that biasband chooses it, from those up to `search_steps` to either side of the
+    ideal one (None: as many as are usual for its series); `kept`, that the value holds for this run
+    only. `pairs` asks for pairs that come near the ideal value. `tolerance_stated` is False where the
+    file says nothing about tolerance. Resistors of one `group` share all of their tempco but
+    `tracking` [1/K], and their batch mean where their tolerance (`distribution`) is drawn by batch.
+    The rating is derated linearly from `derate_from` [K] to zero at `derate_to` [K].
     """
 
     name: str
@@ -123,7 +159,12 @@ class Resistor:
     power_rating: float | None = None
     group: str | None = None
     tracking: float | None = None
-    distribution: Distribution = "uniform"
+    distribution: Distribution = Distribution()
+    life_drift_distribution: Distribution = Distribution()
+    tempco_distribution: Distribution = Distribution()
+    search_steps: int | None = None
+    pairs: bool = False
+    kept: bool = False
     derate_from: float = 70.0 + KELVIN_OFFSET
     derate_to: float = 155.0 + KELVIN_OFFSET
 
@@ -175,11 +216,59 @@ class FileRecord:
 
 
 @dataclass(frozen=True, kw_only=True)
+class Series:
+    """A series of preferred values: ascending `mantissas`, each at least 1 and below 10.
+
+    `usual_tolerance` is the tolerance that the series is made for, as a fraction (E24: 0.05); None
+    where there is no single figure. What a part has is what its data sheet says.
+    """
+
+    name: str
+    mantissas: tuple[Decimal, ...]
+    usual_tolerance: float | None = None
+
+    def exact_at(self, place: int) -> Decimal:
+        """The preferred value at a place, in decimal."""
+        decade, index = divmod(place, len(self.mantissas))
+        return self.mantissas[index].scaleb(decade)
+
+    def value_at(self, place: int) -> float:
+        """The preferred value at a place: the double nearest to the decimal value."""
+        return float(self.exact_at(place))
+
+
+@dataclass(frozen=True, kw_only=True)
+class StockItem:
+    """Resistors of one kind in the house: [Ω], a fraction, [1/K], [W]; `price` of one, in any currency.
+
+    What is None is not stated. Two items may differ in nothing but their `location`.
+    """
+
+    value: float
+    tolerance: float | None = None
+    tempco: float | None = None
+    power_rating: float | None = None
+    quantity: int | None = None
+    price: float | None = None
+    location: str = ""
+
+
+@dataclass(frozen=True, kw_only=True)
+class Stock:
+    """The resistors in the house, as their list has them, and the file of that list."""
+
+    items: tuple[StockItem, ...]
+    file: FileRecord
+
+
+@dataclass(frozen=True, kw_only=True)
 class Stage:
     """A one-transistor stage, its surroundings and what is asked of it.
 
     `resistors` holds exactly those that the topology needs, in the topology's order. `ambient` is
-    in [K].
+    in [K]. `stock` None means that any value of a resistor's series can be had. `snapping` says how
+    values are chosen: for the best margin, or nearest to the ideal ones. `own_series` are the user's own,
+    beside biasband's.
     """
 
     title: str
@@ -197,7 +286,19 @@ class Stage:
     document: str = ""
     revision: str = ""
     designed_by: str = ""
+    boards_per_batch: int | None = None
+    stock: Stock | None = None
+    snapping: Snapping = "margin"
+    own_series: tuple[Series, ...] = ()
     files: tuple[FileRecord, ...] = ()
+
+    @property
+    def drawn_by_batch(self) -> bool:
+        """Whether any contributor has a batch mean, so that boards of one batch are alike."""
+        transistor = self.transistor
+        drawn = [transistor.gain.distribution, transistor.base_emitter_voltage.distribution]
+        drawn += [resistor.distribution for resistor in self.resistors]
+        return any(distribution.name == "batch" for distribution in drawn)
 
     def resistor(self, name: str) -> Resistor:
         """The resistor of that name; KeyError where the stage has none."""

@@ -9,10 +9,15 @@ from pathlib import Path
 import pytest
 
 from biasband.margins.checks import NotMade, Standing
+from biasband.margins.holding import Holding, Nominal
 from biasband.margins.records import Evidence, Margin
 from biasband.margins.verdict import Verdict
-from biasband.signoff.study import CornerStudy, Nominal, Review, SpreadStudy
+from biasband.signoff.parts_list import PartLine
+from biasband.signoff.snapping import Snapped, SnapStudy
+from biasband.signoff.study import CornerStudy, Review, SpreadStudy
 from biasband.values.choosing import Design, PartChoice
+from biasband.values.joint import Contender, Contest
+from biasband.values.pairing import Offer
 from biasband.variation.causes import Causes
 from biasband.variation.corners import Corners, Extreme, Range
 from biasband.variation.rss import Interval
@@ -23,8 +28,9 @@ GLOSSARY = TEXT.split("## Glossary")[1].split("\n## ")[0]
 WORDS = set(re.findall(r"[A-Za-z_]+", GLOSSARY))
 
 RECORDS = (
-    Boards, Causes, Corners, CornerStudy, Design, Evidence, Extreme, Interval, Margin, Nominal, NotMade,
-    PartChoice, Range, Review, Spread, SpreadStudy, Standing, Verdict,
+    Boards, Causes, Contender, Contest, Corners, CornerStudy, Design, Evidence, Extreme, Holding, Interval,
+    Margin, Nominal, NotMade, Offer, PartChoice, PartLine, Range, Review, Snapped, SnapStudy, Spread,
+    SpreadStudy, Standing, Verdict,
 )  # fmt: skip
 
 

@@ -7,15 +7,16 @@ what is wrong and what is allowed.
 from __future__ import annotations
 
 import re
-from collections.abc import Callable, Collection
+from collections.abc import Callable, Collection, Mapping
 from dataclasses import dataclass
 from typing import Annotated, Any, Literal
 
-from pydantic import AfterValidator, BeforeValidator
+from pydantic import AfterValidator, BeforeValidator, ValidationInfo
 
 from biasband.constants import HOTTEST_JUNCTION
 from biasband.errors import QuantityError
 from biasband.files.ledger import nearest, shown
+from biasband.parts.series import MOST_STEPS
 from biasband.quantity import Kind, Toleranced, format_quantity, parse, parse_toleranced
 
 _SMALLEST, _LARGEST = 1e-21, 1e15
@@ -77,14 +78,24 @@ def within(
 def choice(known: Callable[[], Collection[str]]) -> BeforeValidator:
     """Make a reader of one word out of those that `known` returns."""
 
-    def read(value: Any) -> str:
-        words = known()
-        if isinstance(value, str) and value in words:
-            return value
-        hint = nearest(value, words) if isinstance(value, str) else ""
-        raise Refusal("unknown", allowed=", ".join(words), hint=hint)
+    return BeforeValidator(lambda value: _chosen(value, known()))
+
+
+def choice_of_caller(name: str) -> BeforeValidator:
+    """Make a reader of one word out of those that the caller of the check holds ready under a name."""
+
+    def read(value: Any, info: ValidationInfo) -> str:
+        held: Mapping[str, Collection[str]] = info.context or {}
+        return _chosen(value, held[name])
 
     return BeforeValidator(read)
+
+
+def _chosen(value: object, words: Collection[str]) -> str:
+    if isinstance(value, str) and value in words:
+        return value
+    hint = nearest(value, words) if isinstance(value, str) else ""
+    raise Refusal("unknown", allowed=", ".join(words), hint=hint)
 
 
 def _toleranced(kind: Kind, *, above: float | None = None) -> BeforeValidator:
@@ -97,7 +108,8 @@ def _toleranced(kind: Kind, *, above: float | None = None) -> BeforeValidator:
     return BeforeValidator(read)
 
 
-def _one_line(text: str) -> str:
+def one_line(text: str) -> str:
+    """Return a text with every run of blanks made one; raise Refusal where it cannot be printed."""
     line = " ".join(text.split())
     if re.search(r"[\x00-\x1f\x7f-\x9f]", line):
         raise Refusal("control characters in a text", allowed="printable text")
@@ -114,6 +126,18 @@ def _emitter_voltage(value: Any) -> float | SupplyOver:
         raise Refusal(error.problem, allowed='a voltage above 0 ("1 V"), or "supply / 9"') from None
 
 
+def _whole(value: Any) -> int:
+    number = within(parse(value, Kind.NUMBER), value, Kind.NUMBER, least=1.0)
+    if not number.is_integer():
+        raise QuantityError(shown(value), "not a whole number", "a whole number from 1")
+    return int(number)
+
+
+def _steps(value: Any) -> int:
+    within(parse(value, Kind.NUMBER), value, Kind.NUMBER, least=1.0, below=MOST_STEPS + 1.0)
+    return _whole(value)
+
+
 COLLECTOR_PLACES = ("mid-swing", "max-swing")
 
 
@@ -128,7 +152,7 @@ def _collector(value: Any) -> Any:
         raise Refusal(error.problem, allowed=allowed, hint=hint) from None
 
 
-Text = Annotated[str, AfterValidator(_one_line)]
+Text = Annotated[str, AfterValidator(one_line)]
 Volts = Annotated[float, figure(Kind.VOLTAGE)]
 PositiveVolts = Annotated[float, figure(Kind.VOLTAGE, above=0.0)]
 VoltsFromZero = Annotated[float, figure(Kind.VOLTAGE, least=0.0)]
@@ -153,5 +177,7 @@ Tempco = Annotated[float, figure(Kind.RELATIVE_SLOPE, least=0.0, below=0.01)]
 Share = Annotated[float, figure(Kind.RATIO, least=0.0, below=1.0)]
 ProperShare = Annotated[float, figure(Kind.RATIO, above=0.0, below=1.0)]
 PositiveNumber = Annotated[float, figure(Kind.NUMBER, above=0.0)]
+Count = Annotated[int, BeforeValidator(_whole)]
+Steps = Annotated[int, BeforeValidator(_steps)]
 EmitterVoltage = Annotated[float | SupplyOver, BeforeValidator(_emitter_voltage)]
 Collector = Annotated[float | Literal["mid-swing", "max-swing"], BeforeValidator(_collector)]

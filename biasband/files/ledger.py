@@ -15,7 +15,7 @@ _LONGEST_INTEGER = 200
 
 
 class Ledger:
-    """The faults found so far in a stage file and in the transistor's own file, if it has one."""
+    """The faults found so far in a stage file and in the files that it names."""
 
     def __init__(self, stage_file: TomlFile, part_file: TomlFile | None = None) -> None:
         self.stage_file = stage_file
@@ -38,7 +38,9 @@ class Ledger:
     def faults(self) -> tuple[Fault, ...]:
         """Every fault once: the stage file's first, each file's from top to bottom."""
         here = self.stage_file.path
-        return tuple(sorted(self._faults, key=lambda fault: (fault.file != here, fault.line or 0)))
+        return tuple(
+            sorted(self._faults, key=lambda fault: (fault.file != here, fault.file, fault.line or 0))
+        )
 
     def _held_by(self, path: KeyPath) -> tuple[TomlFile, KeyPath]:
         part = self.part_file

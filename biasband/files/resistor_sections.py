@@ -2,13 +2,20 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Collection, Mapping
 from dataclasses import dataclass
 from typing import Any
 
 from biasband.circuit.topology import EMITTER_PARTS, TOPOLOGIES, Topology
+from biasband.files.distribution_keys import RESISTOR_KEYS, Said, check_groups, resistor_distributions
 from biasband.files.ledger import Ledger, nearest, shown
-from biasband.files.stage_models import ResistorDefaults, ResistorSection
+from biasband.files.stage_models import (
+    OF_THE_WHOLE,
+    SERIES,
+    ResistorDefaults,
+    ResistorSection,
+    ResistorsSection,
+)
 from biasband.files.toml_lines import KeyPath
 from biasband.files.validation import check_section
 from biasband.quantity import Kind, format_quantity
@@ -22,9 +29,11 @@ class Needs:
     """What the rest of the stage file means for its resistors.
 
     `topology` None means that it is not known, so that any topology's resistors may be right.
+    `series` holds the names of the preferred series that there are.
     """
 
     topology: Topology | None
+    series: Collection[str]
     has_target: bool
     target_has_emitter_voltage: bool
 
@@ -37,12 +46,14 @@ def read_resistors(table: object, needs: Needs, ledger: Ledger) -> tuple[Resisto
     known = _known_names(needs.topology)
     tables = _own_tables(table)
     rest = {key: value for key, value in table.items() if key not in tables}
-    defaults = _read_defaults(rest, known, ledger)
-    own = {name: _read_own(name, tables[name], known, ledger) for name in tables}
+    defaults = _read_defaults(rest, known, needs, ledger)
+    own = {name: _read_own(name, tables[name], known, needs, ledger) for name in tables}
     _check_emitter_parts(own, ledger)
     names = _names_present(needs, own)
     _check_values(names, own, needs, ledger)
-    return tuple(_resistor(name, own.get(name), defaults, ledger) for name in names)
+    resistors = tuple(_resistor(name, own.get(name), defaults, ledger) for name in names)
+    check_groups([Said(name, own.get(name), defaults) for name in names], resistors, ledger)
+    return resistors
 
 
 def _known_names(topology: Topology | None) -> tuple[str, ...]:
@@ -53,25 +64,27 @@ def _known_names(topology: Topology | None) -> tuple[str, ...]:
 
 
 def _own_tables(table: Mapping[str, Any]) -> dict[str, Any]:
-    defaults = ResistorDefaults.model_fields
+    defaults = ResistorsSection.model_fields
     return {key: value for key, value in table.items() if isinstance(value, dict) and key not in defaults}
 
 
-def _read_defaults(table: dict[str, Any], known: tuple[str, ...], ledger: Ledger) -> ResistorDefaults | None:
+def _read_defaults(
+    table: dict[str, Any], known: tuple[str, ...], needs: Needs, ledger: Ledger
+) -> ResistorsSection | None:
     for name in [key for key in table if key in known]:
         hint = f'write [resistors.{name}] with value = "3k3"'
         ledger.add(("resistors", name), "not a table", read=shown(table.pop(name)), hint=hint)
-    return check_section(ResistorDefaults, table, ("resistors",), ledger)
+    return check_section(ResistorsSection, table, ("resistors",), ledger, words={SERIES: needs.series})
 
 
 def _read_own(
-    name: str, table: object, known: tuple[str, ...], ledger: Ledger
+    name: str, table: object, known: tuple[str, ...], needs: Needs, ledger: Ledger
 ) -> ResistorSection | None:
     path: KeyPath = ("resistors", name)
     if name not in known:
         hint = nearest(name, known)
         ledger.add(path, "no such resistor", allowed=", ".join(known), hint=hint)
-    section = check_section(ResistorSection, table, path, ledger)
+    section = check_section(ResistorSection, table, path, ledger, words={SERIES: needs.series})
     toleranced = section is not None and section.value is not None and section.value.tolerance is not None
     if section is not None and toleranced and section.tolerance is not None:
         problem = 'given twice: "value" has a tolerance of its own'
@@ -126,9 +139,12 @@ def _resistor(
     given: dict[str, Any] = {}
     for section in (defaults, own):
         given |= {} if section is None else {key: value for key, value in section if value is not None}
+    given = {key: value for key, value in given.items() if key not in OF_THE_WHOLE}
     value = given.pop("value", None)
     if value is not None and value.tolerance is not None:
         given["tolerance"] = value.tolerance
+    drawn = resistor_distributions(Said(name, own, defaults), given, ledger)
+    given = {key: figure for key, figure in given.items() if key not in RESISTOR_KEYS} | drawn
     resistor = Resistor(
         name=name,
         value=None if value is None else value.value,
@@ -141,7 +157,8 @@ def _resistor(
 
 def _check_tracking(resistor: Resistor, own: ResistorSection | None, ledger: Ledger) -> None:
     if resistor.tracking is None:
-        if resistor.group is not None and resistor.tempco > 0.0:
+        by_batch = resistor.distribution.name == "batch"  # what such a group shares is its batch mean
+        if resistor.group is not None and resistor.tempco > 0.0 and not by_batch:
             in_own = own is not None and own.group is not None
             path: KeyPath = ("resistors", resistor.name, "group") if in_own else ("resistors", "group")
             ledger.add(path, "a group without tracking", hint='what the members share: tracking = "30 ppm/K"')

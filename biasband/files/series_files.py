@@ -6,11 +6,7 @@ is also what an editable install reads.
 
 from __future__ import annotations
 
-import csv
-import re
 from collections.abc import Mapping
-from dataclasses import dataclass
-from decimal import Decimal
 from functools import cache
 from importlib import resources
 from importlib.resources.abc import Traversable
@@ -18,40 +14,24 @@ from pathlib import Path
 from types import MappingProxyType
 
 from biasband.errors import BadlyWritten, Fault, UsageError
+from biasband.files.csv_file import CsvFile, table_of
+from biasband.files.series_rows import (
+    INDEX_COLUMNS,
+    TABLE_COLUMNS,
+    SeriesEntry,
+    read_entries,
+    read_mantissas,
+)
+from biasband.files.text_file import decoded, read_text, refuse
 from biasband.parts.series import Series
 
 INDEX = "series.csv"
-INDEX_COLUMNS = ("series", "values_per_decade", "usual_tolerance_percent")
-TABLE_COLUMNS = ("mantissa",)
-
-# Six figures at most, so that a mantissa survives the way through a double unchanged.
-_MANTISSA = re.compile(r"[0-9]+(\.[0-9]{1,5})?")
-_COUNT = re.compile(r"[1-9][0-9]{0,3}")
-_PERCENT = re.compile(r"([0-9]{1,2}(\.[0-9]+)?)?")
-
-
-@dataclass(frozen=True, kw_only=True)
-class SeriesEntry:
-    """A row of the index: what a series is called, how many values it has, what it is made for.
-
-    `usual_tolerance` is a fraction, None where the index leaves it empty.
-    """
-
-    name: str
-    values_per_decade: int
-    usual_tolerance: float | None
-
-
-@dataclass(frozen=True)
-class _Row:
-    """A row as read, and its line in the file (1-based)."""
-
-    line: int
-    cells: tuple[str, ...]
+MOST_ROWS = 9999
+"""A table with more is some other file; no series has as many values a decade."""
 
 
 def load_series(name: str) -> Series:
-    """Load a preferred series by name ("E24"); read once, then kept.
+    """Load a preferred series of biasband's own by name ("E24"); read once, then kept.
 
     Raises UsageError where there is no series of that name, BadlyWritten where its table is faulty.
     """
@@ -63,7 +43,7 @@ def load_series(name: str) -> Series:
 
 @cache
 def load_all() -> Mapping[str, Series]:
-    """Load every preferred series, by name, in the order of the index.
+    """Load every preferred series of biasband's own, by name, in the order of the index.
 
     Raises BadlyWritten where the index or a table is faulty.
     """
@@ -75,13 +55,10 @@ def read_index(folder: Traversable) -> tuple[SeriesEntry, ...]:
 
     Raises BadlyWritten with every faulty row of the index.
     """
-    path = folder / INDEX
-    rows = _read_rows(path, columns=INDEX_COLUMNS)
-    names = [row.cells[0] for row in rows]
-    faults = [fault for number, row in enumerate(rows) for fault in _index_faults(path, row, names[:number])]
-    if faults:
-        raise BadlyWritten(tuple(faults))
-    return tuple(_entry(row) for row in rows)
+    faults: list[Fault] = []
+    entries = read_entries(open_table(folder / INDEX, columns=INDEX_COLUMNS), faults)
+    _raise_any(faults)
+    return entries
 
 
 def read_table(folder: Traversable, entry: SeriesEntry) -> Series:
@@ -90,21 +67,34 @@ def read_table(folder: Traversable, entry: SeriesEntry) -> Series:
     Raises BadlyWritten with every faulty row: each mantissa a plain decimal number, at least 1 and
     below 10, above the one before it, and as many of them as the index says.
     """
-    path = folder / f"{entry.name}.csv"
-    rows = _read_rows(path, columns=TABLE_COLUMNS)
-    faults, mantissas = [], [Decimal(0)]
-    for row in rows:
-        problem = _mantissa_problem(row.cells[0], mantissas[-1])
-        if problem:
-            faults.append(_fault(path, row, "mantissa", problem, row.cells[0]))
-        else:
-            mantissas.append(Decimal(row.cells[0]))
-    if len(rows) != entry.values_per_decade:
-        last = rows[-1] if rows else _Row(1, ())
-        faults.append(_fault(path, last, entry.name, f"{len(rows)} values, not {entry.values_per_decade}"))
-    if faults:
-        raise BadlyWritten(tuple(faults))
-    return Series(name=entry.name, mantissas=tuple(mantissas[1:]), usual_tolerance=entry.usual_tolerance)
+    faults: list[Fault] = []
+    mantissas = read_mantissas(open_table(folder / f"{entry.name}.csv", columns=TABLE_COLUMNS), entry, faults)
+    _raise_any(faults)
+    return Series(name=entry.name, mantissas=mantissas, usual_tolerance=entry.usual_tolerance)
+
+
+def open_table(path: Traversable, *, columns: tuple[str, ...]) -> CsvFile:
+    """Open a comma-separated table; its rows are not looked at.
+
+    Raises BadlyWritten with a single fault for a file that is no table, one whose header is not exactly
+    `columns`, or one with more than 9999 rows.
+    """
+    wanted = "a CSV text"
+    if isinstance(path, Path):
+        text = read_text(path, wanted=wanted)
+    else:  # inside a zipped package
+        text = decoded(str(path), path.read_bytes(), wanted=wanted)
+    table = table_of(text)
+    if table.header != columns:
+        refuse(text.path, "wrong header", line=1, allowed=",".join(columns))
+    if len(table.rows) > MOST_ROWS:
+        refuse(
+            text.path,
+            f"{len(table.rows)} rows",
+            line=table.rows[MOST_ROWS].line,
+            allowed=f"{MOST_ROWS} at most",
+        )
+    return table
 
 
 def tables_folder() -> Traversable:
@@ -123,48 +113,6 @@ def _series(name: str) -> Series:
     return read_table(tables_folder(), _index()[name])
 
 
-def _entry(row: _Row) -> SeriesEntry:
-    name, count, percent = row.cells
-    tolerance = float(Decimal(percent).scaleb(-2)) if percent else None
-    return SeriesEntry(name=name, values_per_decade=int(count), usual_tolerance=tolerance)
-
-
-def _index_faults(path: Traversable, row: _Row, names_above: list[str]) -> list[Fault]:
-    name, count, percent = row.cells
-    checks = (
-        ("series", name, bool(name) and name not in names_above, "missing or given twice"),
-        ("values_per_decade", count, _COUNT.fullmatch(count), "not a count"),
-        ("usual_tolerance_percent", percent, _PERCENT.fullmatch(percent), "not a percentage, nor empty"),
-    )
-    return [_fault(path, row, key, problem, read) for key, read, good, problem in checks if not good]
-
-
-def _mantissa_problem(text: str, before: Decimal) -> str:
-    """What is wrong with a mantissa that follows `before`; empty where nothing is."""
-    if not _MANTISSA.fullmatch(text):
-        return "not a plain number of at most five decimals"
-    if not 1 <= Decimal(text) < 10:
-        return "not at least 1 and below 10"
-    return "" if Decimal(text) > before else f"not above the value before it, {before}"
-
-
-def _fault(path: Traversable, row: _Row, key: str, problem: str, read: str = "") -> Fault:
-    return Fault(str(path), row.line, key, problem, read=repr(read) if read else "")
-
-
-def _read_rows(path: Traversable, *, columns: tuple[str, ...]) -> list[_Row]:
-    """Read a CSV whose header is exactly `columns`; raise BadlyWritten for every row of other width."""
-    try:
-        reader = csv.reader(path.read_text(encoding="utf-8-sig").splitlines())
-        rows = [_Row(reader.line_num, tuple(cells)) for cells in reader]
-    except (OSError, UnicodeDecodeError, csv.Error) as error:
-        raise BadlyWritten((Fault(str(path), None, "", f"cannot be read as a table: {error}"),)) from error
-    wanted = ",".join(columns)
-    if not rows or rows[0].cells != columns:
-        raise BadlyWritten((Fault(str(path), 1, "", "wrong header", allowed=wanted),))
-    odd = [row for row in rows[1:] if len(row.cells) != len(columns)]
-    if odd:
-        raise BadlyWritten(
-            tuple(_fault(path, row, wanted, f"{len(row.cells)} cells, not {len(columns)}") for row in odd)
-        )
-    return rows[1:]
+def _raise_any(faults: list[Fault]) -> None:
+    if faults:
+        raise BadlyWritten(tuple(faults))

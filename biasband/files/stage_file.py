@@ -7,14 +7,16 @@ from __future__ import annotations
 
 import os
 from collections.abc import Callable, Mapping
-from functools import partial
 from typing import Any
 
 from biasband.circuit.topology import EMITTER_PARTS, TOPOLOGIES, Node, Topology
-from biasband.errors import BadlyWritten, Fault, PhysicallyImpossible
-from biasband.files.ledger import Ledger, nearest, shown
+from biasband.errors import BadlyWritten, PhysicallyImpossible
+from biasband.files.distribution_keys import check_batches
+from biasband.files.ledger import Ledger, nearest
+from biasband.files.named_files import read_stock_list, read_transistor_and_file
 from biasband.files.requirement_sections import read_requirements
 from biasband.files.resistor_sections import EMITTER_RESISTOR, Needs, read_resistors
+from biasband.files.series_folder import SeriesTables, load_tables
 from biasband.files.stage_models import DeratingSection, StageSection
 from biasband.files.stage_rules import note_impossibilities
 from biasband.files.stage_sections import (
@@ -23,12 +25,10 @@ from biasband.files.stage_sections import (
     read_signal,
     read_supply,
     read_target,
-    read_transistor,
 )
 from biasband.files.toml_file import TomlFile, read_toml
-from biasband.files.toml_lines import line_of
 from biasband.files.validation import check_section
-from biasband.stage import Resistor, Stage, Transistor
+from biasband.stage import Resistor, Snapping, Stage
 
 COMPULSORY_SECTIONS = ("stage", "supply", "transistor")
 SECTIONS = (
@@ -37,16 +37,17 @@ SECTIONS = (
 )  # fmt: skip
 
 
-def read_stage(path: str | os.PathLike[str]) -> Stage:
-    """Read a stage file, and the transistor's own file where it names one.
+def read_stage(path: str | os.PathLike[str], *, tables: SeriesTables | None = None) -> Stage:
+    """Read a stage file, and the transistor's own file and the stock list where it names them.
 
+    `tables` holds the series that it may name; None means biasband's own.
     Returns: the stage in SI units, with every default filled in and every file read on record.
     Raises: BadlyWritten with every fault where the text does not follow the format; else
     PhysicallyImpossible with every reason why no such stage can exist.
     """
     file = read_toml(path)
     ledger = Ledger(file)
-    stage = _read_sections(file, ledger)
+    stage = _read_sections(file, ledger, load_tables() if tables is None else tables)
     if stage is None or ledger.faults:
         raise BadlyWritten(ledger.faults)
     note_impossibilities(stage, ledger)
@@ -55,27 +56,40 @@ def read_stage(path: str | os.PathLike[str]) -> Stage:
     return stage
 
 
-def _read_sections(file: TomlFile, ledger: Ledger) -> Stage | None:
+def _read_sections(file: TomlFile, ledger: Ledger, tables: SeriesTables) -> Stage | None:
     """Read every section, so that every fault is found; None where a compulsory one is faulty."""
     data = file.data
     _check_names(data, ledger)
     topology = _topology(data)
     records = _records(file, ledger)
-    resistors = read_resistors(data.get("resistors", {}), _needs(data, topology), ledger)
+    resistors = read_resistors(data.get("resistors", {}), _needs(data, topology, tables), ledger)
+    stock = read_stock_list(data.get("resistors"), ledger)
     _check_negative_supply(data, topology, ledger)
     _check_signal(data, topology, resistors, ledger)
     names = tuple(resistor.name for resistor in resistors) or _every_name()
     requirements = read_requirements(data.get("require", []), names, ledger)
     if any(name not in records for name in COMPULSORY_SECTIONS):
         return None
-    files = (file, ledger.part_file) if ledger.part_file else (file,)
-    return Stage(
+    files = [each.record for each in (file, ledger.part_file) if each is not None]
+    files += [] if stock is None else [stock.file]
+    stage = Stage(
         **dict(records.pop("stage")),
         resistors=resistors,
         requirements=requirements,
-        files=tuple(each.record for each in files),
+        stock=stock,
+        snapping=_snapping(data.get("resistors")),
+        own_series=tables.own,
+        files=(*files, *tables.files),
         **records,
     )
+    check_batches(stage, ledger)
+    return stage
+
+
+def _snapping(resistors: object) -> Snapping:
+    """How values are chosen; what is no such word is noted with the other keys of [resistors]."""
+    nearest = isinstance(resistors, dict) and resistors.get("snapping") == "nearest"
+    return "nearest" if nearest else "margin"
 
 
 def _records(file: TomlFile, ledger: Ledger) -> dict[str, Any]:
@@ -85,7 +99,7 @@ def _records(file: TomlFile, ledger: Ledger) -> dict[str, Any]:
         "supply": read_supply,
         "negative_supply": read_negative_supply,
         "ambient": read_ambient,
-        "transistor": partial(_read_transistor, file),
+        "transistor": read_transistor_and_file,
         "target": read_target,
         "signal": read_signal,
         "derating": _read_derating,
@@ -120,10 +134,11 @@ def _topology(data: Mapping[str, Any]) -> Topology | None:
     return TOPOLOGIES.get(name) if isinstance(name, str) else None
 
 
-def _needs(data: Mapping[str, Any], topology: Topology | None) -> Needs:
+def _needs(data: Mapping[str, Any], topology: Topology | None, tables: SeriesTables) -> Needs:
     target = data.get("target")
     return Needs(
         topology=topology,
+        series=tables.series,
         has_target=target is not None,
         target_has_emitter_voltage=isinstance(target, dict) and "emitter_voltage" in target,
     )
@@ -142,42 +157,6 @@ def _check_negative_supply(data: Mapping[str, Any], topology: Topology | None, l
     else:
         users = ", ".join(name for name, each in TOPOLOGIES.items() if each.split_supply)
         ledger.add(("negative_supply",), f"{topology.name} has one supply", hint=f"it goes with {users}")
-
-
-def _read_transistor(file: TomlFile, table: object, ledger: Ledger) -> Transistor | None:
-    """Read [transistor] together with the file that it names; its own keys may not repeat that file's."""
-    if not isinstance(table, dict) or "file" not in table:
-        return read_transistor(table, ledger)
-    own = {key: value for key, value in table.items() if key != "file"}
-    part = _read_part(table["file"], file, ledger)
-    if part is None:
-        return None
-    ledger.part_file = part
-    if "file" in part.data:
-        line = line_of(part.lines, ("file",))
-        ledger.extend((Fault(part.path, line, "file", "a transistor's file cannot name another"),))
-    for key in own:
-        if key in part.data:
-            problem = f"given here and in {part.path}"
-            ledger.add(("transistor", key), problem, allowed="one of the two")
-    from_part = {key: value for key, value in part.data.items() if key != "file"}
-    return read_transistor(from_part | own, ledger)
-
-
-def _read_part(name: object, file: TomlFile, ledger: Ledger) -> TomlFile | None:
-    place = ("transistor", "file")
-    if not isinstance(name, str):
-        ledger.add(place, "not a path", read=shown(name), allowed="a path relative to the stage file")
-        return None
-    try:
-        return read_toml(os.path.join(os.path.dirname(file.path), name))
-    except BadlyWritten as error:
-        fault = error.faults[0]
-        if fault.line is None:
-            ledger.add(place, fault.problem, read=fault.file, allowed=fault.allowed)
-        else:
-            ledger.extend(error.faults)
-        return None
 
 
 def _check_signal(

@@ -12,11 +12,13 @@ from pydantic import BaseModel, BeforeValidator, ConfigDict, Discriminator, Tag
 from biasband.circuit.topology import TOPOLOGIES
 from biasband.errors import QuantityError
 from biasband.files import figures as f
-from biasband.files.figures import Refusal, choice
-from biasband.files.series_files import load_all
+from biasband.files.figures import Refusal, choice, choice_of_caller
 from biasband.parts.derating import PROFILES
 from biasband.quantity import Kind, parse
-from biasband.stage import Distribution, Method, Polarity, Varies
+from biasband.stage import DistributionName, Method, PlainName, Polarity, Snapping, Varies
+
+SERIES = "series"
+"""The name under which the caller of a check holds the series that there are."""
 
 ONE_FIGURE, RANGE = "<one figure>", "<range>"
 """Tags that pydantic puts into an error's place, where a figure may also be given as a range."""
@@ -44,20 +46,48 @@ class Section(BaseModel):
     model_config = ConfigDict(frozen=True, extra="forbid", strict=True)
 
 
+def _in_place(names: tuple[str, ...]) -> BeforeValidator:
+    """Make a reader that gives the reason why another distribution than these cannot be used here."""
+
+    def read(value: Any) -> Any:
+        if isinstance(value, str) and value in _WHY_MISPLACED and value not in names:
+            raise Refusal(_WHY_MISPLACED[value], allowed=", ".join(names))
+        return value
+
+    return BeforeValidator(read)
+
+
+_WHY_MISPLACED = {
+    "hollow": "only a resistor's tolerance is hollow: its middle was sold as a tighter grade",
+    "batch": "only a resistor's tolerance, h_FE and V_BE are drawn by batch",
+}
+_ANY, _PLAIN = get_args(DistributionName), get_args(PlainName)
+_PLAIN_OR_BATCH = (*_PLAIN, "batch")
+
+# Of the readers in an annotation the last one reads first.
+AnyDistribution = Annotated[DistributionName, choice(lambda: _ANY)]
+PlainOrBatch = Annotated[DistributionName, choice(lambda: _PLAIN_OR_BATCH), _in_place(_PLAIN_OR_BATCH)]
+PlainDistribution = Annotated[PlainName, choice(lambda: _PLAIN), _in_place(_PLAIN)]
+
+
 class GainRange(Section):
-    """h_FE between two limits, with or without a typical value."""
+    """h_FE between two limits, with or without a typical value, and how it is drawn between them."""
 
     min: f.PositiveNumber
     typ: f.PositiveNumber | None = None
     max: f.PositiveNumber
+    distribution: PlainOrBatch | None = None
+    within_batch: f.Share | None = None
 
 
 class VoltageRange(Section):
-    """A positive voltage between two limits, with or without a typical value."""
+    """A positive voltage between two limits, with or without a typical value, and how it is drawn."""
 
     min: f.PositiveVolts
     typ: f.PositiveVolts | None = None
     max: f.PositiveVolts
+    distribution: PlainOrBatch | None = None
+    within_batch: f.VoltsFromZero | None = None
 
 
 Gain = Annotated[
@@ -77,6 +107,7 @@ class StageSection(Section):
     document: f.Text = ""
     revision: f.Text = ""
     designed_by: f.Text = ""
+    boards_per_batch: f.Count | None = None
 
 
 class SupplySection(Section):
@@ -90,6 +121,7 @@ class SupplySection(Section):
     ripple_peak: f.VoltsFromZero | None = None
     ripple_peak_to_peak: f.VoltsFromZero | None = None
     varies: Annotated[Varies, choice(lambda: get_args(Varies))] = "in use"
+    distribution: PlainDistribution | None = None
 
 
 class AmbientSection(Section):
@@ -111,6 +143,7 @@ class TransistorSection(Section):
     base_emitter_drift: Drift | None = None
     gain_drift: f.GainDrift | None = None
     leakage: f.AmperesFromZero | None = None
+    leakage_distribution: PlainDistribution | None = None
     leakage_doubling: f.PositiveKelvins | None = None
     saturation_voltage: f.VoltsFromZero | None = None
     early_voltage: f.PositiveVolts | None = None
@@ -142,24 +175,41 @@ class SignalSection(Section):
 
 
 class ResistorDefaults(Section):
-    """[resistors], without its sub-tables"""
+    """What may be said of all resistors, and of each"""
 
-    series: Annotated[str, choice(load_all)] | None = None
+    series: Annotated[str, choice_of_caller(SERIES)] | None = None
     tolerance: f.Share | None = None
     tempco: f.Tempco | None = None
     life_drift: f.Share | None = None
     power_rating: f.PositiveWatts | None = None
-    distribution: Annotated[Distribution, choice(lambda: get_args(Distribution))] | None = None
+    distribution: AnyDistribution | None = None
+    hollow_within: f.Share | None = None
+    within_batch: f.Share | None = None
+    life_drift_distribution: PlainDistribution | None = None
+    tempco_distribution: PlainDistribution | None = None
     group: f.Text | None = None
     tracking: f.Tempco | None = None
+    search_steps: f.Steps | None = None
     derate_from: f.Temperature | None = None
     derate_to: f.Temperature | None = None
+
+
+class ResistorsSection(ResistorDefaults):
+    """[resistors], without its sub-tables"""
+
+    stock: f.Text | None = None
+    snapping: Annotated[Snapping, choice(lambda: get_args(Snapping))] | None = None
+
+
+OF_THE_WHOLE = tuple(key for key in ResistorsSection.model_fields if key not in ResistorDefaults.model_fields)
+"""The keys of [resistors] that are about the stage, not about each resistor."""
 
 
 class ResistorSection(ResistorDefaults):
     """[resistors.NAME]"""
 
     value: f.TolerancedOhms | None = None
+    pairs: bool | None = None
 
 
 class RequireSection(Section):

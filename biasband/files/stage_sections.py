@@ -7,9 +7,11 @@ are then in the ledger.
 from __future__ import annotations
 
 import math
+from dataclasses import replace
 from typing import Any
 
 from biasband.constants import REFERENCE_TEMPERATURE
+from biasband.files.distribution_keys import figure_distribution, leakage_distribution, supply_distribution
 from biasband.files.figures import SupplyOver
 from biasband.files.ledger import Ledger
 from biasband.files.stage_models import (
@@ -35,7 +37,10 @@ def read_supply(table: object, ledger: Ledger, *, name: str = "supply") -> Suppl
         return None
     voltage = _supply_limits(section, path, ledger)
     peak = section.ripple_peak or (section.ripple_peak_to_peak or 0.0) / 2
-    return None if voltage is None else Supply(voltage=voltage, ripple_peak=peak, varies=section.varies)
+    if voltage is None:
+        return None
+    voltage = replace(voltage, distribution=supply_distribution(section, voltage, path, ledger))
+    return Supply(voltage=voltage, ripple_peak=peak, varies=section.varies)
 
 
 def read_negative_supply(table: object, ledger: Ledger) -> Supply | None:
@@ -91,22 +96,26 @@ def read_transistor(table: object, ledger: Ledger) -> Transistor | None:
     section = check_section(TransistorSection, table, ("transistor",), ledger)
     if section is None or (section.early_voltage is not None and section.test_voltage is None):
         return None
-    given = _given(section, "type", "gain", "base_emitter_voltage", "base_emitter_drift")
+    drawn = ("gain", "base_emitter_voltage", "leakage_distribution")
+    given = _given(section, "type", "base_emitter_drift", *drawn)
     if section.base_emitter_drift is not None:
         bandgap = section.base_emitter_drift == "bandgap"
         given["base_emitter_drift"] = None if bandgap else section.base_emitter_drift
     return Transistor(
         label=section.type or "",
-        gain=_figure_limits(section.gain, geometric=True),
-        base_emitter_voltage=_figure_limits(section.base_emitter_voltage),
+        gain=_figure_limits("gain", section.gain, ledger),
+        base_emitter_voltage=_figure_limits("base_emitter_voltage", section.base_emitter_voltage, ledger),
+        leakage_distribution=leakage_distribution(section, ledger),
         **given,
     )
 
 
-def _figure_limits(figure: float | GainRange | VoltageRange, *, geometric: bool = False) -> Limits:
-    if isinstance(figure, (GainRange, VoltageRange)):
-        return _between(figure.min, figure.typ, figure.max, geometric=geometric)
-    return Limits.exactly(figure, stated=False)
+def _figure_limits(key: str, figure: float | GainRange | VoltageRange, ledger: Ledger) -> Limits:
+    if not isinstance(figure, (GainRange, VoltageRange)):
+        return Limits.exactly(figure, stated=False)
+    limits = _between(figure.min, figure.typ, figure.max, geometric=isinstance(figure, GainRange))
+    drawn = figure_distribution(figure, limits, ("transistor", key), ledger)
+    return replace(limits, distribution=drawn)
 
 
 def read_target(table: object, ledger: Ledger) -> Target | None:

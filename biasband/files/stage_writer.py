@@ -13,21 +13,28 @@ import tomlkit
 from tomlkit.exceptions import TOMLKitError
 
 from biasband.errors import BiasbandError, UsageError
+from biasband.files.named_files import PART, STOCK
+from biasband.files.series_folder import SeriesTables
 from biasband.files.stage_file import read_stage
 
 
 def frozen_text(
-    path: str | os.PathLike[str], values: Mapping[str, str], *, new_path: str | os.PathLike[str] | None = None
+    path: str | os.PathLike[str],
+    values: Mapping[str, str],
+    *,
+    new_path: str | os.PathLike[str] | None = None,
+    tables: SeriesTables | None = None,
 ) -> str:
     """Return the text of a stage file with `value = "…"` set for each resistor in `values`.
 
     A tolerance behind the old value ("3k3 ± 1 %") stays behind the new one. Where the text is meant
-    for a `new_path` in another folder, transistor.file is rewritten so that it is found from there.
+    for a `new_path` in another folder, transistor.file and resistors.stock are rewritten so that they
+    are found from there. `tables` are those that the stage is read with.
     Raises: what `read_stage` raises; UsageError where the stage has no resistor of a name;
     BiasbandError where the layout of the file is beyond rewriting.
     """
     source = os.fspath(path)
-    known = [resistor.name for resistor in read_stage(source).resistors]
+    known = [resistor.name for resistor in read_stage(source, tables=tables).resistors]
     unknown = [name for name in values if name not in known]
     if unknown:
         raise UsageError(f"{source} has no resistor {', '.join(unknown)}; allowed: {', '.join(known)}")
@@ -37,7 +44,8 @@ def frozen_text(
 
     def edit(data: Any) -> None:
         _freeze(data, values)
-        _point_to_part(data, os.path.dirname(source), os.path.dirname(target))
+        for section, key in (PART, STOCK):
+            _point_to_file(data.get(section, {}), key, os.path.dirname(source), os.path.dirname(target))
 
     if (written := _rewritten(text, edit)) is None:
         by_hand = ", ".join(f"{name} {value}" for name, value in values.items())
@@ -87,10 +95,10 @@ def _freeze(data: Any, values: Mapping[str, str]) -> None:
         own["value"] = value + (tolerance[0] if tolerance else "")
 
 
-def _point_to_part(data: Any, old_folder: str, new_folder: str) -> None:
-    """Rewrite transistor.file, relative to a stage file, for a stage file in another folder."""
-    file = data["transistor"].get("file")
+def _point_to_file(table: Any, key: str, old_folder: str, new_folder: str) -> None:
+    """Rewrite the name of a file, relative to a stage file, for a stage file in another folder."""
+    file = table.get(key)
     if file is None or os.path.isabs(file) or os.path.realpath(old_folder) == os.path.realpath(new_folder):
         return
     relative = os.path.relpath(os.path.join(old_folder, file), new_folder or os.curdir)
-    data["transistor"]["file"] = PurePath(relative).as_posix()
+    table[key] = PurePath(relative).as_posix()

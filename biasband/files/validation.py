@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Collection, Mapping
 from typing import TypeVar
 
 from pydantic import ValidationError
@@ -41,11 +41,19 @@ _TOGETHER: Mapping[str, tuple[tuple[str, str], ...]] = {
 
 
 def check_section(
-    model: type[AnySection], table: object, path: KeyPath, ledger: Ledger
+    model: type[AnySection],
+    table: object,
+    path: KeyPath,
+    ledger: Ledger,
+    *,
+    words: Mapping[str, Collection[str]] | None = None,
 ) -> AnySection | None:
-    """Read a section; None where it has faults, all of which are then in the ledger."""
+    """Read a section; None where it has faults, all of which are then in the ledger.
+
+    `words` holds, by name, the choices that the model leaves to its caller.
+    """
     try:
-        return model.model_validate(table)
+        return model.model_validate(table, context=words)
     except ValidationError as error:
         for details in error.errors(include_url=False):
             _note(details, model, path, ledger)

@@ -71,6 +71,12 @@ class Margin:
         return self.limit + (self.margin if self.side == "at_least" else -self.margin)
 
     @property
+    def corner_share(self) -> float | None:
+        """The margin at the corners as a share of the distance nominal → limit, whatever judges."""
+        sign = 1.0 if self.side == "at_least" else -1.0
+        return share(sign * (self.corners - self.limit), sign * (self.nominal - self.limit))
+
+    @property
     def main_cause(self) -> str | None:
         """The contributor with the largest share of the way to the worst corner."""
         return next(iter(self.causes), None)

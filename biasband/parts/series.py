@@ -8,39 +8,19 @@ Everything is decided in decimal and turned into a double last, so that 4.7 in t
 
 from __future__ import annotations
 
-from bisect import bisect_right
+from bisect import bisect_left, bisect_right
+from collections.abc import Sequence
 from dataclasses import dataclass
 from decimal import Decimal
 from fractions import Fraction
-from math import sqrt
+from math import isnan, nan, sqrt
 
 from biasband.errors import UsageError
+from biasband.stage import Series as Series
 
 SMALLEST, LARGEST = 1e-200, 1e200
 MOST_STEPS = 100
 """What may be snapped, and how far around it: no neighbour leaves the range of a double."""
-
-
-@dataclass(frozen=True, kw_only=True)
-class Series:
-    """A series of preferred values: ascending `mantissas`, each at least 1 and below 10.
-
-    `usual_tolerance` is the tolerance that the series is made for, as a fraction (E24: 0.05); None
-    where there is no single figure. What a part has is what its data sheet says.
-    """
-
-    name: str
-    mantissas: tuple[Decimal, ...]
-    usual_tolerance: float | None = None
-
-    def exact_at(self, place: int) -> Decimal:
-        """The preferred value at a place, in decimal."""
-        decade, index = divmod(place, len(self.mantissas))
-        return self.mantissas[index].scaleb(decade)
-
-    def value_at(self, place: int) -> float:
-        """The preferred value at a place: the double nearest to the decimal value."""
-        return float(self.exact_at(place))
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -85,6 +65,28 @@ def nearest(series: Series, value: float) -> Snap:
         chosen=chosen,
         error=chosen / float(value) - 1.0,
     )
+
+
+def nearest_among(values: Sequence[float], value: float, *, name: str) -> Snap:
+    """Find which of some values, ascending, is nearest to `value` by ratio; `name` says what they are.
+
+    As `nearest`, but for a list that has an end: `below` is NaN before its first value, `above` behind its
+    last. Raises UsageError where there are no values, or `value` is not from 1e-200 to 1e200.
+
+    Worked case: of 1.0, 2.2 and 4.7 kΩ, 3.3 kΩ is nearest to 4.7 kΩ, since √(2.2 · 4.7) = 3.22.
+    """
+    exact = _exact(value)
+    if not values:
+        raise UsageError(f"{name}: there are no values to choose from")
+    place = bisect_left(values, float(value))
+    above = values[place] if place < len(values) else nan
+    below = above if above == value else values[place - 1] if place else nan
+    ends = [Fraction(repr(end)) for end in (below, above) if not isnan(end)]
+    chosen = float(ends[0] if len(ends) == 1 or Fraction(exact) ** 2 <= ends[0] * ends[1] else ends[1])
+    return Snap(
+        series=name, value=float(value), below=below, above=above, chosen=chosen,
+        error=chosen / float(value) - 1.0,
+    )  # fmt: skip
 
 
 def neighbours(series: Series, value: float, *, steps: int) -> tuple[float, ...]:

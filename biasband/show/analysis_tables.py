@@ -1,11 +1,10 @@
-"""The tables of one analysis in depth: design, snapping, corners, spread."""
+"""The tables of one analysis in depth: design, corners, spread."""
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Mapping
 
 from biasband.circuit.quantities import Quantity
-from biasband.parts.series import Snap
 from biasband.quantity import Kind
 from biasband.show.prose import formula, places
 from biasband.show.table import REGION_WORDS, Column, Row, Table, code, computed, difference, figure, percent
@@ -25,16 +24,6 @@ DESIGN_COLUMNS = (
     Column("series", "left", spare=1),
 )
 
-SNAP_COLUMNS = (
-    Column("wanted"),
-    Column("below"),
-    Column("above"),
-    Column("nearest"),
-    Column("code", "left"),
-    Column("off"),
-    Column("series", "left"),
-)
-
 CORNER_COLUMNS = (Column("quantity", "left"), Column("lowest"), Column("highest"), Column("found at", "left"))
 
 SPREAD_COLUMNS = (
@@ -50,7 +39,7 @@ def design_table(design: Design) -> Table:
     rows = tuple(_design_row(part, design.stage) for part in design.parts)
     notes = (
         "hand: V_BE = 0.7 V, I_E = I_C, an unloaded divider; refined: the real model meets the target.",
-        "Where a value is snapped the rest is designed anew, so a value may be further off than its series.",
+        "Values are chosen together, so one may be further off its ideal than its series would have it.",
     )
     return Table("Values", DESIGN_COLUMNS, rows, notes if design.chosen else ())
 
@@ -74,17 +63,6 @@ def _design_row(part: PartChoice, stage: Stage) -> Row:
 
 def _ohms(step: Step | None) -> str:
     return "" if step is None else computed(step.ohms, Kind.RESISTANCE)
-
-
-def snap_table(snaps: Sequence[Snap]) -> Table:
-    """Values and the preferred ones around them."""
-    return Table("", SNAP_COLUMNS, tuple(_snap_row(snap) for snap in snaps))
-
-
-def _snap_row(snap: Snap) -> Row:
-    values = (snap.value, snap.below, snap.above, snap.chosen)
-    ohms = (figure(value, Kind.RESISTANCE, digits=6) for value in values)
-    return Row((*ohms, code(snap.chosen), percent(snap.error), snap.series))
 
 
 def corners_table(corners: Corners, words: Mapping[str, Quantity]) -> Table:

@@ -5,17 +5,21 @@ from __future__ import annotations
 import json
 import math
 from collections.abc import Iterable, Mapping, Sequence
+from dataclasses import asdict
 from typing import Any
 
 from biasband.circuit.operating_point import Region
 from biasband.constants import VERSION
 from biasband.margins.records import Margin
-from biasband.parts.series import Snap
+from biasband.parts.marking import Markings
 from biasband.show.summary import Attempt
 from biasband.show.table import REGION_WORDS, code
+from biasband.signoff.parts_list import PartLine, parts_list
+from biasband.signoff.snapping import SnapStudy
 from biasband.signoff.study import Review
 from biasband.stage import Resistor, Stage
 from biasband.values.choosing import Design, PartChoice
+from biasband.values.joint import Contender, Contest
 from biasband.variation.causes import Causes
 from biasband.variation.corners import Corners
 from biasband.variation.sampling import QUANTILES, Boards, Sample
@@ -51,7 +55,9 @@ def review_json(review: Review) -> Json:
         **_origin(review.stage),
         "seed": boards.seed,
         "boards": boards.boards,
+        "boards_per_batch": boards.boards_per_batch,
         "parts": _parts(review.design, {name: evidence.corners.ranges[name].high.value for name in words}),
+        "choice": _choice(review.design.contest),
         "nominal": {**review.nominal.values, "region": REGION_WORDS[review.nominal.region]},
         "corners": _ranges(evidence.corners, words),
         "rss": {name: {"low": evidence.rss[name].low, "high": evidence.rss[name].high} for name in words},
@@ -83,23 +89,73 @@ def _problem(path: str, problem: str) -> Json:
 
 def design_json(design: Design) -> Json:
     """A design as plain data: the parts of `review_json`, without what only a review knows."""
-    return _finite({**_origin(design.stage), "parts": _parts(design, {}), "warnings": list(design.warnings)})
+    return _finite(
+        {
+            **_origin(design.stage),
+            "parts": _parts(design, {}),
+            "choice": _choice(design.contest),
+            "warnings": list(design.warnings),
+        }
+    )
 
 
-def snap_json(snaps: Sequence[Snap]) -> list[Json]:
+def snap_json(study: SnapStudy) -> list[Json]:
     """Snapped values as plain data [Ω]."""
     return [
-        {
-            "series": snap.series,
-            "value": snap.value,
-            "below": snap.below,
-            "above": snap.above,
-            "chosen": snap.chosen,
-            "code": code(snap.chosen),
-            "error": snap.error,
-        }
-        for snap in snaps
+        _finite(
+            {
+                "asked": row.asked,
+                "series": row.snap.series,
+                "value": row.snap.value,
+                "below": row.snap.below,
+                "above": row.snap.above,
+                "chosen": row.snap.chosen,
+                "code": code(row.snap.chosen),
+                "error": row.snap.error,
+                "worst_error": study.worst_error,
+                "markings": _markings(row.markings),
+                "pairs": [asdict(pair) for pair in row.pairs],
+                "notes": [*row.notes, *row.against],
+            }
+        )
+        for row in study.rows
     ]
+
+
+def _markings(found: Markings) -> Json:
+    return {
+        "letter_code": found.letter_code,
+        "bands": found.bands.colours and list(found.bands.colours),
+        "six_bands": found.six_bands.colours and list(found.six_bands.colours),
+        "chip_three": found.chip_three,
+        "chip_four": found.chip_four,
+        "chip_e96": found.chip_e96,
+    }
+
+
+def _choice(contest: Contest | None) -> Json | None:
+    """The sets of values that were compared, the best first."""
+    if contest is None:
+        return None
+    nearest = contest.nearest
+    return {
+        "sets": contest.sets,
+        "decided_by": "swing" if contest.by_swing else "margin_share",
+        "contenders": [_contender(each, contest.names) for each in contest.contenders],
+        "nearest": None if nearest is None else _contender(nearest, contest.names),
+    }
+
+
+def _contender(contender: Contender, names: Sequence[str]) -> Json:
+    return {
+        "values": dict(zip(names, contender.values, strict=True)),
+        "margin_share": contender.share,
+        "corner_share": contender.corner_share,
+        "smallest_margin": _margin(contender.smallest),
+        "failing": [row.quantity if row.standing else row.id for row in contender.failing],
+        "collector_current": contender.current,
+        "symmetric_peak_swing": contender.swing,
+    }
 
 
 def corners_json(design: Design, corners: Corners, words: Iterable[str]) -> Json:
@@ -123,6 +179,7 @@ def spread_json(design: Design, boards: Boards) -> Json:
             **_origin(design.stage),
             "seed": boards.seed,
             "boards": boards.boards,
+            "boards_per_batch": boards.boards_per_batch,
             "parts": _parts(design, {}),
             "spread": _spread(boards),
             "warnings": list(design.warnings),
@@ -141,22 +198,31 @@ def _origin(stage: Stage) -> Json:
 
 def _parts(design: Design, worst: Mapping[str, float]) -> Json:
     """Every part; `worst` holds the highest value of each quantity, where that is known."""
+    powers = {part.name: worst[power] for part in design.parts if (power := _power(part.name)) in worst}
+    lines = {name: line for line in parts_list(design, powers) for name in line.references}
     return {
-        part.name: _part(part, design.stage.resistor(part.name), worst.get(f"resistor_power.{part.name}"))
+        part.name: _part(part, design.stage.resistor(part.name), lines[part.name], powers.get(part.name))
         for part in design.parts
     }
 
 
-def _part(part: PartChoice, resistor: Resistor, power: float | None) -> Json:
+def _power(name: str) -> str:
+    return f"resistor_power.{name}"
+
+
+def _part(part: PartChoice, resistor: Resistor, line: PartLine, power: float | None) -> Json:
     return {
         "hand": None if part.hand is None else part.hand.ohms,
         "ideal": None if part.ideal is None else part.ideal.ohms,
         "value": part.value,
         "chosen": part.chosen,
+        "kept": resistor.kept,
         "series": resistor.series if part.chosen else None,
         "tolerance": resistor.tolerance,
         "tempco": resistor.tempco,
         "code": code(part.value),
+        "markings": _markings(line.markings),
+        "stock": None if line.item is None else asdict(line.item),
         "power_worst": power,
         "power_rating": resistor.power_rating,
     }

@@ -4,11 +4,14 @@ from __future__ import annotations
 
 import os
 import sys
-from collections.abc import Iterator, Sequence
+from collections.abc import Callable, Iterator, Sequence
 from contextlib import contextmanager
 
 from biasband.errors import UsageError
 from biasband.show.spelling import Spelling
+
+Progress = Callable[[float], None]
+"""Told the share of the work that is done."""
 
 
 def deliver(text: str) -> None:
@@ -34,27 +37,26 @@ def complain(text: str) -> None:
 
 
 @contextmanager
-def busy(doing: str) -> Iterator[None]:
-    """Say what is being done while it is, if standard error is a terminal."""
+def bar(doing: str) -> Iterator[Progress]:
+    """Show on standard error, if that is a terminal, how far something is; told the share that is done."""
     if not sys.stderr.isatty():
-        yield
+        yield lambda done: None
         return
     from rich.console import Console
+    from rich.progress import BarColumn, TextColumn, TimeRemainingColumn
+    from rich.progress import Progress as Bar
     from rich.text import Text
 
     spelling = Spelling(sys.stderr.encoding or "ascii")
-    with Console(stderr=True).status(Text(spelling(doing)), spinner="line"):
-        yield
+    columns = (TextColumn("{task.description}"), BarColumn(), TimeRemainingColumn())
+    with Bar(*columns, console=Console(stderr=True), transient=True) as shown:
+        task = shown.add_task(Text(spelling(doing)).markup, total=1.0)
+        yield lambda done: shown.update(task, completed=done)
 
 
-def watched(paths: Sequence[str], *, doing: str) -> Iterator[str]:
-    """Go through files; if standard error is a terminal, show there how far that is."""
-    if len(paths) > 1 and sys.stderr.isatty():
-        from rich.console import Console
-        from rich.progress import track
-
-        yield from track(paths, doing, console=Console(stderr=True), transient=True)
-        return
-    for path in paths:
-        with busy(f"{doing} {path}"):
-            yield path
+def watched(paths: Sequence[str], *, doing: str) -> Iterator[tuple[str, Progress]]:
+    """Go through files, each with a bar of its own."""
+    for place, path in enumerate(paths, start=1):
+        counted = f" ({place} of {len(paths)})" if len(paths) > 1 else ""
+        with bar(f"{doing} {path}{counted}") as progress:
+            yield path, progress

@@ -46,6 +46,8 @@ _KINDS = {
 
 def contributor(name: str) -> str:
     """A contributor as people call it; the name itself where that is what they do."""
+    if name.startswith("batch "):
+        return f"batch mean of group {name.removeprefix('batch ')}"
     return f"tempco of {name}" if name.startswith("group ") else _NAMES.get(name, name)
 
 
@@ -85,9 +87,10 @@ def _main(name: str, share: float) -> str:
     return f"{how} {contributor(name)} ({whole_percent(share)})"
 
 
-def frozen_or_chosen(frozen: int, chosen: int) -> str:
-    """How many values the file gave and how many were chosen in this run."""
-    parts = [f"{frozen} frozen"] if frozen or not chosen else []
+def frozen_or_chosen(frozen: int, chosen: int, *, kept: int = 0) -> str:
+    """How many values the file gave, how many the caller, and how many were chosen in this run."""
+    parts = [f"{frozen} frozen"] if frozen or not (chosen or kept) else []
+    parts += [f"{kept} kept for this run"] if kept else []
     parts += [f"{chosen} chosen in this run: freeze before ordering"] if chosen else []
     return f"values: {', '.join(parts)}"
 
@@ -107,17 +110,19 @@ def head(stage: Stage) -> tuple[str, ...]:
 
 def sampled(boards: Boards) -> str:
     """What was sampled, and by which program."""
-    counts = f"{boards.boards} boards, seed {boards.seed}, {boards.points} points of use"
+    batches = f" in {boards.batches} batches" if boards.boards_per_batch > 1 else ""
+    counts = f"{boards.boards} boards{batches}, seed {boards.seed}, {boards.points} points of use"
     return f"{counts}, biasband {VERSION}"
 
 
 def joint_yield(review: Review) -> str:
     """The share of boards that hold every limit of every requirement."""
-    boards = review.evidence.boards.boards
-    bound = yield_bound(round(review.joint_yield * boards), boards)
+    boards, batch = review.evidence.boards.boards, review.evidence.boards.boards_per_batch
+    bound = yield_bound(round(review.joint_yield * boards), boards, boards_per_batch=batch)
+    counted = ", counted in batches" if batch > 1 else ""
     return (
         f"All requirements together: {yield_percent(review.joint_yield)} of {boards} boards hold every limit "
-        f"at every point of use (95 % confidence: at least {yield_percent(bound)})."
+        f"at every point of use (95 % confidence{counted}: at least {yield_percent(bound)})."
     )
 
 

@@ -7,14 +7,16 @@ from collections.abc import Mapping, Sequence
 from biasband.circuit.quantities import Quantity
 from biasband.constants import VERSION
 from biasband.parts.derating import PROFILES
-from biasband.parts.series import Snap
-from biasband.show.analysis_tables import corners_table, design_table, snap_table, spread_tables
+from biasband.show.analysis_tables import corners_table, design_table, spread_tables
 from biasband.show.cautions import CAUTIONS
+from biasband.show.choice_table import choice_table
 from biasband.show.prose import frozen_or_chosen, head, joint_yield, rss_assumption, sampled
 from biasband.show.review_tables import margin_table, nominal_table, parts_table, summary_table
+from biasband.show.snap_tables import offer_table, snap_tables
 from biasband.show.summary import Attempt
 from biasband.show.surroundings import surroundings
 from biasband.show.table import OUTCOME_TONES, Passage, Report
+from biasband.signoff.snapping import SnapStudy
 from biasband.signoff.study import Review
 from biasband.values.choosing import Design
 from biasband.variation.corners import Corners
@@ -29,6 +31,7 @@ def review_report(review: Review) -> Report:
         _header(review.design, sampled(review.evidence.boards), PROFILES[review.stage.derating].sentence),
         Passage("Held against", surroundings(review.stage, review.nominal)),
         parts_table(review),
+        *_compared(review.design),
         nominal_table(review),
         margin_table(review),
         *_statistics(review),
@@ -46,12 +49,18 @@ def summary_report(attempts: Sequence[Attempt]) -> Report:
 def design_report(design: Design) -> Report:
     """Ideal values with their formulas, and the preferred values."""
     program = f"biasband {VERSION}"
-    return (_header(design, program), design_table(design), *_warnings(design.warnings), _CAUTIONS)
+    return (
+        _header(design, program),
+        design_table(design),
+        *_compared(design),
+        *_warnings(design.warnings),
+        _CAUTIONS,
+    )
 
 
-def snap_report(snaps: Sequence[Snap]) -> Report:
-    """Preferred values."""
-    return (snap_table(snaps),)
+def snap_report(study: SnapStudy) -> Report:
+    """Preferred values, the marks of the parts, and pairs."""
+    return snap_tables(study)
 
 
 def corners_report(design: Design, corners: Corners, words: Mapping[str, Quantity]) -> Report:
@@ -75,8 +84,14 @@ def spread_report(design: Design, boards: Boards, words: Mapping[str, Quantity])
 
 
 def _header(design: Design, *more: str) -> Passage:
-    values = frozen_or_chosen(design.frozen, design.chosen)
+    values = frozen_or_chosen(design.frozen, design.chosen, kept=design.kept)
     return Passage(design.stage.title, (*head(design.stage), values, *more))
+
+
+def _compared(design: Design) -> Report:
+    """The sets of values that were compared, and the pairs that were asked for."""
+    sets = () if design.contest is None else (choice_table(design.contest, design.stage),)
+    return (*sets, *(offer_table(offer) for offer in design.offers))
 
 
 def _statistics(review: Review) -> Report:

@@ -9,6 +9,7 @@ from biasband.circuit.quantities import Quantity
 from biasband.margins.records import Margin
 from biasband.quantity import Kind
 from biasband.show.prose import worst
+from biasband.show.snap_tables import marks
 from biasband.show.summary import Attempt
 from biasband.show.table import (
     NOT_KNOWN,
@@ -26,9 +27,10 @@ from biasband.show.table import (
     whole_percent,
     yield_percent,
 )
+from biasband.signoff.parts_list import PartLine
 from biasband.signoff.study import Review
-from biasband.stage import Resistor
-from biasband.values.choosing import PartChoice
+from biasband.stage import StockItem
+from biasband.values.ideal import Step
 
 PARTS_COLUMNS = (
     Column("part", "left"),
@@ -69,29 +71,41 @@ _SIGNS = {"at_least": "≥", "at_most": "≤"}
 
 
 def parts_table(review: Review) -> Table:
-    """Which resistors to buy, where each value comes from, and how warm it gets."""
-    rows = [
-        _part_row(part, resistor, review.evidence.corners.ranges[f"resistor_power.{part.name}"].high.value)
-        for part, resistor in zip(review.design.parts, review.stage.resistors, strict=True)
-    ]
+    """Which resistors to buy, where each value comes from, how it is marked and how warm it gets."""
+    ideal = {part.name: part.ideal for part in review.design.parts}
+    rows = [_part_row(line, [ideal[name] for name in line.references]) for line in review.parts_list]
     return Table("Parts to buy", PARTS_COLUMNS, tuple(rows))
 
 
-def _part_row(part: PartChoice, resistor: Resistor, power: float) -> Row:
-    rating = resistor.power_rating
+def _part_row(line: PartLine, ideals: Sequence[Step | None]) -> Row:
+    power, rating = line.power_worst, line.power_rating
     return Row(
         (
-            part.name,
-            figure(part.value, Kind.RESISTANCE, digits=6),
-            code(part.value),
-            resistor.series if part.chosen else "",
-            percent(resistor.tolerance, digits=4) if resistor.tolerance_stated else "not stated",
-            figure(resistor.tempco, Kind.RELATIVE_SLOPE) if resistor.tempco else "0 ppm/K",
-            "given" if part.ideal is None else computed(part.ideal.ohms, Kind.RESISTANCE),
-            computed(power, Kind.POWER),
+            ", ".join(line.references),
+            figure(line.value, Kind.RESISTANCE, digits=6),
+            code(line.value),
+            line.series or "",
+            "not stated" if line.tolerance is None else percent(line.tolerance, digits=4),
+            figure(line.tempco, Kind.RELATIVE_SLOPE) if line.tempco else "0 ppm/K",
+            ", ".join("given" if each is None else computed(each.ohms, Kind.RESISTANCE) for each in ideals),
+            NOT_KNOWN if power is None else computed(power, Kind.POWER),
             "not stated" if rating is None else figure(rating, Kind.POWER),
-        )
+        ),
+        (*marks(line.markings), *_in_stock(line.item)),
     )
+
+
+def _in_stock(item: StockItem | None) -> Iterator[str]:
+    """What the stock list says of the part to take."""
+    if item is None:
+        return
+    known = (
+        "" if item.tolerance is None else f"±{percent(item.tolerance, digits=4)}",
+        "" if item.quantity is None else f"{item.quantity} pieces",
+        "" if item.price is None else f"{item.price:g} each",
+        item.location,
+    )
+    yield f"in stock: {', '.join(filter(None, known)) or 'yes'}"
 
 
 def nominal_table(review: Review) -> Table:

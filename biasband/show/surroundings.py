@@ -4,10 +4,10 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 
+from biasband.margins.holding import Nominal
 from biasband.quantity import Kind
 from biasband.show.table import figure, percent
-from biasband.signoff.study import Nominal
-from biasband.stage import AnyTransistor, Limits, Signal, Stage, Supply, Transistor
+from biasband.stage import AnyTransistor, Distribution, Limits, Signal, Stage, Supply, Transistor
 
 
 def surroundings(stage: Stage, nominal: Nominal) -> tuple[str, ...]:
@@ -17,6 +17,7 @@ def surroundings(stage: Stage, nominal: Nominal) -> tuple[str, ...]:
         "; ".join(_transistor(stage.transistor)),
         _life_drift(stage),
         _coupling(stage),
+        *_drawn(stage),
         *_target(stage, nominal),
     )
 
@@ -81,6 +82,40 @@ def _signal(signal: Signal, bypassed_to: str) -> Iterator[str]:
     yield f"source {figure(signal.source_resistance, Kind.RESISTANCE)}"
     yield "no load" if signal.load is None else f"load {figure(signal.load, Kind.RESISTANCE)}"
     yield f"emitter bypassed to {bypassed_to}" if signal.bypassed else "emitter resistor not bypassed"
+
+
+def _drawn(stage: Stage) -> Iterator[str]:
+    """How figures are drawn from board to board, where one is not uniform."""
+    names: dict[str, list[str]] = {}
+    for name, drawn in _distributions(stage):
+        if drawn != "uniform":
+            names.setdefault(drawn, []).append(name)
+    if names:
+        said = "; ".join(f"{', '.join(each)} {drawn}" for drawn, each in names.items())
+        batches = f"; {stage.boards_per_batch} boards to a batch" if stage.drawn_by_batch else ""
+        yield f"drawn from board to board: {said}; all else uniform{batches}"
+
+
+def _distributions(stage: Stage) -> Iterator[tuple[str, str]]:
+    transistor = stage.transistor
+    yield "supply", _law(stage.supply.voltage.distribution, Kind.VOLTAGE)
+    if stage.negative_supply is not None:
+        yield "negative supply", _law(stage.negative_supply.voltage.distribution, Kind.VOLTAGE)
+    yield "h_FE", _law(transistor.gain.distribution, Kind.RATIO)
+    yield "V_BE", _law(transistor.base_emitter_voltage.distribution, Kind.VOLTAGE)
+    yield "leakage", _law(transistor.leakage_distribution, Kind.CURRENT)
+    for resistor in stage.resistors:
+        yield resistor.name, _law(resistor.distribution, Kind.RATIO)
+        yield f"life drift of {resistor.name}", _law(resistor.life_drift_distribution, Kind.RATIO)
+        yield f"tempco of {resistor.name}", _law(resistor.tempco_distribution, Kind.RATIO)
+
+
+def _law(distribution: Distribution, kind: Kind) -> str:
+    if distribution.hollow_within is not None:
+        return f"hollow (none within ±{figure(distribution.hollow_within, kind)})"
+    if distribution.within_batch is not None:
+        return f"by batch (within ±{figure(distribution.within_batch, kind)})"
+    return distribution.name
 
 
 def _target(stage: Stage, nominal: Nominal) -> Iterator[str]:

@@ -9,43 +9,33 @@ from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
-import numpy as np
-
-from biasband.circuit.operating_point import Region
-from biasband.circuit.quantities import Quantity, vocabulary
-from biasband.circuit.reading import Reading, read
+from biasband.circuit.quantities import Quantity
 from biasband.constants import BOARDS, MOST_BOARDS
 from biasband.errors import UsageError
-from biasband.files.series_files import load_all, load_series
-from biasband.margins.checks import Standing, check_margins, standing_checks
+from biasband.files.series_files import load_series
+from biasband.margins.checks import Standing
+from biasband.margins.holding import Nominal, hold, words
 from biasband.margins.records import Evidence, Margin
-from biasband.margins.requirements import joint_yield, requirement_margins
+from biasband.margins.requirements import joint_yield
 from biasband.margins.verdict import Verdict, judge
 from biasband.parts.series import Snap, nearest
+from biasband.signoff.intake import known_series
+from biasband.signoff.parts_list import PartLine, parts_list
 from biasband.signoff.warnings import warnings_of
 from biasband.stage import Stage
 from biasband.values.choosing import Design, choose
-from biasband.variation import causes as causing
+from biasband.values.joint import Progress, silent
 from biasband.variation import corners as cornering
-from biasband.variation import rss as summing
 from biasband.variation import sampling
-from biasband.variation.contributors import realise, use_axes
 from biasband.variation.evaluation import cut_off_current
-from biasband.variation.points_of_use import PointOfUse, points_of_use
+from biasband.variation.points_of_use import points_of_use
 
 if TYPE_CHECKING:
     import pandas as pd
 
-_INTERIOR_DIGITS = 2
-"""Interior points of use closer than this in every coordinate are one point."""
 
-
-@dataclass(frozen=True)
-class Nominal:
-    """The nominal point: every quantity [SI] by name, and the region it stands in."""
-
-    values: Mapping[str, float]
-    region: Region
+CHOOSING = 0.7
+"""The share of a review's work, as progress counts it, that choosing values is."""
 
 
 @dataclass(frozen=True)
@@ -75,6 +65,12 @@ class Review:
     def spread(self) -> Mapping[str, sampling.Spread]:
         """The sampled spread of every quantity."""
         return self.evidence.boards.spread
+
+    @property
+    def parts_list(self) -> tuple[PartLine, ...]:
+        """The parts to order, equal ones on one line."""
+        ranges, names = self.evidence.corners.ranges, [r.name for r in self.stage.resistors]
+        return parts_list(self.design, {name: ranges[f"resistor_power.{name}"].high.value for name in names})
 
     @property
     def margins(self) -> pd.DataFrame:
@@ -114,17 +110,14 @@ class SpreadStudy:
         return spread_frame(self.boards.spread)
 
 
-def words(stage: Stage) -> Mapping[str, Quantity]:
-    """The vocabulary of a stage."""
-    return vocabulary(tuple(resistor.name for resistor in stage.resistors))
+def design(stage: Stage, *, progress: Progress = silent) -> Design:
+    """Design the resistors that have no value and choose from their series.
 
-
-def design(stage: Stage) -> Design:
-    """Design the resistors that have no value and snap them to their series.
+    `progress` is told the share of the work that is done.
 
     Raises PhysicallyImpossible where no positive resistors meet the target.
     """
-    return choose(stage, load_all())
+    return choose(stage, known_series(stage), progress=progress)
 
 
 def snap(value: float, *, series: str = "E24") -> Snap:
@@ -135,33 +128,17 @@ def snap(value: float, *, series: str = "E24") -> Snap:
     return nearest(load_series(series), value)
 
 
-def nominal(stage: Stage) -> Nominal:
-    """Solve a stage, every resistor valued, with every contributor at its nominal value."""
-    reading = read(stage, realise(stage, {}))
-    with np.errstate(all="ignore"):
-        values = {name: _first(quantity.read(reading)) for name, quantity in words(stage).items()}
-    return Nominal(values, _region(stage, reading))
-
-
-def _first(values: object) -> float:
-    return float(np.ravel(np.asarray(values))[0])
-
-
-def _region(stage: Stage, reading: Reading) -> Region:
-    return Region(int(reading.regions(cut_off_current(stage))[0]))
-
-
-def corners(stage: Stage) -> CornerStudy:
+def corners(stage: Stage, *, progress: Progress = silent) -> CornerStudy:
     """Evaluate every quantity at all corners of a stage, its missing values designed first.
 
     Raises PhysicallyImpossible where the target cannot be met.
     """
-    chosen = design(stage)
+    chosen = design(stage, progress=lambda done: progress(CHOOSING * done))
     stage = chosen.stage
     return CornerStudy(chosen, cornering.corners(stage, words(stage), cut_off=cut_off_current(stage)))
 
 
-def spread(stage: Stage, *, boards: int = BOARDS, seed: int = 1) -> SpreadStudy:
+def spread(stage: Stage, *, boards: int = BOARDS, seed: int = 1, progress: Progress = silent) -> SpreadStudy:
     """Sample boards of a stage, its missing values designed first, at every point of use.
 
     The points of use are nominal use and the limits; a review adds those where its corner search
@@ -169,7 +146,7 @@ def spread(stage: Stage, *, boards: int = BOARDS, seed: int = 1) -> SpreadStudy:
     with, PhysicallyImpossible where the target cannot be met.
     """
     check_sampling(boards, seed)
-    chosen = design(stage)
+    chosen = design(stage, progress=lambda done: progress(CHOOSING * done))
     stage, points, cut_off = chosen.stage, points_of_use(chosen.stage), cut_off_current(chosen.stage)
     drawn = sampling.sample(stage, words(stage), points, boards=boards, seed=seed, cut_off=cut_off)
     return SpreadStudy(chosen, drawn)
@@ -189,66 +166,24 @@ def check_sampling(boards: int, seed: int) -> None:
         raise UsageError(f"seed: a whole number from 0; read {seed}")
 
 
-def review(stage: Stage, *, boards: int = BOARDS, seed: int = 1) -> Review:
+def review(stage: Stage, *, boards: int = BOARDS, seed: int = 1, progress: Progress = silent) -> Review:
     """Review a stage: design what is missing, run the three methods, judge.
 
     Raises UsageError for a number of boards or a seed that cannot be sampled with, PhysicallyImpossible
     where the target cannot be met.
     """
     check_sampling(boards, seed)
-    chosen = design(stage)
-    stage, cut_off = chosen.stage, cut_off_current(chosen.stage)
-    middle, standing = nominal(stage), standing_checks(stage, cut_off=cut_off)
-    evidence = _evidence(stage, middle, standing, boards=boards, seed=seed, cut_off=cut_off)
-    required = requirement_margins(stage.requirements, words(stage), evidence)
-    checked = check_margins(stage, standing.made, evidence)
-    rows = tuple(sorted((*required, *checked), key=_by_margin))
+    chosen = design(stage, progress=lambda done: progress(CHOOSING * done))
+    stage = chosen.stage
+    held = hold(stage, words(stage), boards=boards, seed=seed)
     return Review(
         stage=stage,
         design=chosen,
-        nominal=middle,
-        evidence=evidence,
-        rows=rows,
-        standing=standing,
-        verdict=judge(stage, middle.region, rows, standing, evidence),
-        warnings=warnings_of(chosen, middle.values, evidence),
-        joint_yield=joint_yield(stage.requirements, words(stage), evidence),
+        nominal=held.nominal,
+        evidence=held.evidence,
+        rows=held.rows,
+        standing=held.standing,
+        verdict=judge(stage, held.nominal.region, held.rows, held.standing, held.evidence),
+        warnings=warnings_of(chosen, held.nominal.values, held.evidence),
+        joint_yield=joint_yield(stage.requirements, words(stage), held.evidence),
     )
-
-
-def _evidence(
-    stage: Stage, middle: Nominal, standing: Standing, *, boards: int, seed: int, cut_off: float
-) -> Evidence:
-    """Run the three methods and ask for the causes."""
-    measures = words(stage)
-    found = cornering.corners(stage, {**measures, **standing.measures}, cut_off=cut_off)
-    points = (*points_of_use(stage), *_interior_points(stage, found, measures))
-    return Evidence(
-        nominal=middle.values,
-        corners=found,
-        rss=summing.rss(stage, measures, cut_off=cut_off),
-        boards=sampling.sample(stage, measures, points, boards=boards, seed=seed, cut_off=cut_off),
-        causes=causing.causes(stage, found.ranges, {**measures, **standing.measures}, cut_off=cut_off),
-    )
-
-
-def _interior_points(
-    stage: Stage, found: cornering.Corners, measures: Mapping[str, Quantity]
-) -> tuple[PointOfUse, ...]:
-    """The in-use coordinates of interior extremes: points that boards must be solved at too."""
-    inside = {axis.name for axis in use_axes(stage)}
-    extremes = [extreme for name in measures for extreme in _ends(found.ranges[name]) if extreme.interior]
-    places = [{name: x for name, x in e.coordinates.items() if name in inside} for e in extremes]
-    within = [place for place in places if any(abs(x) < 1.0 for x in place.values())]
-    unique = {tuple(round(x, _INTERIOR_DIGITS) for x in place.values()): place for place in within}
-    return tuple(PointOfUse(place) for place in unique.values())
-
-
-def _ends(found: cornering.Range) -> tuple[cornering.Extreme, cornering.Extreme]:
-    return found.low, found.high
-
-
-def _by_margin(row: Margin) -> float:
-    """Sort key: the smallest margin share first; a nominal value beyond its limit before all."""
-    share = row.margin_share
-    return -np.inf if share is None or np.isnan(share) else share

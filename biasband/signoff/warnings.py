@@ -28,6 +28,7 @@ def warnings_of(design: Design, nominal: Mapping[str, float], evidence: Evidence
         *_outside(evidence),
         *_assumed(stage),
         *_far_from_test(stage, nominal),
+        *_lonely(stage),
         *_dangers(stage),
     )
 
@@ -71,6 +72,14 @@ def _far_from_test(stage: Stage, nominal: Mapping[str, float]) -> Iterator[str]:
             f"the stage runs at {ratio:.3g} times the test current: "
             "the limits of h_FE and V_BE hold at the test current only"
         )
+
+
+def _lonely(stage: Stage) -> Iterator[str]:
+    """Groups of one: its limits are right, but nothing tracks it, so that the group is likely a slip."""
+    groups = [resistor.group for resistor in stage.resistors if resistor.group is not None]
+    for resistor in stage.resistors:
+        if resistor.group is not None and groups.count(resistor.group) == 1:
+            yield f"group {resistor.group} has one member, {resistor.name}: there is nothing for it to track"
 
 
 def _dangers(stage: Stage) -> Iterator[str]:

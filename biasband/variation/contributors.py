@@ -28,7 +28,8 @@ Coordinates = Mapping[str, Values]
 
 A resistor's own name moves its tolerance, drift and tempco together towards one limit; the names
 of its draws (`R1.tolerance`, `R1.life_drift`, `R1.tempco`) move them one by one, the tempco with the
-sign of T_a − T0.
+sign of T_a − T0. Beside coordinates, `R1.value` [Ω] may stand in for the value that the stage gives R1, so
+that many sets of values are one evaluation.
 """
 
 
@@ -51,6 +52,7 @@ def board_axes(stage: Stage) -> tuple[Axis, ...]:
     transistor = stage.transistor
     names = [resistor.name for resistor in stage.resistors if _varies(stage, resistor)]
     names += [group_axis(group) for group in _groups(stage)]
+    names += [batch_axis(group) for group in batch_groups(stage)]
     names += [GAIN] if _spans(transistor.gain) else []
     names += [BASE_EMITTER] if _spans(transistor.base_emitter_voltage) else []
     names += [name for name, rail in _supplies(stage) if rail.varies == "by board"]
@@ -76,6 +78,17 @@ def group_axis(group: str) -> str:
     return f"group {group}"
 
 
+def batch_axis(group: str) -> str:
+    """The name of the contributor that is the batch mean of a group of resistors."""
+    return f"batch {group}"
+
+
+def batch_groups(stage: Stage) -> list[str]:
+    """The groups whose members share a batch mean that moves, in the order of their first members."""
+    shared = [r.group for r in stage.resistors if r.group is not None and tolerances(r).common > 0.0]
+    return list(dict.fromkeys(shared))
+
+
 def _supplies(stage: Stage) -> Iterator[tuple[str, Supply]]:
     """The supplies whose limits do not coincide."""
     for name, rail in ((SUPPLY, stage.supply), (NEGATIVE, stage.negative_supply)):
@@ -91,7 +104,7 @@ def _groups(stage: Stage) -> list[str]:
 
 def _varies(stage: Stage, resistor: Resistor) -> bool:
     own = tempcos(resistor).own if _warms(stage) else 0.0
-    return max(resistor.tolerance, resistor.life_drift, own) > 0.0
+    return max(tolerances(resistor).own, resistor.life_drift, own) > 0.0
 
 
 def _warms(stage: Stage) -> bool:
@@ -104,26 +117,34 @@ def _spans(limits: Limits) -> bool:
 
 
 @dataclass(frozen=True)
-class Tempcos:
-    """A tempco [1/K] split in what a resistor has for itself and what its group shares."""
+class Split:
+    """A tempco [1/K] or a tolerance, split in what a resistor has for itself and what its group shares."""
 
     own: float
     common: float
 
 
-def tempcos(resistor: Resistor) -> Tempcos:
+def tempcos(resistor: Resistor) -> Split:
     """Split a resistor's tempco: within a group only `tracking` is its own."""
     if resistor.group is None or resistor.tracking is None:
-        return Tempcos(resistor.tempco, 0.0)
-    return Tempcos(resistor.tracking, resistor.tempco - resistor.tracking)
+        return Split(resistor.tempco, 0.0)
+    return Split(resistor.tracking, resistor.tempco - resistor.tracking)
+
+
+def tolerances(resistor: Resistor) -> Split:
+    """Split a resistor's tolerance: within a group drawn by batch only `within_batch` is its own."""
+    within = resistor.distribution.within_batch
+    if resistor.group is None or within is None:
+        return Split(resistor.tolerance, 0.0)
+    return Split(within, resistor.tolerance - within)
 
 
 def realise(stage: Stage, x: Coordinates) -> Scenarios:
     """The scenarios at these coordinates.
 
     A resistor is `R·(1 + t·x_t)·(1 + d·x_d)·(1 + (own·x_c + common·x_g)·(T_a − T0))`; by its own name,
-    `|T_a − T0|`, so that its low limit is R·(1−t)(1−d)(1−c·|ΔT|). Raises UsageError where a resistor
-    has no value yet.
+    `|T_a − T0|`, so that its low limit is R·(1−t)(1−d)(1−c·|ΔT|). In a group drawn by batch, t·x_t is
+    `own·x_t + common·x_b`, x_b the batch mean's. Raises UsageError where a resistor has no value yet.
     """
     transistor = stage.transistor
     temperature = _between(stage.ambient, x.get(TEMPERATURE, 0.0))
@@ -143,16 +164,26 @@ def realise(stage: Stage, x: Coordinates) -> Scenarios:
 
 def _resistance(resistor: Resistor, x: Coordinates, rise: Values) -> Values:
     """A resistor [Ω] after tolerance, life drift and tempco; `value` must be chosen by now."""
-    if resistor.value is None:
+    value = x.get(f"{resistor.name}.value", resistor.value)
+    if value is None:
         raise UsageError(f"{resistor.name} has no value yet: design the stage first")
     tempco = tempcos(resistor)
     limit = x.get(resistor.name, 0.0)
     heat = _tempco_term(resistor.name, tempco.own, x, rise)
     if resistor.group is not None and tempco.common:
         heat = heat + _tempco_term(group_axis(resistor.group), tempco.common, x, rise)
-    made = 1.0 + resistor.tolerance * x.get(f"{resistor.name}.tolerance", limit)
+    made = 1.0 + _made_off(resistor, x, limit)
     aged = 1.0 + resistor.life_drift * x.get(f"{resistor.name}.life_drift", limit)
-    return resistor.value * made * aged * (1.0 + heat)
+    return value * made * aged * (1.0 + heat)
+
+
+def _made_off(resistor: Resistor, x: Coordinates, limit: Values) -> Values:
+    """How far from its value a resistor was made, as a share: its own part, and its group's batch mean."""
+    split = tolerances(resistor)
+    own = split.own * x.get(f"{resistor.name}.tolerance", limit)
+    if resistor.group is None or not split.common:
+        return own
+    return own + split.common * x.get(batch_axis(resistor.group), 0.0)
 
 
 def _tempco_term(name: str, tempco: float, x: Coordinates, rise: Values) -> Values:

@@ -72,17 +72,17 @@ def corners(stage: Stage, measures: Measures, *, cut_off: float) -> Corners:
     Source: extreme-value (worst-case) analysis, "common practice".
     """
     box = axes(stage)
-    vertices = _vertices(box)
-    points = np.vstack([vertices, [[_middle(axis) for axis in box]]]) if box else vertices
+    limits = vertices(box)
+    points = np.vstack([limits, [[_middle(axis) for axis in box]]]) if box else limits
     outcome = evaluate(stage, columns(box, points), measures, cut_off=cut_off)
     found = search(stage, box, _starts(box, points, measures, outcome), measures, cut_off=cut_off)
     found = polish(stage, box, found, measures, cut_off=cut_off)
     found = _shared(found, evaluate(stage, columns(box, found.point), measures, cut_off=cut_off), measures)
-    regions = outcome.region[: len(vertices)]
+    regions = outcome.region[: len(limits)]
     present = [Region(code) for code in np.unique(regions)]
     return Corners(
         ranges=_ranges(stage, box, measures, found),
-        count=len(vertices),
+        count=len(limits),
         regions={region: int(np.sum(regions == region)) for region in present},
         region_at={r: values_at(stage, _point(box, points[np.argmax(regions == r)])) for r in present},
     )
@@ -95,8 +95,8 @@ def values_at(stage: Stage, coordinates: Mapping[str, float]) -> dict[str, float
     return {name: float(value) for name, value in values.items() if name not in absent}
 
 
-def _vertices(box: tuple[Axis, ...]) -> Array:
-    """All combinations of limits, shape (2^K, K)."""
+def vertices(box: tuple[Axis, ...]) -> Array:
+    """All combinations of the limits of K axes, in coordinates, shape (2^K, K)."""
     if not box:
         return np.zeros((1, 0))
     sides = np.indices((2,) * len(box)).reshape(len(box), -1).T
@@ -118,7 +118,7 @@ def _starts(box: tuple[Axis, ...], points: Array, measures: Measures, outcome: O
     for k, name in enumerate(measures):
         for side, values in ((-1.0, outcome.low[name]), (1.0, outcome.high[name])):
             scored = np.where(np.isnan(values), -np.inf, side * values)
-            starts = [*_best_vertices(box, points, scored), len(points) - 1]
+            starts = [*_bestvertices(box, points, scored), len(points) - 1]
             rows += starts
             measure += [k] * len(starts)
             sign += [side] * len(starts)
@@ -126,7 +126,7 @@ def _starts(box: tuple[Axis, ...], points: Array, measures: Measures, outcome: O
     return Climbs(np.array(measure), np.array(sign), points[rows], np.array(score))
 
 
-def _best_vertices(box: tuple[Axis, ...], points: Array, scored: Array) -> list[int]:
+def _bestvertices(box: tuple[Axis, ...], points: Array, scored: Array) -> list[int]:
     """The best vertex, and the best on either side of the axes along which extremes wander."""
     best = int(np.argmax(scored[: 2 ** len(box)]))
     others = {

@@ -1,9 +1,7 @@
 """Monte Carlo: boards drawn at random, each solved at every point of use.
 
 A board holds a requirement when it holds it at all points, so the yield is the share of boards
-that hold it everywhere. Each draw has its own counter-based stream, named after it: adding a
-contributor does not reshuffle the others, two designs can be compared on the same draws, and the
-result is the same bytes for any chunk size.
+that hold it everywhere. The result is the same bytes for any chunk size.
 """
 
 from __future__ import annotations
@@ -17,8 +15,8 @@ from numpy.typing import NDArray
 
 from biasband.circuit.operating_point import Region
 from biasband.circuit.scenarios import Array, chunks
-from biasband.stage import Distribution, Stage
-from biasband.variation.contributors import board_axes, group_axis, tempcos
+from biasband.stage import Stage
+from biasband.variation.draws import batch_size, coordinates
 from biasband.variation.evaluation import Measures, Outcome, evaluate
 from biasband.variation.points_of_use import PointOfUse
 
@@ -27,53 +25,6 @@ CHUNK = 16384
 
 QUANTILES = (0.00135, 0.5, 0.99865)
 """The quantiles of every report: ±3σ of a normal distribution, and the median."""
-
-
-@dataclass(frozen=True)
-class Draw:
-    """One random number per board: its stream's name and its distribution."""
-
-    name: str
-    distribution: Distribution = "uniform"
-
-
-def draws(stage: Stage) -> tuple[Draw, ...]:
-    """Every draw of a stage: a resistor's tolerance, drift and tempco are three separate ones."""
-    found = []
-    for resistor in stage.resistors:
-        found.append(Draw(f"{resistor.name}.tolerance", resistor.distribution))
-        found.append(Draw(f"{resistor.name}.life_drift"))
-        found.append(Draw(f"{resistor.name}.tempco"))
-    groups = {r.group for r in stage.resistors if r.group is not None and tempcos(r).common > 0.0}
-    found += [Draw(f"{group_axis(group)}.tempco") for group in sorted(groups)]
-    resistors = {resistor.name for resistor in stage.resistors}
-    rest = [axis.name for axis in board_axes(stage) if axis.name not in resistors]
-    return (*found, *(Draw(name) for name in rest if not name.startswith(group_axis(""))))
-
-
-def coordinates(stage: Stage, rows: slice, *, seed: int) -> dict[str, Array]:
-    """The coordinates of the boards at `rows`, whatever the chunk they are drawn in."""
-    return {draw.name: _shape(draw.distribution, _uniform(draw.name, rows, seed)) for draw in draws(stage)}
-
-
-def _uniform(name: str, rows: slice, seed: int) -> Array:
-    """Uniform numbers in [0, 1) of one stream; the counter gives four doubles a step."""
-    stream = np.random.Philox(np.random.SeedSequence([seed, *name.encode()]))
-    stream.advance(rows.start // 4)
-    skip = rows.start % 4
-    return np.asarray(np.random.Generator(stream).random(rows.stop - rows.start + skip)[skip:])
-
-
-def _shape(distribution: Distribution, u: Array) -> Array:
-    """Coordinates in [−1, 1] from uniform numbers, by the inverse distribution function."""
-    if distribution == "normal":
-        from scipy.special import ndtr, ndtri
-
-        tail = ndtr(-3.0)
-        return np.clip(ndtri(tail + u * (1.0 - 2.0 * tail)) / 3.0, -1.0, 1.0)
-    if distribution == "triangular":
-        return np.where(u < 0.5, np.sqrt(2.0 * u) - 1.0, 1.0 - np.sqrt(2.0 * (1.0 - u)))
-    return 2.0 * u - 1.0
 
 
 @dataclass(frozen=True)
@@ -127,13 +78,22 @@ class Spread:
 
 @dataclass(frozen=True)
 class Boards:
-    """The sampled boards: the spread of every measure, and scenarios counted by region."""
+    """The sampled boards: the spread of every measure, and scenarios counted by region.
+
+    Boards of one batch are dependent, so what they show counts in batches of `boards_per_batch`.
+    """
 
     spread: Mapping[str, Spread]
     boards: int
     seed: int
     points: int
     regions: Mapping[Region, int]
+    boards_per_batch: int = 1
+
+    @property
+    def batches(self) -> int:
+        """How many batches the boards come from, the last of which may be a part of one."""
+        return -(-self.boards // self.boards_per_batch)
 
 
 def sample(
@@ -156,7 +116,7 @@ def sample(
             _gather(table, rows, outcome, first=count == 0)
     spread = {name: Spread(*(Sample(row) for row in kept)) for name, kept in table.items()}
     counted = {region: int(regions[region]) for region in Region if regions[region]}
-    return Boards(spread, boards, seed, len(points), counted)
+    return Boards(spread, boards, seed, len(points), counted, batch_size(stage))
 
 
 def _gather(table: dict[str, NDArray[np.float64]], rows: slice, outcome: Outcome, *, first: bool) -> None:
@@ -170,24 +130,31 @@ def _gather(table: dict[str, NDArray[np.float64]], rows: slice, outcome: Outcome
             np.maximum(kept[2, rows], high, out=kept[2, rows])
 
 
-def yield_bound(held: int, boards: int, *, confidence: float = 0.95) -> float:
+def yield_bound(held: int, boards: int, *, boards_per_batch: int = 1, confidence: float = 0.95) -> float:
     """The one-sided lower Clopper–Pearson bound of a yield: `held` of `boards` passed.
 
+    Boards of one batch are dependent, at worst all alike, so both counts are divided by the boards
+    of a batch: B = N/n batches, of which k/n failed. The beta quantile takes such fractions. That is
+    exact where the boards of a batch are all alike and conservative where they are not (a design
+    effect of n, the largest there is; Kish, "Survey Sampling", 1965, memory).
     Source: Clopper & Pearson, "The use of confidence or fiducial limits", Biometrika 26 (1934).
     """
     from scipy.special import betaincinv
 
     if held == 0:
         return 0.0
-    return float(betaincinv(held, boards - held + 1, 1.0 - confidence))
+    failed = (boards - held) / boards_per_batch
+    return float(betaincinv(held / boards_per_batch, failed + 1.0, 1.0 - confidence))
 
 
-def allowed_failures(boards: int, required: float, *, confidence: float = 0.95) -> int:
+def allowed_failures(
+    boards: int, required: float, *, boards_per_batch: int = 1, confidence: float = 0.95
+) -> int:
     """How many boards may fail while the bound still reaches the required yield; −1: not even none."""
     from scipy.special import betainc
 
     # The bound with f failures reaches `required` when P(X >= held) at that yield is at most 1 - confidence.
     failures = np.arange(boards)
-    held = boards - failures
-    reaches = betainc(held, failures + 1.0, required) <= 1.0 - confidence
+    held = (boards - failures) / boards_per_batch
+    reaches = betainc(held, failures / boards_per_batch + 1.0, required) <= 1.0 - confidence
     return int(np.sum(np.cumprod(reaches))) - 1

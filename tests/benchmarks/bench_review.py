@@ -17,6 +17,7 @@ import numpy as np
 from clock import shortest as shortest_of
 
 from biasband.files.stage_file import read_stage
+from biasband.margins.holding import words
 from biasband.signoff import study
 from biasband.variation.contributors import axes
 from biasband.variation.evaluation import cut_off_current, evaluate
@@ -42,11 +43,11 @@ def main() -> None:
     print(f"--help: {shortest(process('-m', 'biasband', '--help')) / imports:.2f} times")
 
     stage = study.design(read_stage(ROOT / SAMPLE)).stage
-    box, words, cut_off = axes(stage), study.words(stage), cut_off_current(stage)
+    box, vocabulary, cut_off = axes(stage), words(stage), cut_off_current(stage)
     sides = 2.0 * np.indices((2,) * len(box)).reshape(len(box), -1) - 1.0
     corners = dict(zip((axis.name for axis in box), sides, strict=True))
-    alone = {"collector_voltage": words["collector_voltage"]}
-    for measures, what in ((alone, "one quantity"), (words, "all quantities")):
+    alone = {"collector_voltage": vocabulary["collector_voltage"]}
+    for measures, what in ((alone, "one quantity"), (vocabulary, "all quantities")):
         cost = shortest(lambda measures=measures: evaluate(stage, corners, measures, cut_off=cut_off))
         print(f"all {sides.shape[1]} corners, {what}: {1e3 * cost:.1f} ms")
     print(f"corners with the search of the box: {1e3 * shortest(lambda: study.corners(stage)):.0f} ms")

@@ -6,6 +6,7 @@
 
 from __future__ import annotations
 
+import zipfile
 from decimal import Decimal
 from itertools import pairwise
 from pathlib import Path
@@ -13,14 +14,8 @@ from pathlib import Path
 import pytest
 
 from biasband.errors import BadlyWritten, UsageError
-from biasband.files.series_files import (
-    SeriesEntry,
-    load_all,
-    load_series,
-    read_index,
-    read_table,
-    tables_folder,
-)
+from biasband.files.series_files import load_all, load_series, read_index, read_table, tables_folder
+from biasband.files.series_rows import SeriesEntry
 
 # E24 from memory of the trade; check values state where it leaves the formula (below).
 E24 = [
@@ -159,12 +154,27 @@ def test_windows_line_ends_and_a_byte_order_mark_are_read(tmp_path: Path, conten
         ("mantissa\n", r"invented\.csv:1: invented: 0 values, not 3"),
         ("", r"invented\.csv:1: wrong header; allowed: mantissa"),
         ("value\n1.0\n2.2\n4.7\n", r"invented\.csv:1: wrong header; allowed: mantissa"),
-        (b"mantissa\n\xff\xfe\n", r"invented\.csv: cannot be read as a table"),
+        (b"mantissa\n\xff\xfe\n", r"invented\.csv:2: not UTF-8 text; allowed: a CSV text, saved as UTF-8"),
+        (b"mantissa\n\0\n", r"invented\.csv: a binary file; allowed: a CSV text"),
+        ('mantissa\n1.0\n"2.2\n4.7\n', r"invented\.csv:3: not a table"),
     ],
 )
 def test_faulty_table_names_file_line_and_fault(tmp_path: Path, content: str | bytes, message: str) -> None:
     with pytest.raises(BadlyWritten, match=message):
         read_table(table(tmp_path, content), THREE)
+
+
+def test_table_inside_a_zipped_package_is_read(tmp_path: Path) -> None:
+    with zipfile.ZipFile(tmp_path / "package.zip", "w") as package:
+        package.writestr("invented.csv", "mantissa\n1.0\n2.2\n4.7\n")
+    with zipfile.ZipFile(tmp_path / "package.zip") as package:
+        assert len(read_table(zipfile.Path(package), THREE).mantissas) == 3
+
+
+def test_row_of_another_width_hides_no_other_fault(tmp_path: Path) -> None:
+    with pytest.raises(BadlyWritten, match="badly written") as caught:
+        read_table(table(tmp_path, "mantissa\n1.0\n2,2\nx\n"), THREE)
+    assert [fault.line for fault in caught.value.faults] == [3, 4]
 
 
 def test_every_faulty_row_is_reported_at_once(tmp_path: Path) -> None:
@@ -174,7 +184,7 @@ def test_every_faulty_row_is_reported_at_once(tmp_path: Path) -> None:
 
 
 def test_missing_table_is_an_error(tmp_path: Path) -> None:
-    with pytest.raises(BadlyWritten, match=r"invented\.csv: cannot be read as a table"):
+    with pytest.raises(BadlyWritten, match=r"invented\.csv: no such file"):
         read_table(tmp_path, THREE)
 
 
@@ -196,8 +206,12 @@ def test_index_is_read_with_and_without_tolerance(tmp_path: Path) -> None:
         ("E3,0,20\n", r"series\.csv:2: values_per_decade: not a count; read '0'"),
         ("E3,3,20 %\n", r"series\.csv:2: usual_tolerance_percent: not a percentage, nor empty; read '20 %'"),
         ("E3,3,100\n", r"series\.csv:2: usual_tolerance_percent: not a percentage"),
-        ("E3,3,\nE3,3,\n", r"series\.csv:3: series: missing or given twice; read 'E3'"),
-        (",3,\n", r"series\.csv:2: series: missing or given twice"),
+        ("E3,3,\nE3,3,\n", r"series\.csv:3: series: given in line 2 already; read 'E3'"),
+        ("E3,3,\ne3,3,\n", r"series\.csv:3: series: given in line 2 already; read 'e3'"),
+        (",3,\n", r"series\.csv:2: series: no name for a series"),
+        ("../E3,3,\n", r"series\.csv:2: series: no name for a series; read '\.\./E3'"),
+        ("series,3,\n", r"series\.csv:2: series: no name for a series; read 'series'"),
+        ("", r"series\.csv:1: no series below the header"),
         ("E3,3\n", r"series\.csv:2: .*2 cells, not 3"),
     ],
 )

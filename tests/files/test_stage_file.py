@@ -11,6 +11,7 @@ from hypothesis import strategies as st
 from biasband.errors import BadlyWritten, BiasbandError, PhysicallyImpossible
 from biasband.files.stage_file import read_stage
 from biasband.stage import (
+    Distribution,
     FileRecord,
     Limits,
     Requirement,
@@ -275,7 +276,7 @@ def test_group_and_derating_of_a_resistor_are_read(read):
     own += '\ndistribution = "normal"'
     resistor = read(changed(('value = "3k3"', own))).resistor("RC")
     assert (resistor.group, resistor.tracking, resistor.derate_from) == ("reel", 30e-6, 353.15)
-    assert resistor.distribution == "normal"
+    assert resistor.distribution == Distribution(name="normal")
 
 
 def test_stage_without_target_is_read_where_every_resistor_has_a_value(read):

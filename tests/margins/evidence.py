@@ -33,6 +33,7 @@ def evidence(
     quantity: str = QUANTITY,
     regions: Mapping[Region, int] | None = None,
     board_regions: Mapping[Region, int] | None = None,
+    boards_per_batch: int = 1,
 ) -> Evidence:
     """Evidence on one quantity; `boards` holds each board's value, or its (lowest, highest) in use."""
     pair = (
@@ -51,6 +52,7 @@ def evidence(
             seed=1,
             points=1,
             regions=board_regions or {Region.ACTIVE: lowest.size},
+            boards_per_batch=boards_per_batch,
         ),
         causes={quantity: Causes({"gain": 0.7, "RB": 0.2}, {"RB": 0.6, "gain": 0.3})},
     )

@@ -154,6 +154,49 @@ def test_just_enough_boards_without_a_failure_pass():
         assert found.verdict == verdict
 
 
+@settings(deadline=None)
+@given(
+    failures=st.integers(0, 300),
+    boards_per_batch=st.sampled_from([1, 7, 10, 200]),
+    required=st.sampled_from([0.5, 0.9, 0.95]),
+)
+def test_margin_sign_is_the_verdict_where_boards_come_in_batches(failures, boards_per_batch, required):
+    values = np.full(3000, 3.5)
+    values[:failures] = np.linspace(2.0, 2.9, failures)
+    found = row(
+        requirement(at_least=3.0, judged_by="yield", yield_at_least=required),
+        evidence(nominal=3.5, corners=(2.0, 4.0), boards=values, boards_per_batch=boards_per_batch),
+    )
+    assert (found.margin >= 0.0) is (found.verdict == "pass") is (found.yield_low >= required)
+    assert found.yield_held == pytest.approx(1.0 - failures / 3000, abs=1e-12)  # boards, as ever
+
+
+def test_bound_of_batches_that_are_alike_is_that_of_as_many_independent_draws():
+    # 100 batches of 20 boards alike, 3 of them bad: no more is known than from 100 boards, 3 of them bad.
+    batches = np.full(100, 3.5)
+    batches[[4, 50, 99]] = 2.0
+    found = row(
+        requirement(at_least=3.0),
+        evidence(
+            nominal=3.5, corners=(2.0, 4.0), boards=np.repeat(batches, 20), boards_per_batch=20
+        ),
+    )
+    assert found.yield_low == pytest.approx(binomial_bound(97, 100), abs=1e-9)  # a bisection
+
+
+def test_too_few_batches_fail_and_say_so_however_many_the_boards():
+    # 58 batches show no 95 %, 59 do: 0.95^59 < 5 % (Wilks).
+    for batches, verdict in ((58, "fail"), (59, "pass")):
+        found = row(
+            requirement(at_least=3.0, judged_by="yield", yield_at_least=0.95),
+            evidence(nominal=5.0, corners=(4.0, 6.0), boards=[5.0] * (100 * batches), boards_per_batch=100),
+        )
+        assert found.verdict == verdict
+        told = [note for note in found.notes if "too few" in note]
+        assert told == ([f"{100 * batches} boards in {batches} batches are too few to show a yield of 95 %"]
+                        if verdict == "fail" else [])
+
+
 def test_unsolved_board_is_a_failed_board():
     boards = [5.0] * 998 + [np.nan] * 2
     found = row(

@@ -17,14 +17,10 @@ import numpy as np
 import pytest
 from variation.stages import ideal, stage, with_resistors
 
-from biasband.variation.sampling import (
-    Sample,
-    _shape,
-    _uniform,
-    allowed_failures,
-    coordinates,
-    yield_bound,
-)
+from biasband.stage import Distribution
+from biasband.variation.distributions import UNIFORM
+from biasband.variation.draws import _uniform, coordinates
+from biasband.variation.sampling import Sample, allowed_failures, yield_bound
 
 DRAWS = 10**6
 LOW, HIGH = 0.025, 0.975
@@ -34,7 +30,7 @@ LOW, HIGH = 0.025, 0.975
 def inputs(distribution: str, seed: int = 1) -> list[np.ndarray]:
     """Four independent inputs in ±1, drawn as the tolerances of four resistors."""
     of = stage("divider", {"R1": 1e4, "R2": 1e4, "RC": 1e3, "RE": 1e3}, ideal(100.0), 9.0)
-    of = with_resistors(of, tolerance=0.01, distribution=distribution)
+    of = with_resistors(of, tolerance=0.01, distribution=Distribution(name=distribution))
     drawn = coordinates(of, slice(0, DRAWS), seed=seed)
     return [drawn[f"{name}.tolerance"] for name in ("R1", "R2", "RC", "RE")]
 
@@ -94,9 +90,9 @@ def test_mass_calibration():
     # densities (8 ± 1) and (8.00 ± 0.05)·10³ kg/m³: u = 0.0754 mg where first order gives 0.0539.
     m_R = 100_000.0 + 0.050 * standard_normal("m_R")
     small = 1.234 + 0.020 * standard_normal("small")
-    air = 1.20 + 0.10 * _shape("uniform", _uniform("air", slice(0, DRAWS), 1))
-    weighed = 8e3 + 1e3 * _shape("uniform", _uniform("weighed", slice(0, DRAWS), 1))
-    reference = 8e3 + 50.0 * _shape("uniform", _uniform("reference", slice(0, DRAWS), 1))
+    air = 1.20 + 0.10 * UNIFORM.quantile(_uniform("air", slice(0, DRAWS), 1))
+    weighed = 8e3 + 1e3 * UNIFORM.quantile(_uniform("weighed", slice(0, DRAWS), 1))
+    reference = 8e3 + 50.0 * UNIFORM.quantile(_uniform("reference", slice(0, DRAWS), 1))
     mass = Sample((m_R + small) * (1.0 + (air - 1.2) * (1.0 / weighed - 1.0 / reference)) - 100_000.0)
     # Half of the last printed digit and three standard deviations of 0.0754/√(2N).
     assert mass.sd == pytest.approx(0.0754, abs=0.00005 + 0.00016)
@@ -142,3 +138,15 @@ def test_wilks_draws_allow_one_failure_less_than_the_order(draws, failures):
 def test_allowed_failures_is_where_the_bound_stops_to_reach(boards, required):
     scan = [f for f in range(boards + 1) if yield_bound(boards - f, boards) >= required]
     assert allowed_failures(boards, required) == (max(scan) if scan else -1)
+
+
+@pytest.mark.parametrize("boards_per_batch", [3, 20, 200])
+@pytest.mark.parametrize("required", [0.5, 0.95])
+def test_allowed_failures_in_batches_is_where_their_bound_stops_to_reach(boards_per_batch, required):
+    boards = 2000
+    held = range(boards, -1, -1)
+    bounds = [yield_bound(each, boards, boards_per_batch=boards_per_batch) for each in held]
+    assert bounds == sorted(bounds, reverse=True)
+    scan = [f for f, bound in enumerate(bounds) if bound >= required]
+    found = allowed_failures(boards, required, boards_per_batch=boards_per_batch)
+    assert found == (max(scan) if scan else -1)

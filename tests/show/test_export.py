@@ -16,19 +16,19 @@ from biasband.show.export import (
     summary_json,
 )
 from biasband.show.summary import Attempt
-from biasband.signoff.study import snap
+from biasband.signoff.snapping import snap_texts
 from tests.show.reviews import BOARDS, EVERY, FAILING, HIVE, SPLIT, reviewed
 
 NAN = float("nan")
 
 # formats.md, "JSON of `review --json`", and what issue 2 adds to it.
 TOP = {
-    "stage", "files", "biasband", "seed", "boards", "parts", "nominal", "corners", "rss", "spread", "causes",
-    "margins", "checks", "warnings", "verdict", "because",
+    "stage", "files", "biasband", "seed", "boards", "boards_per_batch", "parts", "choice", "nominal",
+    "corners", "rss", "spread", "causes", "margins", "checks", "warnings", "verdict", "because",
 }  # fmt: skip
 PART = {
-    "hand", "ideal", "value", "chosen", "series", "tolerance", "tempco", "code", "power_worst",
-    "power_rating",
+    "hand", "ideal", "value", "chosen", "kept", "series", "tolerance", "tempco", "code", "markings", "stock",
+    "power_worst", "power_rating",
 }  # fmt: skip
 MARGIN = {
     "id", "quantity", "limit", "side", "judged_by", "nominal", "corners", "rss", "yield", "yield_low",
@@ -155,11 +155,10 @@ def test_analyses_use_the_keys_of_the_review():
 
 def test_snap_is_told_in_ohms():
     # IEC 60063, E24: 4.7 and 5.1 enclose 4.8; 4.7/4.8 - 1 = -2.0833 %.
-    (found,) = snap_json([snap(4800.0, series="E24")])
-    error = found.pop("error")
-    assert found == {
-        "series": "E24", "value": 4800.0, "below": 4700.0, "above": 5100.0, "chosen": 4700.0, "code": "4K7",
-    }  # fmt: skip
+    (found,) = snap_json(snap_texts(["4k8"]))
+    error = found["error"]
+    told = ("asked", "series", "value", "below", "above", "chosen", "code")
+    assert [found[key] for key in told] == ["4k8", "E24", 4800.0, 4700.0, 5100.0, 4700.0, "4K7"]
     assert error == pytest.approx(-0.0208333333, rel=1e-8)  # as many digits as are written here
 
 

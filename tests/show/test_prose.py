@@ -15,6 +15,7 @@ from biasband.show.prose import (
     place,
     places,
     rss_assumption,
+    sampled,
     worst,
 )
 from biasband.signoff.study import design
@@ -113,6 +114,24 @@ def test_joint_yield_carries_its_own_bound():
     assert f"100 % of {BOARDS} boards" in text
     shown = float(text.split("at least ")[1].split(" %")[0])
     assert 0.0 <= bound - shown < 0.001  # rounded down to a thousandth of a per cent
+
+
+def test_boards_in_batches_are_told_and_bound_by_batches():
+    review = reviewed("ice_warner")
+    boards = review.evidence.boards
+    batches = -(-BOARDS // 200)
+    assert sampled(boards).startswith(f"{BOARDS} boards in {batches} batches, seed 1, ")
+    # No failure in N/n batches: the bound b solves b^(N/n) = 0.05 (Clopper & Pearson 1934, closed form).
+    bound = 100.0 * 0.05 ** (200.0 / BOARDS)
+    text = joint_yield(replace(review, joint_yield=1.0))
+    assert "95 % confidence, counted in batches: at least" in text
+    assert 0.0 <= bound - float(text.split("at least ")[1].split(" %")[0]) < 0.001  # rounded down
+    assert " in " not in sampled(reviewed(HIVE).evidence.boards).split(",")[0]
+
+
+def test_what_a_group_shares_is_called_by_its_name():
+    assert contributor("group array A") == "tempco of group array A"
+    assert contributor("batch array A") == "batch mean of group array A"
 
 
 def test_share_inside_rss_is_measured_per_required_quantity():

@@ -15,7 +15,7 @@ from biasband.show.report import corners_report, design_report, review_report, s
 from biasband.show.screen import show
 from biasband.show.spelling import Spelling
 from biasband.show.table import Table
-from biasband.signoff.study import snap
+from biasband.signoff.snapping import snap_texts
 from tests.show.reviews import EVERY, FAILING, HIVE, reviewed
 
 
@@ -27,7 +27,7 @@ def reports(name):
         design_report(review.design),
         corners_report(review.design, evidence.corners, words),
         spread_report(review.design, evidence.boards, words),
-        snap_report([snap(5000.0)]),
+        snap_report(snap_texts(["5k", "472"], pair=True)),
     )
 
 

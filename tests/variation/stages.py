@@ -10,6 +10,7 @@ from hypothesis import strategies as st
 from biasband.circuit.quantities import Quantity, vocabulary
 from biasband.stage import (
     AnyTransistor,
+    Distribution,
     IdealTransistor,
     Limits,
     Resistor,
@@ -122,6 +123,15 @@ def running_away(ambient: Limits | None = None) -> Stage:
     return stage("base-resistor", {"RB": 10e6, "RC": 100.0}, leaky, 20.0, ambient=hot)
 
 
+def distributions(tolerance: float) -> list[Distribution]:
+    """Every distribution that a resistor's tolerance can have."""
+    plain = [Distribution(name=name) for name in ("uniform", "normal", "triangular", "sine")]
+    within = [0.0, 0.3 * tolerance, tolerance]
+    batches = [Distribution(name="batch", within_batch=part) for part in within]
+    hollow = [Distribution(name="hollow", hollow_within=0.2 * tolerance)] if tolerance else []
+    return [*plain, *batches, *hollow]
+
+
 _ORDINARY = {
     "base-resistor": ({"RB": 1.2e6, "RC": 3.9e3}, {"RB": 910e3, "RC": 3.3e3, "RE": 330.0}),
     "collector-feedback": ({"RB": 470e3, "RC": 3.9e3}, {"RB": 82e3, "R2": 43e3, "RC": 3.6e3, "RE": 1e3}),
@@ -135,6 +145,9 @@ _ORDINARY = {
 """Resistors that bias the invented transistor at about a milliampere from 9 V (±9 V)."""
 
 
+_DRAWN_GAIN = [Distribution(), Distribution(name="sine"), Distribution(name="batch", within_batch=0.2)]
+
+
 @st.composite
 def varying_stages(draw: st.DrawFn) -> Stage:
     """Any stage that varies: groups, a supply by board, hot and leaky ones, some that saturate."""
@@ -145,14 +158,16 @@ def varying_stages(draw: st.DrawFn) -> Stage:
     negative = Supply(voltage=Limits(low=-9.9, nominal=-9.0, high=-8.1), varies=varies)
     tempco = draw(st.sampled_from([0.0, 1e-4, 4e-4]))
     grouped = {"group": "reel", "tracking": 0.3 * tempco} if draw(st.booleans()) else {}
+    tolerance = draw(st.sampled_from([0.0, 0.01, 0.05]))
     resistor = {
-        "tolerance": draw(st.sampled_from([0.0, 0.01, 0.05])),
-        "distribution": draw(st.sampled_from(["uniform", "normal", "triangular"])),
+        "tolerance": tolerance,
+        "distribution": draw(st.sampled_from(distributions(tolerance))),
         "life_drift": draw(st.sampled_from([0.0, 0.01])),
         "tempco": tempco,
         **grouped,
     }
     transistor = real(
+        gain=replace(limits(165.0, 260.0, 410.0), distribution=draw(st.sampled_from(_DRAWN_GAIN))),
         leakage=draw(st.sampled_from([0.0, 40e-9, 500e-9])),
         thermal_resistance=draw(st.sampled_from([None, 280.0])),
         base_emitter_drift=draw(st.sampled_from([-2e-3, None])),
@@ -171,5 +186,6 @@ def varying_stages(draw: st.DrawFn) -> Stage:
         negative_supply=negative if topology == "split-supply" else None,
         polarity=polarity,
         ambient=ambient,
+        boards_per_batch=7,
         signal=draw(st.sampled_from([None, signal])),
     )

@@ -7,7 +7,7 @@ import pytest
 
 from biasband.stage import Limits, Stage, Supply
 from biasband.variation.contributors import axes, board_axes, realise, use_axes
-from biasband.variation.sampling import draws
+from biasband.variation.draws import draws
 from variation.stages import ROOM, ideal, limits, real, stage, with_resistor, with_resistors
 
 ROUNDING = 1e-12

@@ -1,0 +1,103 @@
+"""Holds a stage against its limits: gathers what the three methods find and makes the rows of it."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+
+import numpy as np
+
+from biasband.circuit.operating_point import Region
+from biasband.circuit.quantities import Quantity, vocabulary
+from biasband.circuit.reading import read
+from biasband.margins.checks import Standing, check_margins, standing_checks
+from biasband.margins.records import Evidence, Margin
+from biasband.margins.requirements import requirement_margins
+from biasband.stage import Stage
+from biasband.variation import causes as causing
+from biasband.variation import corners as cornering
+from biasband.variation import rss as summing
+from biasband.variation import sampling
+from biasband.variation.contributors import realise, use_axes
+from biasband.variation.evaluation import Measures, cut_off_current
+from biasband.variation.points_of_use import PointOfUse, points_of_use
+
+_INTERIOR_DIGITS = 2
+"""Interior points of use closer than this in every coordinate are one point."""
+
+
+@dataclass(frozen=True)
+class Nominal:
+    """The nominal point: every quantity [SI] by name, and the region it stands in."""
+
+    values: Mapping[str, float]
+    region: Region
+
+
+@dataclass(frozen=True)
+class Holding:
+    """A stage held against its limits; `rows` are requirements and checks, the smallest margin first."""
+
+    nominal: Nominal
+    standing: Standing
+    evidence: Evidence
+    rows: tuple[Margin, ...]
+
+
+def words(stage: Stage) -> Mapping[str, Quantity]:
+    """The vocabulary of a stage."""
+    return vocabulary(tuple(resistor.name for resistor in stage.resistors))
+
+
+def nominal(stage: Stage) -> Nominal:
+    """Solve a stage, every resistor valued, with every contributor at its nominal value."""
+    reading = read(stage, realise(stage, {}))
+    with np.errstate(all="ignore"):
+        values = {name: _first(quantity.read(reading)) for name, quantity in words(stage).items()}
+    region = Region(int(reading.regions(cut_off_current(stage))[0]))
+    return Nominal(values, region)
+
+
+def hold(stage: Stage, measures: Measures, *, boards: int, seed: int) -> Holding:
+    """Hold a stage, every resistor valued, against its requirements and the standing checks.
+
+    `measures` are the quantities to find the spread of, those of the requirements among them.
+    """
+    cut_off, middle = cut_off_current(stage), nominal(stage)
+    standing = standing_checks(stage, cut_off=cut_off)
+    checked = {**measures, **standing.measures}
+    found = cornering.corners(stage, checked, cut_off=cut_off)
+    points = (*points_of_use(stage), *_interior_points(stage, found, measures))
+    evidence = Evidence(
+        nominal=middle.values,
+        corners=found,
+        rss=summing.rss(stage, measures, cut_off=cut_off),
+        boards=sampling.sample(stage, measures, points, boards=boards, seed=seed, cut_off=cut_off),
+        causes=causing.causes(stage, found.ranges, checked, cut_off=cut_off),
+    )
+    required = requirement_margins(stage.requirements, measures, evidence)
+    rows = (*required, *check_margins(stage, standing.made, evidence))
+    return Holding(middle, standing, evidence, tuple(sorted(rows, key=smallness)))
+
+
+def smallness(row: Margin) -> float:
+    """Sort key: the smallest margin share first; a nominal value beyond its limit before all."""
+    share = row.margin_share
+    return -np.inf if share is None or np.isnan(share) else share
+
+
+def _first(values: object) -> float:
+    return float(np.ravel(np.asarray(values))[0])
+
+
+def _interior_points(
+    stage: Stage, found: cornering.Corners, measures: Measures
+) -> tuple[PointOfUse, ...]:
+    """The in-use coordinates of interior extremes: points that boards must be solved at too."""
+    inside = {axis.name for axis in use_axes(stage)}
+    ranges = (found.ranges[name] for name in measures)
+    extremes = [extreme for each in ranges for extreme in (each.low, each.high) if extreme.interior]
+    places = [{name: x for name, x in e.coordinates.items() if name in inside} for e in extremes]
+    within = [place for place in places if any(abs(x) < 1.0 for x in place.values())]
+    unique = {tuple(round(x, _INTERIOR_DIGITS) for x in place.values()): place for place in within}
+    return tuple(PointOfUse(place) for place in unique.values())

@@ -1,0 +1,230 @@
+"""Chooses values jointly: of all sets around the ideal values, the one whose worst case is best.
+
+Branch and bound. Held at a few corners a set looks no worse than it is, so sets are looked at in the
+order of what they could be at best: those that lead are held at every corner, and those that lead
+then are searched inside the box too. The winner is the one that holding every set against
+everything would find.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterable, Sequence
+from dataclasses import dataclass, replace
+from math import inf
+
+import numpy as np
+
+from biasband.circuit.scenarios import Array
+from biasband.constants import BOARDS
+from biasband.margins.holding import hold, words
+from biasband.margins.records import NAN, Margin
+from biasband.stage import Stage, Target
+from biasband.values.bench import CURRENT, SWING, Bench, Indices, bench, hold_sets
+
+FINALISTS = 3
+"""How many sets are held against everything and shown side by side."""
+
+DIGITS = 3
+"""Shares that agree to this many decimals, 0.1 %, are equal."""
+
+NEAR = 0.10
+"""Without requirements, collector currents within the same tenth of the target are equally near to it."""
+
+_BATCH = 32
+"""Sets that are held at every corner in one go."""
+
+SCREENING = 0.5
+"""The share of the work, as progress counts it, that holding every set at a few corners is."""
+
+_SEED = 1
+
+Progress = Callable[[float], None]
+"""Told the share of the work that is done."""
+
+
+@dataclass(frozen=True)
+class Contender:
+    """A set of values [Ω] held against everything.
+
+    `share` is its smallest margin share by each limit's own method, `corner_share` the smallest at the
+    corners; both are −inf where a nominal value fails. `smallest` is the row with the smallest share,
+    `failing` are those that fail. `current` [A] is the nominal collector current, `swing` [V] the
+    smallest symmetric swing at any corner, NaN where neither a requirement nor the choice is about it.
+    """
+
+    values: tuple[float, ...]
+    share: float
+    corner_share: float
+    smallest: Margin
+    failing: tuple[Margin, ...]
+    failing_at_corners: int
+    current: float
+    swing: float
+
+
+@dataclass(frozen=True)
+class Contest:
+    """What the joint choice found: contenders for the resistors `names`, the best first.
+
+    `nearest` is the set that nearness alone gives, among the contenders or behind them; None where the
+    stock list has too few pieces for it. `sets` is how many were compared; `by_swing` says that it was
+    by their swing, the stage having no requirements.
+    """
+
+    names: tuple[str, ...]
+    contenders: tuple[Contender, ...]
+    nearest: Contender | None
+    sets: int
+    by_swing: bool
+
+
+def silent(done: float) -> None:
+    """Tell nobody."""
+
+
+def contest(
+    stage: Stage, names: tuple[str, ...], values: Array, *, nearest: int | None, progress: Progress = silent
+) -> Contest:
+    """Compare S sets of values [Ω] for the resistors `names`, shape (S, P); `nearest` is the row of one.
+
+    With requirements, the smallest margin share over them and the standing checks decides. Without, it is
+    failing checks, then how many tenths the collector current is off its target, then the swing. Then
+    come nearness of the collector current to its target and fewer distinct values. The other resistors
+    of the stage have values.
+    """
+    search = _Search(bench(_valued(stage, names, values[nearest or 0]), names), values, progress)
+    leading = search.finalists()
+    return Contest(
+        names=names,
+        contenders=tuple(sorted((search.contender(row) for row in leading), key=search.rule.own_key)),
+        nearest=None if nearest is None else search.contender(nearest),
+        sets=len(values),
+        by_swing=search.rule.by_swing,
+    )
+
+
+@dataclass(frozen=True)
+class _Rule:
+    """What decides between sets, as columns to sort by, first to last, the smaller the better."""
+
+    target: Target
+    supply: float
+    by_swing: bool
+
+    def columns(self, shares: Array, failing: Array, swing: Array, current: Array, values: Array) -> Array:
+        """A row per set, from arrays (S,) and the values (S, P); what is not solved is worst."""
+        off = np.nan_to_num(np.abs(current / self.target.collector_current - 1.0), nan=inf)
+        distinct = (np.diff(np.sort(values, axis=1), axis=1) > 0.0).sum(axis=1)
+        first = [-np.round(shares, DIGITS), failing]
+        if self.by_swing:
+            room = np.nan_to_num(np.round(swing / self.supply, DIGITS), nan=-inf)
+            first = [failing, np.floor(off / NEAR), -room]
+        return np.column_stack([*first, off, distinct, values])
+
+    def corner_key(self, contender: Contender) -> tuple[float, ...]:
+        """The columns of one contender at the corners."""
+        return self._key(contender, contender.corner_share, contender.failing_at_corners)
+
+    def own_key(self, contender: Contender) -> tuple[float, ...]:
+        """The columns of one contender by each limit's own method, then at the corners."""
+        own = self._key(contender, contender.share, len(contender.failing))
+        return (*own[: 3 if self.by_swing else 2], *self.corner_key(contender))
+
+    def _key(self, contender: Contender, share: float, failing: int) -> tuple[float, ...]:
+        shares, fails, swing, current = np.array([[share], [failing], [contender.swing], [contender.current]])
+        return tuple(self.columns(shares, fails, swing, current, np.array([contender.values]))[0].tolist())
+
+
+class _Search:
+    """A branch and bound under way: bounds for all sets, exact figures for those that needed them."""
+
+    def __init__(self, bench: Bench, values: Array, progress: Progress) -> None:
+        self.bench, self.values, self.progress = bench, values, progress
+        self.rule = _rule(bench.stage)
+        self.everywhere = np.arange(len(bench.corners))
+        self.pool = self._telling_corners()
+        self.scores = hold_sets(bench, values, self.pool, progress=lambda done: progress(SCREENING * done))
+        self.held_everywhere = np.zeros(len(values), dtype=bool)
+        self.exact: dict[int, Contender] = {}
+
+    def finalists(self) -> list[int]:
+        """The best sets, the best first, all held against everything."""
+        while True:
+            order = self._order()
+            leading = order[:FINALISTS]
+            if not self.held_everywhere[leading].all():
+                self._hold_everywhere(order[~self.held_everywhere[order]][:_BATCH])
+                continue
+            bounded = [int(row) for row in leading if row not in self.exact]
+            if not bounded:
+                return [int(row) for row in leading]
+            self.contender(bounded[0])
+
+    def contender(self, row: int) -> Contender:
+        """A set held against everything: every corner, the inside of the box, each limit's own method."""
+        if row not in self.exact:
+            self.exact[row] = _contender(self.bench, self.values[row])
+            done = min(len(self.exact) / (FINALISTS + 1), 1.0)
+            self.progress(SCREENING + (1.0 - SCREENING) * done)
+        return self.exact[row]
+
+    def _telling_corners(self) -> Indices:
+        """The corners that are worst for the smallest, the middle and the largest set."""
+        order = np.argsort(np.log(self.values).sum(axis=1), kind="stable")
+        some = order[[0, len(order) // 2, -1]]
+        return np.unique(hold_sets(self.bench, self.values[some], self.everywhere).worst)
+
+    def _order(self) -> Indices:
+        """All sets, the best first by what is known of them."""
+        scores = self.scores
+        shares, failing = scores.shares.min(axis=1), (~(scores.slack >= 0.0)).sum(axis=1)
+        keys = self.rule.columns(shares, failing, scores.swing, scores.current, self.values)
+        for row, contender in self.exact.items():
+            keys[row] = self.rule.corner_key(contender)
+        return np.lexsort(keys.T[::-1])
+
+    def _hold_everywhere(self, sets: Indices) -> None:
+        """Hold some sets at every corner, and all others at those that turned out to be worst."""
+        held = hold_sets(self.bench, self.values[sets], self.everywhere)
+        self.scores = self.scores.with_rows(sets, held)
+        self.held_everywhere[sets] = True
+        new, left = np.setdiff1d(held.worst, self.pool), np.flatnonzero(~self.held_everywhere)
+        self.pool = np.union1d(self.pool, new)
+        if new.size and left.size:
+            again = hold_sets(self.bench, self.values[left], new)
+            self.scores = self.scores.with_rows(left, self.scores.rows(left).worse(again))
+
+
+def _rule(stage: Stage) -> _Rule:
+    """The rule of a stage; one without a target would have nothing to choose."""
+    assert stage.target is not None
+    return _Rule(stage.target, stage.supply.voltage.nominal, not stage.requirements)
+
+
+def _contender(bench: Bench, values: Array) -> Contender:
+    stage = _valued(bench.stage, bench.names, values)
+    vocabulary = words(stage)
+    asked = [requirement.quantity for requirement in stage.requirements] or [SWING]
+    measures = {name: vocabulary[name] for name in dict.fromkeys(asked)}
+    by_yield = any(requirement.judged_by == "yield" for requirement in stage.requirements)
+    held = hold(stage, measures, boards=BOARDS if by_yield else 1, seed=_SEED)
+    return Contender(
+        values=tuple(values.tolist()),
+        share=_least(row.margin_share for row in held.rows),
+        corner_share=_least(row.corner_share for row in held.rows),
+        smallest=held.rows[0],
+        failing=tuple(row for row in held.rows if row.verdict == "fail"),
+        failing_at_corners=sum(not row.passes_at_corners for row in held.rows),
+        current=held.nominal.values[CURRENT],
+        swing=held.evidence.corners.ranges[SWING].low.value if SWING in measures else NAN,
+    )
+
+
+def _least(shares: Iterable[float | None]) -> float:
+    return min((-inf if share is None or np.isnan(share) else share for share in shares), default=inf)
+
+
+def _valued(stage: Stage, names: Sequence[str], values: Array) -> Stage:
+    given = dict(zip(names, values.tolist(), strict=True))
+    resistors = tuple(replace(r, value=given.get(r.name, r.value)) for r in stage.resistors)
+    return replace(stage, resistors=resistors)
