@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -19,6 +19,7 @@ from biasband.variation import corners as cornering
 from biasband.variation import rss as summing
 from biasband.variation import sampling
 from biasband.variation.contributors import realise, use_axes
+from biasband.variation.corners import BOTH, Sides
 from biasband.variation.evaluation import Measures, cut_off_current
 from biasband.variation.points_of_use import PointOfUse, points_of_use
 
@@ -58,22 +59,48 @@ def nominal(stage: Stage) -> Nominal:
     return Nominal(values, region)
 
 
-def hold(stage: Stage, measures: Measures, *, boards: int, seed: int) -> Holding:
+def hold(stage: Stage, measures: Measures, *, boards: int, seed: int, sides: Sides = BOTH) -> Holding:
     """Hold a stage, every resistor valued, against its requirements and the standing checks.
 
-    `measures` are the quantities to find the spread of, those of the requirements among them.
+    `measures` are the quantities to find the spread of, those of the requirements among them; `sides`
+    names those of which one side alone is wanted.
     """
-    cut_off, middle = cut_off_current(stage), nominal(stage)
-    standing = standing_checks(stage, cut_off=cut_off)
+    return hold_all((stage,), measures, boards=boards, seed=seed, sides=sides)[0]
+
+
+def hold_all(
+    stages: Sequence[Stage], measures: Measures, *, boards: int, seed: int, sides: Sides = BOTH
+) -> tuple[Holding, ...]:
+    """Hold several stages, which differ in the values of their resistors only; quicker than one by one."""
+    first, cut_off = stages[0], cut_off_current(stages[0])
+    standing = standing_checks(first, cut_off=cut_off)
     checked = {**measures, **standing.measures}
-    found = cornering.corners(stage, checked, cut_off=cut_off)
+    lowest = dict.fromkeys(standing.measures, -1.0)
+    found = cornering.corners_of(stages, checked, cut_off=cut_off, sides={**sides, **lowest})
+    return tuple(
+        _held(stage, measures, standing, each, cut_off=cut_off, boards=boards, seed=seed)
+        for stage, each in zip(stages, found, strict=True)
+    )
+
+
+def _held(
+    stage: Stage,
+    measures: Measures,
+    standing: Standing,
+    found: cornering.Corners,
+    *,
+    cut_off: float,
+    boards: int,
+    seed: int,
+) -> Holding:
+    middle = nominal(stage)
     points = (*points_of_use(stage), *_interior_points(stage, found, measures))
     evidence = Evidence(
         nominal=middle.values,
         corners=found,
         rss=summing.rss(stage, measures, cut_off=cut_off),
         boards=sampling.sample(stage, measures, points, boards=boards, seed=seed, cut_off=cut_off),
-        causes=causing.causes(stage, found.ranges, checked, cut_off=cut_off),
+        causes=causing.causes(stage, found.ranges, {**measures, **standing.measures}, cut_off=cut_off),
     )
     required = requirement_margins(stage.requirements, measures, evidence)
     rows = (*required, *check_margins(stage, standing.made, evidence))

@@ -6,9 +6,9 @@ import math
 from collections.abc import Iterator
 
 from biasband.quantity import Kind
-from biasband.show.table import Column, Row, Table, computed, figure, whole_percent
+from biasband.show.table import REGION_WORDS, Column, Row, Table, computed, figure, whole_percent
 from biasband.stage import Stage
-from biasband.values.joint import NEAR, Contender, Contest
+from biasband.values.joint import NEAR, Contender, Contest, finalist_boards
 
 _PLACES = ("chosen", "2nd", "3rd", *(f"{place}th" for place in range(4, 20)))
 
@@ -49,7 +49,8 @@ def _row(place: str, contender: Contender, contest: Contest) -> Row:
         on,
     )
     failing = [row.quantity if row.standing else f"{row.id} {row.quantity}" for row in contender.failing]
-    below = (f"FAILS {', '.join(dict.fromkeys(failing))}",) if failing else ()
+    lost = [f"{REGION_WORDS[region]} at a corner" for region in contender.regions]
+    below = (f"FAILS {', '.join(lost or dict.fromkeys(failing))}",) if failing else ()
     return Row(cells, below, "fail" if failing else "")
 
 
@@ -74,7 +75,9 @@ def _notes(contest: Contest, stage: Stage) -> Iterator[str]:
     if all(contender.failing for contender in contest.contenders):
         yield "No set passes: the best of them is shown with what fails."
     if any(requirement.judged_by != "corners" for requirement in stage.requirements):
-        yield "The sets that lead at the corners are ranked by each requirement's own method."
+        boards = finalist_boards(stage)
+        sampled = f", yields on {boards} boards" if boards > 1 else ""
+        yield f"The sets that lead at the corners are ranked by each requirement's own method{sampled}."
     yield "To overrule, for example: --keep " + _example(contest)
 
 

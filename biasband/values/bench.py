@@ -60,6 +60,17 @@ class Bench:
     corners: Array
     cut_off: float
 
+    @property
+    def sides(self) -> dict[str, float]:
+        """What is asked of a set: quantities, each with the side it is held to, −1 low, +1 high, 0 both."""
+        if not self.stage.requirements:
+            return {SWING: -1.0}
+        asked: dict[str, set[float]] = {}
+        for row in (row for row in self.rows if not row.check):
+            both = {-1.0, 1.0} if row.by_magnitude else {-1.0 if row.side == "at_least" else 1.0}
+            asked.setdefault(row.quantity, set()).update(both)
+        return {name: sum(signs) for name, signs in asked.items()}
+
 
 @dataclass(frozen=True)
 class Scores:

@@ -8,18 +8,21 @@ everything would find.
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterable, Sequence
+from collections.abc import Callable, Iterable, Iterator, Sequence
 from dataclasses import dataclass, replace
 from math import inf
 
 import numpy as np
 
+from biasband.circuit.operating_point import Region
 from biasband.circuit.scenarios import Array
 from biasband.constants import BOARDS
-from biasband.margins.holding import hold, words
+from biasband.margins.holding import Holding, hold_all, words
 from biasband.margins.records import NAN, Margin
 from biasband.stage import Stage, Target
 from biasband.values.bench import CURRENT, SWING, Bench, Indices, bench, hold_sets
+from biasband.variation.draws import batch_size
+from biasband.variation.sampling import allowed_failures
 
 FINALISTS = 3
 """How many sets are held against everything and shown side by side."""
@@ -30,11 +33,11 @@ DIGITS = 3
 NEAR = 0.10
 """Without requirements, collector currents within the same tenth of the target are equally near to it."""
 
+FINALIST_BOARDS = 2**13
+"""Boards sampled for each finalist where they can show the yield asked for; else as many as usual."""
+
 _BATCH = 32
 """Sets that are held at every corner in one go."""
-
-SCREENING = 0.5
-"""The share of the work, as progress counts it, that holding every set at a few corners is."""
 
 _SEED = 1
 
@@ -50,6 +53,7 @@ class Contender:
     corners; both are −inf where a nominal value fails. `smallest` is the row with the smallest share,
     `failing` are those that fail. `current` [A] is the nominal collector current, `swing` [V] the
     smallest symmetric swing at any corner, NaN where neither a requirement nor the choice is about it.
+    `regions` are runaway and unsolved, where a corner lies there: then every row counts as failing.
     """
 
     values: tuple[float, ...]
@@ -60,6 +64,7 @@ class Contender:
     failing_at_corners: int
     current: float
     swing: float
+    regions: tuple[Region, ...] = ()
 
 
 @dataclass(frozen=True)
@@ -93,11 +98,12 @@ def contest(
     of the stage have values.
     """
     search = _Search(bench(_valued(stage, names, values[nearest or 0]), names), values, progress)
-    leading = search.finalists()
+    home = [] if nearest is None else [nearest]
+    known = {*search.finalists(beside=home), *home}
     return Contest(
         names=names,
-        contenders=tuple(sorted((search.contender(row) for row in leading), key=search.rule.own_key)),
-        nearest=None if nearest is None else search.contender(nearest),
+        contenders=tuple(sorted((search.exact[row] for row in known), key=search.rule.own_key)[:FINALISTS]),
+        nearest=None if nearest is None else search.exact[nearest],
         sets=len(values),
         by_swing=search.rule.by_swing,
     )
@@ -143,12 +149,12 @@ class _Search:
         self.rule = _rule(bench.stage)
         self.everywhere = np.arange(len(bench.corners))
         self.pool = self._telling_corners()
-        self.scores = hold_sets(bench, values, self.pool, progress=lambda done: progress(SCREENING * done))
+        self.scores = hold_sets(bench, values, self.pool, progress=progress)
         self.held_everywhere = np.zeros(len(values), dtype=bool)
         self.exact: dict[int, Contender] = {}
 
-    def finalists(self) -> list[int]:
-        """The best sets, the best first, all held against everything."""
+    def finalists(self, *, beside: Sequence[int] = ()) -> list[int]:
+        """The best sets, the best first, all held against everything, as are those `beside` them."""
         while True:
             order = self._order()
             leading = order[:FINALISTS]
@@ -158,15 +164,13 @@ class _Search:
             bounded = [int(row) for row in leading if row not in self.exact]
             if not bounded:
                 return [int(row) for row in leading]
-            self.contender(bounded[0])
+            self.hold_exactly([*bounded, *beside])
 
-    def contender(self, row: int) -> Contender:
-        """A set held against everything: every corner, the inside of the box, each limit's own method."""
-        if row not in self.exact:
-            self.exact[row] = _contender(self.bench, self.values[row])
-            done = min(len(self.exact) / (FINALISTS + 1), 1.0)
-            self.progress(SCREENING + (1.0 - SCREENING) * done)
-        return self.exact[row]
+    def hold_exactly(self, rows: Sequence[int]) -> None:
+        """Hold sets against everything: every corner, the inside of the box, each limit's own method."""
+        new = [row for row in rows if row not in self.exact]
+        if new:
+            self.exact.update(zip(new, _contenders(self.bench, self.values[new]), strict=True))
 
     def _telling_corners(self) -> Indices:
         """The corners that are worst for the smallest, the middle and the largest set."""
@@ -201,22 +205,43 @@ def _rule(stage: Stage) -> _Rule:
     return _Rule(stage.target, stage.supply.voltage.nominal, not stage.requirements)
 
 
-def _contender(bench: Bench, values: Array) -> Contender:
-    stage = _valued(bench.stage, bench.names, values)
-    vocabulary = words(stage)
-    asked = [requirement.quantity for requirement in stage.requirements] or [SWING]
-    measures = {name: vocabulary[name] for name in dict.fromkeys(asked)}
-    by_yield = any(requirement.judged_by == "yield" for requirement in stage.requirements)
-    held = hold(stage, measures, boards=BOARDS if by_yield else 1, seed=_SEED)
+def _contenders(bench: Bench, values: Array) -> Iterator[Contender]:
+    """Sets of values (S, P) held against everything."""
+    stages = [_valued(bench.stage, bench.names, row) for row in values]
+    vocabulary, sides = words(stages[0]), bench.sides
+    held = hold_all(
+        stages,
+        {name: vocabulary[name] for name in sides},
+        boards=finalist_boards(bench.stage),
+        seed=_SEED,
+        sides={name: side for name, side in sides.items() if side},
+    )
+    for row, holding in zip(values, held, strict=True):
+        yield _contender(row, holding)
+
+
+def finalist_boards(stage: Stage) -> int:
+    """How many boards each finalist is sampled with; one where no requirement is judged by its yield."""
+    yields = [r.yield_at_least for r in stage.requirements if r.judged_by == "yield"]
+    batch = batch_size(stage)
+    few = all(allowed_failures(FINALIST_BOARDS, y, boards_per_batch=batch) >= 0 for y in yields)
+    return (FINALIST_BOARDS if few else BOARDS) if yields else 1
+
+
+def _contender(values: Array, held: Holding) -> Contender:
+    """A set as it was held; one that runs away, or is not solved, at some corner is the worst there is."""
+    corners = held.evidence.corners
+    lost = corners.regions.keys() & {Region.RUNAWAY, Region.UNSOLVED}
     return Contender(
         values=tuple(values.tolist()),
-        share=_least(row.margin_share for row in held.rows),
-        corner_share=_least(row.corner_share for row in held.rows),
+        share=-inf if lost else _least(row.margin_share for row in held.rows),
+        corner_share=-inf if lost else _least(row.corner_share for row in held.rows),
         smallest=held.rows[0],
-        failing=tuple(row for row in held.rows if row.verdict == "fail"),
-        failing_at_corners=sum(not row.passes_at_corners for row in held.rows),
+        failing=held.rows if lost else tuple(row for row in held.rows if row.verdict == "fail"),
+        failing_at_corners=sum(bool(lost) or not row.passes_at_corners for row in held.rows),
         current=held.nominal.values[CURRENT],
-        swing=held.evidence.corners.ranges[SWING].low.value if SWING in measures else NAN,
+        swing=corners.ranges[SWING].low.value if SWING in corners.ranges and not lost else NAN,
+        regions=tuple(sorted(lost)),
     )
 
 

@@ -39,7 +39,11 @@ def _problems(stage: Stage, name: str, value: float, series: Mapping[str, Series
         yield f"{name}: the stage file gives it a value: change it there"
         return
     shelf = shelves(stage, series)[name]
-    nearest = shelf.nearest(value)
+    try:
+        nearest = shelf.nearest(value)
+    except UsageError as error:
+        yield f"{name}: {error}"
+        return
     if nearest != value:
         where = shelf.series.name if shelf.in_stock is None else "stock"
         given, nearer = (format_exact(ohms, Kind.RESISTANCE) for ohms in (value, nearest))

@@ -8,21 +8,27 @@ what was found inside it is driven to its very end (polish.py).
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
+from types import MappingProxyType
 
 import numpy as np
 
 from biasband.circuit.operating_point import Region
 from biasband.circuit.scenarios import Array
 from biasband.stage import Stage
-from biasband.variation.contributors import NEGATIVE, RIPPLE, Axis, axes, columns, realise
+from biasband.variation.contributors import NEGATIVE, RIPPLE, Axis, realise
 from biasband.variation.evaluation import Measures, Outcome, evaluate
+from biasband.variation.family import Family
 from biasband.variation.interior import Climbs, search
 from biasband.variation.polish import polish
 
 _STARTS_SPLIT_BY = ("gain", "temperature")
 """The axes along which extremes wander: the best vertex on either side of each is a start."""
+
+Sides = Mapping[str, float]
+BOTH: Sides = MappingProxyType({})
+"""Every measure searched for both of its extremes."""
 
 _EQUAL = 1e-9
 """Extremes that differ relatively by less are the same, found twice."""
@@ -64,28 +70,60 @@ class Corners:
     region_at: Mapping[Region, Mapping[str, float]]
 
 
-def corners(stage: Stage, measures: Measures, *, cut_off: float) -> Corners:
+def corners(stage: Stage, measures: Measures, *, cut_off: float, sides: Sides = BOTH) -> Corners:
     """Evaluate all 2^n corners and search the box from several of them.
+
+    `sides` names measures of which only the lowest (−1) or the highest (+1) is searched for; their other
+    end is merely the best of the points that were looked at for the rest.
 
     Worked case: 12 V, RB 240 k, RC 2.2 k, V_BE 0.7 V, h_FE 30…100: V_CE·I_C is 12.6 and 7.7 mW at
     the corners, 16.4 mW inside. A measure that no corner solves has NaN extremes.
     Source: extreme-value (worst-case) analysis, "common practice".
     """
-    box = axes(stage)
-    limits = vertices(box)
-    points = np.vstack([limits, [[_middle(axis) for axis in box]]]) if box else limits
-    outcome = evaluate(stage, columns(box, points), measures, cut_off=cut_off)
-    found = search(stage, box, _starts(box, points, measures, outcome), measures, cut_off=cut_off)
-    found = polish(stage, box, found, measures, cut_off=cut_off)
-    found = _shared(found, evaluate(stage, columns(box, found.point), measures, cut_off=cut_off), measures)
-    regions = outcome.region[: len(limits)]
+    return corners_of((stage,), measures, cut_off=cut_off, sides=sides)[0]
+
+
+def corners_of(
+    stages: Sequence[Stage], measures: Measures, *, cut_off: float, sides: Sides = BOTH
+) -> tuple[Corners, ...]:
+    """The corners of several stages at once, which differ in the values of their resistors only."""
+    family = Family.of(stages)
+    points = _starting_points(family.box)
+    member = np.repeat(np.arange(family.size), len(points))
+    x = family.columns(np.tile(points, (family.size, 1)), member)
+    outcome = evaluate(family.stage, x, measures, cut_off=cut_off)
+    found = search(family, _starts(family, points, measures, outcome, sides), measures, cut_off=cut_off)
+    found = polish(family, found, measures, cut_off=cut_off)
+    again = evaluate(family.stage, family.columns(found.point, found.member), measures, cut_off=cut_off)
+    found = _shared(family, found, again, measures)
+    return tuple(
+        _corners(stage, family.box, points, measures, _own(outcome, k, len(points)), found.part(rows))
+        for k, stage in enumerate(stages)
+        for rows in (np.flatnonzero(found.member == k),)
+    )
+
+
+def _corners(
+    stage: Stage, box: tuple[Axis, ...], points: Array, measures: Measures, outcome: Outcome, found: Climbs
+) -> Corners:
+    """The corners of one stage, from its own outcome at the starting points and its own climbs."""
+    count = 2 ** len(box)
+    regions = outcome.region[:count]
     present = [Region(code) for code in np.unique(regions)]
     return Corners(
         ranges=_ranges(stage, box, measures, found),
-        count=len(limits),
+        count=count,
         regions={region: int(np.sum(regions == region)) for region in present},
         region_at={r: values_at(stage, _point(box, points[np.argmax(regions == r)])) for r in present},
     )
+
+
+def _own(outcome: Outcome, member: int, count: int) -> Outcome:
+    """The part of an outcome that belongs to one member of a family."""
+    rows = slice(member * count, (member + 1) * count)
+    low = {name: values[rows] for name, values in outcome.low.items()}
+    high = {name: values[rows] for name, values in outcome.high.items()}
+    return Outcome(low, high, outcome.region[rows])
 
 
 def values_at(stage: Stage, coordinates: Mapping[str, float]) -> dict[str, float]:
@@ -103,30 +141,43 @@ def vertices(box: tuple[Axis, ...]) -> Array:
     return np.asarray(2.0 * sides - 1.0, dtype=np.float64)
 
 
-def _middle(axis: Axis) -> float:
-    """Where the search from the middle starts; ripple is there at its peak or not at all."""
-    return -1.0 if axis.name == RIPPLE else axis.nominal
+def _starting_points(box: tuple[Axis, ...]) -> Array:
+    """All vertices, and the middle of the box; ripple is there at its peak or not at all."""
+    limits = vertices(box)
+    middle = [-1.0 if axis.name == RIPPLE else axis.nominal for axis in box]
+    return np.vstack([limits, [middle]]) if box else limits
 
 
 def _point(box: tuple[Axis, ...], row: Array) -> dict[str, float]:
     return {axis.name: float(value) for axis, value in zip(box, row, strict=True)}
 
 
-def _starts(box: tuple[Axis, ...], points: Array, measures: Measures, outcome: Outcome) -> Climbs:
-    """For each measure, downward and upward: the best vertices first, then the middle of the box."""
-    rows, measure, sign, score = [], [], [], []
-    for k, name in enumerate(measures):
-        for side, values in ((-1.0, outcome.low[name]), (1.0, outcome.high[name])):
-            scored = np.where(np.isnan(values), -np.inf, side * values)
-            starts = [*_bestvertices(box, points, scored), len(points) - 1]
-            rows += starts
-            measure += [k] * len(starts)
-            sign += [side] * len(starts)
-            score += [scored[row] for row in starts]
-    return Climbs(np.array(measure), np.array(sign), points[rows], np.array(score))
+def _starts(family: Family, points: Array, measures: Measures, outcome: Outcome, sides: Sides) -> Climbs:
+    """For each member and measure, downward and upward: the best vertices first, then the middle."""
+    climbs: list[_Climb] = []
+    for member in range(family.size):
+        own = _own(outcome, member, len(points))
+        for k, name in enumerate(measures):
+            for side, values in ((-1.0, own.low[name]), (1.0, own.high[name])):
+                if sides.get(name, side) != side:
+                    continue
+                scored = np.where(np.isnan(values), -np.inf, side * values)
+                starts = [*_best_vertices(family.box, points, scored), len(points) - 1]
+                climbs += [(member, k, side, row, scored[row]) for row in starts]
+    return _climbs(climbs, points)
 
 
-def _bestvertices(box: tuple[Axis, ...], points: Array, scored: Array) -> list[int]:
+_Climb = tuple[int, int, float, int, float]
+"""A climb as it is collected: member, measure, sign, row of its point, score."""
+
+
+def _climbs(collected: Sequence[_Climb], points: Array) -> Climbs:
+    member, measure, sign, row, score = np.array(collected, dtype=float).reshape(-1, 5).T
+    at = points[row.astype(np.intp)]
+    return Climbs(member.astype(np.intp), measure.astype(np.intp), sign, at, score)
+
+
+def _best_vertices(box: tuple[Axis, ...], points: Array, scored: Array) -> list[int]:
     """The best vertex, and the best on either side of the axes along which extremes wander."""
     best = int(np.argmax(scored[: 2 ** len(box)]))
     others = {
@@ -138,24 +189,17 @@ def _bestvertices(box: tuple[Axis, ...], points: Array, scored: Array) -> list[i
     return [best, *sorted(others - {best})]
 
 
-def _shared(found: Climbs, outcome: Outcome, measures: Measures) -> Climbs:
-    """The climbs, and for each measure either way the best of all points that others climbed to."""
-    rows, measure, sign, score = [], [], [], []
-    for k, name in enumerate(measures):
-        for side, values in ((-1.0, outcome.low[name]), (1.0, outcome.high[name])):
-            scored = np.where(np.isnan(values), -np.inf, side * values)
-            best = int(np.argmax(scored))
-            rows.append(best)
-            measure.append(k)
-            sign.append(side)
-            score.append(scored[best])
-    more = Climbs(np.array(measure), np.array(sign), found.point[rows], np.array(score))
-    return Climbs(
-        np.append(found.measure, more.measure),
-        np.append(found.sign, more.sign),
-        np.vstack([found.point, more.point]),
-        np.append(found.score, more.score),
-    )
+def _shared(family: Family, found: Climbs, outcome: Outcome, measures: Measures) -> Climbs:
+    """The climbs, and for each member and measure either way the best point that others climbed to."""
+    more: list[_Climb] = []
+    for member in range(family.size):
+        own = np.flatnonzero(found.member == member)
+        for k, name in enumerate(measures):
+            for side, values in ((-1.0, outcome.low[name]), (1.0, outcome.high[name])):
+                scored = np.where(np.isnan(values[own]), -np.inf, side * values[own])
+                best = int(np.argmax(scored))
+                more.append((member, k, side, int(own[best]), scored[best]))
+    return found.joined(_climbs(more, found.point))
 
 
 def _ranges(stage: Stage, box: tuple[Axis, ...], measures: Measures, found: Climbs) -> dict[str, Range]:

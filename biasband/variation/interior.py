@@ -7,15 +7,14 @@ statistical problems", J. ACM 8 (1961), in its simplest form.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, fields, replace
 
 import numpy as np
 from numpy.typing import NDArray
 
 from biasband.circuit.scenarios import Array
-from biasband.stage import Stage
-from biasband.variation.contributors import Axis
 from biasband.variation.evaluation import Measures, Outcome, evaluate
+from biasband.variation.family import Family
 
 _STEPS = tuple(0.75 * 2.0**-k for k in range(14))
 """Never a sum that leads from a limit to exactly nominal, where ripple is absent."""
@@ -32,10 +31,11 @@ _WORTHWHILE = 1e-9
 class Climbs:
     """S climbs through the box: `point` (S, K), the `score` (S,) that each raises, and of what.
 
-    `measure` (S,) counts into the measures; a climb raises `sign` × that measure. The score is
-    −inf where the point is not solved.
+    `member` (S,) says for which stage of a family, `measure` (S,) counts into the measures; a climb
+    raises `sign` × that measure. The score is −inf where the point is not solved.
     """
 
+    member: NDArray[np.intp]
     measure: NDArray[np.intp]
     sign: Array
     point: Array
@@ -43,7 +43,16 @@ class Climbs:
 
     def part(self, rows: NDArray[np.intp]) -> Climbs:
         """The climbs at `rows`."""
-        return Climbs(self.measure[rows], self.sign[rows], self.point[rows], self.score[rows])
+        return Climbs(*(getattr(self, field.name)[rows] for field in fields(self)))
+
+    def joined(self, other: Climbs) -> Climbs:
+        """These climbs and then those."""
+        names = [field.name for field in fields(self)]
+        return Climbs(*(np.concatenate([getattr(self, n), getattr(other, n)]) for n in names))
+
+    def at(self, point: Array, score: Array) -> Climbs:
+        """The same climbs, higher up."""
+        return replace(self, point=point, score=score)
 
 
 def scores(outcome: Outcome, names: tuple[str, ...], climbs: Climbs) -> Array:
@@ -56,36 +65,33 @@ def scores(outcome: Outcome, names: tuple[str, ...], climbs: Climbs) -> Array:
     return np.where(np.isnan(table), -np.inf, table)
 
 
-def search(
-    stage: Stage, box: tuple[Axis, ...], climbs: Climbs, measures: Measures, *, cut_off: float
-) -> Climbs:
+def search(family: Family, climbs: Climbs, measures: Measures, *, cut_off: float) -> Climbs:
     """Drive every climb as high as it goes; one that nothing improves, or not solved, keeps its start."""
     point, score = climbs.point.copy(), climbs.score.copy()
     moved, live = np.zeros(len(score), dtype=bool), np.isfinite(score)
-    for count, step in enumerate(_STEPS if box else ()):
+    for count, step in enumerate(_STEPS if family.box else ()):
         rows = np.flatnonzero(live)
         for _ in range(_MOVES_PER_STEP):
             if not rows.size:
                 break
-            here = Climbs(climbs.measure[rows], climbs.sign[rows], point[rows], score[rows])
-            better = _neighbours(stage, box, here, step, measures, cut_off)
+            here = climbs.at(point, score).part(rows)
+            better = _neighbours(family, here, step, measures, cut_off)
             rounding = _WORTHWHILE * np.abs(np.nan_to_num(better.score, neginf=0.0))
             gained = better.score > here.score + rounding
             rows, better = rows[gained], better.part(np.flatnonzero(gained))
             point[rows], score[rows], moved[rows] = better.point, better.score, True
         if count >= _TRIAL_STEPS:
             live &= moved
-    return Climbs(climbs.measure, climbs.sign, point, score)
+    return climbs.at(point, score)
 
 
-def _neighbours(
-    stage: Stage, box: tuple[Axis, ...], here: Climbs, step: float, measures: Measures, cut_off: float
-) -> Climbs:
+def _neighbours(family: Family, here: Climbs, step: float, measures: Measures, cut_off: float) -> Climbs:
     """Each climb at the best of the points one step away along an axis."""
-    directions = np.concatenate([np.eye(len(box)), -np.eye(len(box))]) * step
+    axes = len(family.box)
+    directions = np.concatenate([np.eye(axes), -np.eye(axes)]) * step
     tried = np.clip(here.point[:, None, :] + directions, -1.0, 1.0)
-    columns = {axis.name: tried[:, :, k].ravel() for k, axis in enumerate(box)}
-    table = scores(evaluate(stage, columns, measures, cut_off=cut_off), tuple(measures), here)
+    x = family.columns(tried.reshape(-1, axes), np.repeat(here.member, 2 * axes))
+    table = scores(evaluate(family.stage, x, measures, cut_off=cut_off), tuple(measures), here)
     best = np.argmax(table, axis=1)
     rows = np.arange(len(best))
-    return Climbs(here.measure, here.sign, tried[rows, best], table[rows, best])
+    return here.at(tried[rows, best], table[rows, best])

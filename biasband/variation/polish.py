@@ -9,8 +9,7 @@ least of several smooth pieces is greatest (a symmetric swing where up equals do
 from __future__ import annotations
 
 import functools
-from collections.abc import Callable
-from dataclasses import replace
+from collections.abc import Callable, Iterator
 
 import numpy as np
 from numpy.typing import NDArray
@@ -18,9 +17,9 @@ from numpy.typing import NDArray
 from biasband.circuit.quantities import Pieces, Quantity
 from biasband.circuit.reading import read
 from biasband.circuit.scenarios import Array
-from biasband.stage import Stage
-from biasband.variation.contributors import RIPPLE, Axis, columns, realise
+from biasband.variation.contributors import RIPPLE, Axis, realise
 from biasband.variation.evaluation import Measures, evaluate
+from biasband.variation.family import Family
 from biasband.variation.interior import Climbs
 
 _STARTS = 2
@@ -36,26 +35,32 @@ Heights = Callable[[Array], Array]
 """What must all be high, at points of the box: (M, K) → (M, P)."""
 
 
-def polish(
-    stage: Stage, box: tuple[Axis, ...], climbs: Climbs, measures: Measures, *, cut_off: float
-) -> Climbs:
+def polish(family: Family, climbs: Climbs, measures: Measures, *, cut_off: float) -> Climbs:
     """Drive on the climbs of every measure whose best ends inside the box or may end on a ridge."""
-    point, score = climbs.point.copy(), climbs.score.copy()
-    for k, (name, measure) in enumerate(measures.items()):
-        for sign in (-1.0, 1.0):
-            rows = np.flatnonzero((climbs.measure == k) & (climbs.sign == sign) & np.isfinite(score))
-            best = rows[np.argsort(-score[rows], kind="stable")][:_STARTS]
-            if not (best.size and (_on_ridge(measure, sign) or _inside(box, point[best[0]]))):
+    point, score, box = climbs.point.copy(), climbs.score.copy(), family.box
+    for rows in _alike(climbs):
+        member, measure, sign = (int(each[rows[0]]) for each in (climbs.member, climbs.measure, climbs.sign))
+        name = tuple(measures)[measure]
+        best = rows[np.argsort(-score[rows], kind="stable")][:_STARTS]
+        if not (_on_ridge(measures[name], sign) or _inside(box, point[best[0]])):
+            continue
+        heights = _heights(family, member, name, measures[name], sign, cut_off)
+        for row in best:
+            if not _rises(heights, box, point[row]):
                 continue
-            heights = _heights(stage, box, name, measure, sign, cut_off)
-            for row in best:
-                if not _rises(heights, box, point[row]):
-                    continue
-                found = _highest(heights, box, point[row])
-                reached = float(heights(found[None, :]).min())
-                if reached > score[row]:
-                    point[row], score[row] = found, reached
-    return replace(climbs, point=point, score=score)
+            found = _highest(heights, box, point[row])
+            reached = float(heights(found[None, :]).min())
+            if reached > score[row]:
+                point[row], score[row] = found, reached
+    return climbs.at(point, score)
+
+
+def _alike(climbs: Climbs) -> Iterator[NDArray[np.intp]]:
+    """The climbs that were solved, those for one member, measure and sign together."""
+    solved = np.flatnonzero(np.isfinite(climbs.score))
+    kinds = np.stack([climbs.member, climbs.measure, climbs.sign])[:, solved]
+    for kind in np.unique(kinds, axis=1).T:
+        yield solved[(kinds == kind[:, None]).all(axis=0)]
 
 
 def _on_ridge(measure: Quantity, sign: float) -> bool:
@@ -67,19 +72,22 @@ def _inside(box: tuple[Axis, ...], point: Array) -> bool:
 
 
 def _heights(
-    stage: Stage, box: tuple[Axis, ...], name: str, measure: Quantity, sign: float, cut_off: float
+    family: Family, member: int, name: str, measure: Quantity, sign: float, cut_off: float
 ) -> Heights:
     """The pieces of a ridge, or the measure itself, signed so that higher is more extreme."""
-    pieces = measure.read
+    stage, pieces = family.stage, measure.read
+
+    def columns(points: Array) -> dict[str, Array]:
+        return family.columns(points, np.full(len(points), member))
 
     def on_ridge(points: Array) -> Array:
         with np.errstate(all="ignore"):
-            reading = read(stage, realise(stage, columns(box, points)))
+            reading = read(stage, realise(stage, columns(points)))
             assert isinstance(pieces, Pieces)
             return sign * np.stack([np.broadcast_to(p, len(points)) for p in pieces.read(reading)], axis=1)
 
     def alone(points: Array) -> Array:
-        outcome = evaluate(stage, columns(box, points), {name: measure}, cut_off=cut_off)
+        outcome = evaluate(stage, columns(points), {name: measure}, cut_off=cut_off)
         return sign * (outcome.low if sign < 0.0 else outcome.high)[name][:, None]
 
     return on_ridge if _on_ridge(measure, sign) else alone

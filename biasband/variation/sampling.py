@@ -6,6 +6,7 @@ that hold it everywhere. The result is the same bytes for any chunk size.
 
 from __future__ import annotations
 
+import functools
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from functools import cached_property
@@ -147,6 +148,7 @@ def yield_bound(held: int, boards: int, *, boards_per_batch: int = 1, confidence
     return float(betaincinv(held / boards_per_batch, failed + 1.0, 1.0 - confidence))
 
 
+@functools.cache
 def allowed_failures(
     boards: int, required: float, *, boards_per_batch: int = 1, confidence: float = 0.95
 ) -> int:
