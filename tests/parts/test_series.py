@@ -16,7 +16,7 @@ from hypothesis import strategies as st
 
 from biasband.errors import UsageError
 from biasband.files.series_files import load_all, load_series
-from biasband.parts.series import Series, nearest, neighbours, worst_error
+from biasband.parts.series import Series, nearest, nearest_among, neighbours, worst_error
 
 ALL_SERIES = st.sampled_from(list(load_all().values()))
 # Resistances as they are written, six figures, in decades wider than any part's.
@@ -158,3 +158,65 @@ def test_neighbours_ascend_around_the_chosen_value(series: Series, value: Decima
     assert list(around) == sorted(set(around))
     assert around[steps] == nearest(series, float(value)).chosen
     assert all(nearest(series, each).error == 0.0 for each in around)
+
+
+# --- among values that end ---------------------------------------------------------------------------
+
+LISTED = [1e3, 2.2e3, 4.7e3]
+
+
+# By hand: √(1.0 · 2.2) = 1.483, √(2.2 · 4.7) = 3.216.
+@pytest.mark.parametrize(
+    ("value", "below", "above", "chosen"),
+    [
+        (1.48e3, 1e3, 2.2e3, 1e3),
+        (1.49e3, 1e3, 2.2e3, 2.2e3),
+        (3.21e3, 2.2e3, 4.7e3, 2.2e3),
+        (3.3e3, 2.2e3, 4.7e3, 4.7e3),
+        (2.2e3, 2.2e3, 2.2e3, 2.2e3),
+        (1e3, 1e3, 1e3, 1e3),
+        (4.7e3, 4.7e3, 4.7e3, 4.7e3),
+        (1.0, nan, 1e3, 1e3),
+        (999.9, nan, 1e3, 1e3),
+        (4700.1, 4.7e3, nan, 4.7e3),
+        (1e9, 4.7e3, nan, 4.7e3),
+    ],
+)
+def test_nearest_of_a_list_is_by_ratio_and_the_list_ends(
+    value: float, below: float, above: float, chosen: float
+) -> None:
+    snap = nearest_among(LISTED, value, name="stock")
+    assert (snap.series, snap.value, snap.chosen) == ("stock", value, chosen)
+    assert [snap.below, snap.above] == pytest.approx([below, above], rel=0.0, nan_ok=True)
+    assert snap.error == pytest.approx(chosen / value - 1.0, abs=ROUNDING)
+
+
+def test_lower_of_two_equally_near_of_a_list_is_taken() -> None:
+    # 1.2 is the geometric mean of 1.0 and 1.44 exactly, as decimals; as doubles 1.44 is a little less.
+    for border, lower, upper in ((0.012, 0.01, 0.0144), (1.2, 1.0, 1.44), (12e3, 10e3, 14.4e3)):
+        assert nearest_among([lower, upper], border, name="stock").chosen == lower
+        assert nearest_among([lower, upper], border * (1 + 1e-12), name="stock").chosen == upper
+
+
+def test_list_without_values_is_refused() -> None:
+    with pytest.raises(UsageError, match="drawer: there are no values to choose from"):
+        nearest_among([], 1e3, name="drawer")
+
+
+@pytest.mark.parametrize("value", [0.0, -4700.0, inf, nan, 1e300])
+def test_value_that_is_no_part_is_refused_of_a_list_too(value: float) -> None:
+    with pytest.raises(UsageError, match="above 0 and finite"):
+        nearest_among(LISTED, value, name="stock")
+
+
+@given(ALL_SERIES, DECIMAL_VALUES)
+def test_list_of_a_series_snaps_as_the_series_does(series: Series, value: Decimal) -> None:
+    around = neighbours(series, float(value), steps=2)
+    assert nearest_among(around, float(value), name=series.name) == nearest(series, float(value))
+
+
+@given(st.lists(st.floats(1e-3, 1e9), min_size=1, unique=True), st.floats(1e-4, 1e10))
+def test_no_value_of_a_list_is_nearer_than_the_nearest(values: list[float], value: float) -> None:
+    chosen = nearest_among(sorted(values), value, name="stock").chosen
+    assert chosen in values
+    assert abs(log(chosen / value)) <= min(abs(log(each / value)) for each in values) + ROUNDING

@@ -2,11 +2,21 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
+from itertools import permutations
+
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from biasband.parts.stock import Demand, best_item, demand_of, pieces_in_stock, values_in_stock
+from biasband.parts.stock import (
+    Demand,
+    best_item,
+    demand_of,
+    enough_in_stock,
+    pieces_in_stock,
+    values_in_stock,
+)
 from biasband.stage import FileRecord, Resistor, Stock, StockItem
 
 ANYTHING = Demand()
@@ -127,3 +137,67 @@ def test_demanding_more_never_offers_more(listed: list[StockItem], demand: Deman
     loose = Demand(tempco=demand.tempco, power_rating=demand.power_rating)
     tight = Demand(tolerance=tolerance, tempco=demand.tempco, power_rating=demand.power_rating)
     assert set(values_in_stock(stock, tight)) <= set(values_in_stock(stock, loose))
+
+
+def handed_out(stock: Stock, values: Sequence[float], wanted: Sequence[Demand]) -> bool:
+    """Whether single pieces can be handed to all, by trying every way; uncounted items never run out."""
+    pieces = [
+        item
+        for item in stock.items
+        for _ in range(len(wanted) if item.quantity is None else min(item.quantity, len(wanted)))
+    ]
+    return any(
+        all(
+            piece.value == value and demand.met_by(piece)
+            for piece, value, demand in zip(given_out, values, wanted, strict=True)
+        )
+        for given_out in permutations(pieces, len(wanted))
+    )
+
+
+few_figures = st.sampled_from([None, 0.01, 0.05])
+few_items = st.builds(
+    StockItem,
+    value=st.sampled_from([1e3, 2.2e3]),
+    tolerance=few_figures,
+    tempco=few_figures,
+    quantity=st.sampled_from([None, 0, 1, 1, 2]),
+)
+few_demands = st.builds(Demand, tolerance=few_figures, tempco=few_figures)
+
+
+@given(
+    st.lists(few_items, max_size=4),
+    st.lists(st.tuples(st.sampled_from([1e3, 1e3, 2.2e3]), few_demands), max_size=3),
+)
+def test_there_are_enough_where_some_way_to_hand_them_out_serves_all(
+    listed: list[StockItem], wanted: list[tuple[float, Demand]]
+) -> None:
+    stock = stock_of(*listed)
+    values, asked = [value for value, _ in wanted], [demand for _, demand in wanted]
+    assert enough_in_stock(stock, values, asked) == handed_out(stock, values, asked)
+
+
+# One piece at 1 % and one at 5 %, handed out by eye.
+@pytest.mark.parametrize(
+    ("tolerances", "enough"),
+    [
+        ((), True),
+        ((0.01, 0.05), True),
+        ((0.05, 0.05), True),
+        ((0.01, 0.01), False),
+        ((0.05, 0.05, 0.05), False),
+    ],
+)
+def test_loose_part_does_not_take_the_only_tight_one(tolerances: tuple[float, ...], enough: bool) -> None:
+    stock = stock_of(
+        StockItem(value=10e3, tolerance=0.01, quantity=1), StockItem(value=10e3, tolerance=0.05, quantity=1)
+    )
+    asked = [Demand(tolerance=tolerance) for tolerance in tolerances]
+    assert enough_in_stock(stock, [10e3] * len(asked), asked) is enough
+
+
+def test_value_that_is_not_in_stock_is_not_enough() -> None:
+    assert not enough_in_stock(SMALL, [3.3e3], [ANYTHING])
+    assert not enough_in_stock(SMALL, [2.2e3], [ANYTHING])  # none left
+    assert enough_in_stock(SMALL, [1e3, 10e3], [ANYTHING, ANYTHING])
