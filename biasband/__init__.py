@@ -6,6 +6,7 @@ from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
     from biasband.errors import BadlyWritten, BiasbandError, PhysicallyImpossible, UsageError
+    from biasband.signoff.drifting import drift
     from biasband.signoff.intake import read_stage
     from biasband.signoff.study import corners, design, review, snap, spread
     from biasband.stage import Stage
@@ -18,6 +19,7 @@ _ROOMS = {
     "UsageError": "errors",
     "corners": "signoff.study",
     "design": "signoff.study",
+    "drift": "signoff.drifting",
     "read_stage": "signoff.intake",
     "review": "signoff.study",
     "snap": "signoff.study",
@@ -32,6 +34,7 @@ __all__ = [
     "UsageError",
     "corners",
     "design",
+    "drift",
     "read_stage",
     "review",
     "snap",

@@ -8,11 +8,12 @@ needs it, so that `--help` is instant.
 from __future__ import annotations
 
 import functools
+import re
 from collections.abc import Callable, Sequence
-from functools import partial
 from typing import TYPE_CHECKING, Annotated, Any, ParamSpec
 
 import typer
+from typer.core import TyperCommand
 
 from biasband.constants import BOARDS, MOST_BOARDS, VERSION
 from biasband.errors import BiasbandError, UsageError
@@ -20,9 +21,8 @@ from biasband.errors import BiasbandError, UsageError
 if TYPE_CHECKING:
     from biasband.show.summary import Attempt
     from biasband.show.table import Report
-    from biasband.signoff.parts_list import PartLine
+    from biasband.signoff.intake import Additions
     from biasband.stage import Stage
-    from biasband.values.choosing import Design
 
 PASSED, NOT_PASSED, BAD_INPUT, INTERRUPTED = 0, 1, 2, 130
 
@@ -50,7 +50,8 @@ Resistances = Annotated[
     list[str], typer.Argument(metavar="VALUE...", help='Such as 4k7, "130 ohm", 4K7J, 01C or "red red gold".')
 ]
 SeriesName = Annotated[
-    str, typer.Option("--series", help="A preferred series, E3 to E192, or one of --tables.")
+    str | None,
+    typer.Option("--series", help="A preferred series, E3 to E192, or one of --tables; else E24."),
 ]
 PartsFile = Annotated[
     str | None, typer.Option("--parts", metavar="FILE", help="A new CSV file: the parts list to order from.")
@@ -65,7 +66,18 @@ Kept = Annotated[
     list[str] | None,
     typer.Option("--keep", metavar="NAME=VALUE", help="A value for this run, as in RC=3k3 (repeatable)."),
 ]
+Coldest = Annotated[str | None, typer.Option("--from", metavar="T", help='The coldest, as "-40 degC".')]
+Hottest = Annotated[str | None, typer.Option("--to", metavar="T", help='The hottest, as "85 degC".')]
+Points = Annotated[int | None, typer.Option("--points", help="How many temperatures; else 11 or more.")]
 Arguments = ParamSpec("Arguments")
+
+
+class _Command(TyperCommand):
+    """A command to which "-1" is an argument below zero, so that it is told why it will not do."""
+
+    def parse_args(self, ctx: Any, args: list[str]) -> list[str]:
+        ctx.ignore_unknown_options = any(re.match(r"-\.?[0-9]", each) for each in args)
+        return super().parse_args(ctx, args)
 
 
 def command(work: Callable[Arguments, int]) -> Callable[Arguments, int]:
@@ -75,7 +87,7 @@ def command(work: Callable[Arguments, int]) -> Callable[Arguments, int]:
     def guarded(*args: Arguments.args, **kwargs: Arguments.kwargs) -> None:
         raise typer.Exit(_status(lambda: work(*args, **kwargs)))
 
-    app.command()(guarded)
+    app.command(cls=_Command)(guarded)
     return work
 
 
@@ -107,22 +119,26 @@ def review(
     keep: Kept = None,
 ) -> int:
     """Hold stages against what varies: parts, margins, verdict. Of several, one line each."""
+    from biasband.files.new_files import check_new
     from biasband.show import export, report
     from biasband.show.output import watched
+    from biasband.show.summary import attempt
+    from biasband.show.writing import write_parts
 
     paths = _stage_files(stages)
     if parts is not None and len(paths) > 1:
         raise UsageError(f"--parts: the parts list of one stage; read {len(paths)} stages")
-    read = partial(_read, tables=tables, stock=stock, keep=keep)
+    check_new({"--parts": parts})
+    added = _added(tables, stock, keep)
     attempts = [
-        _attempt(path, read, boards=boards, seed=seed, progress=progress)
+        attempt(path, added, boards=boards, seed=seed, progress=progress)
         for path, progress in watched(paths, doing="reviewing")
     ]
-    for attempt in attempts:
-        _complain(attempt.problem)
+    for each in attempts:
+        _complain(each.problem)
     first = attempts[0].review
     if parts is not None and first is not None:
-        _write_parts(parts, first.parts_list)
+        write_parts(parts, first.parts_list, first.design)
     if paths != stages or len(paths) > 1:
         _put(json, lambda: export.summary_json(attempts), lambda: report.summary_report(attempts))
     elif first is not None:
@@ -141,17 +157,20 @@ def design(
     keep: Kept = None,
 ) -> int:
     """Show ideal values with their formulas and the preferred parts; write the stage with them frozen."""
+    from biasband.files.new_files import check_new
     from biasband.show import export, report
     from biasband.show.output import bar
+    from biasband.show.writing import write_frozen, write_parts
     from biasband.signoff import study
     from biasband.signoff.parts_list import parts_list
 
+    check_new({"--write": write, "--parts": parts})
     with bar("choosing values") as progress:
         result = study.design(_read(stage, tables, stock, keep), progress=progress)
     if write is not None:
-        _write_frozen(stage, result, write, tables)
+        write_frozen(stage, result, write, tables)
     if parts is not None:
-        _write_parts(parts, parts_list(result, {}))
+        write_parts(parts, parts_list(result, {}), result)
     _put(json, lambda: export.design_json(result), lambda: report.design_report(result))
     return PASSED
 
@@ -159,22 +178,22 @@ def design(
 @command
 def snap(
     values: Resistances,
-    series: SeriesName = "E24",
+    series: SeriesName = None,
     tables: Tables = None,
     stock: StockList = None,
     pair: Annotated[bool, typer.Option("--pair", help="Pairs in series and parallel, too.")] = False,
     tolerance: Annotated[
-        str | None, typer.Option("--tolerance", help="That of the parts; else the series' usual one.")
+        str | None, typer.Option("--tolerance", help='That of the parts, such as "1 %"; else the usual one.')
     ] = None,
-    mark: Annotated[bool, typer.Option("--mark", help="Read digits alone as a chip's mark.")] = False,
+    mark: Annotated[bool, typer.Option("--mark", help="Read what can be a mark as one: 472 is 4k7.")] = False,
     json: AsJson = False,
 ) -> int:
     """Find the preferred values nearest to resistances; read codes and marks of parts."""
-    from biasband.quantity import Kind, parse
     from biasband.show import export, report
+    from biasband.signoff.options import tolerance_option
     from biasband.signoff.snapping import snap_texts
 
-    share = None if tolerance is None else parse(tolerance, Kind.RATIO)
+    share = tolerance_option(tolerance)
     found = snap_texts(
         values, series=series, tables=tables, stock=stock, tolerance=share, as_marks=mark, pair=pair
     )
@@ -191,14 +210,14 @@ def corners(
     keep: Kept = None,
 ) -> int:
     """Evaluate every corner: the extremes of each quantity, and where they are."""
-    from biasband.margins.holding import words
+    from biasband.margins.holding import looked_into
     from biasband.show import export, report
     from biasband.show.output import bar
     from biasband.signoff import study
 
     with bar("looking into every corner") as progress:
         found = study.corners(_read(stage, tables, stock, keep), progress=progress)
-    vocabulary = words(found.design.stage)
+    vocabulary = looked_into(found.design.stage)
     _put(
         json,
         lambda: export.corners_json(found.design, found.corners, vocabulary),
@@ -218,7 +237,7 @@ def spread(
     keep: Kept = None,
 ) -> int:
     """Sample boards, each at every point of use: mean, deviation and quantiles of each quantity."""
-    from biasband.margins.holding import words
+    from biasband.margins.holding import looked_into
     from biasband.show import export, report
     from biasband.show.output import bar
     from biasband.signoff import study
@@ -229,8 +248,31 @@ def spread(
     _put(
         json,
         lambda: export.spread_json(drawn.design, drawn.boards),
-        lambda: report.spread_report(drawn.design, drawn.boards, words(drawn.design.stage)),
+        lambda: report.spread_report(drawn.design, drawn.boards, looked_into(drawn.design.stage)),
     )
+    return PASSED
+
+
+@command
+def drift(
+    stage: StageFile,
+    json: AsJson = False,
+    coldest: Coldest = None,
+    hottest: Hottest = None,
+    points: Points = None,
+    tables: Tables = None,
+    stock: StockList = None,
+    keep: Kept = None,
+) -> int:
+    """Sweep the ambient temperature: nominal and worst case, slopes, where limits first fail."""
+    from biasband.show import export, report
+    from biasband.show.output import bar
+    from biasband.signoff import drifting
+
+    with bar("sweeping the ambient temperature") as progress:
+        read = _read(stage, tables, stock, keep)
+        found = drifting.drift(read, coldest=coldest, hottest=hottest, points=points, progress=progress)
+    _put(json, lambda: export.drift_json(found), lambda: report.drift_report(found))
     return PASSED
 
 
@@ -248,24 +290,17 @@ def _put(json: bool, as_data: Callable[[], Any], as_report: Callable[[], Report]
 
 def _read(path: str, tables: str | None, stock: str | None, keep: Sequence[str] | None) -> Stage:
     """Read a stage file and what the command line adds to it."""
-    from biasband.signoff.intake import read_stage
+    from biasband.signoff.intake import take_in
 
-    pairs = [text.partition("=") for text in keep or ()]
-    wrong = ["".join(pair) for pair in pairs if not (pair[0] and pair[2])]
-    if wrong:
-        raise UsageError(f"--keep: not NAME=VALUE, as in RC=3k3; read {', '.join(map(repr, wrong))}")
-    values = {name.strip(): value.strip() for name, _, value in pairs}
-    return read_stage(path, tables=tables, stock=stock, keep=values)
+    return take_in(path, _added(tables, stock, keep))
 
 
-def _attempt(path: str, read: Callable[[str], Stage], **how: Any) -> Attempt:
-    from biasband.show.summary import Attempt
-    from biasband.signoff import study
+def _added(tables: str | None, stock: str | None, keep: Sequence[str] | None) -> Additions:
+    """Read what the command line adds to stage files."""
+    from biasband.signoff.intake import additions
+    from biasband.signoff.options import keep_option
 
-    try:
-        return Attempt(path, study.review(read(path), **how))
-    except BiasbandError as error:
-        return Attempt(path, None, str(error))
+    return additions(tables=tables, stock=stock, keep=keep_option(keep))
 
 
 def _status_of(attempt: Attempt) -> int:
@@ -282,24 +317,6 @@ def _stage_files(names: Sequence[str]) -> list[str]:
     for path in (path for files in found for path in files.left_out):
         _complain(f"{path}: left out, it has no [stage] section")
     return [path for files in found for path in files.stages]
-
-
-def _write_frozen(path: str, result: Design, new_path: str, tables: str | None) -> None:
-    from biasband.files.series_folder import load_tables
-    from biasband.files.stage_writer import frozen_text, write_new
-    from biasband.quantity import Kind, format_exact
-
-    values = {part.name: format_exact(part.value, Kind.RESISTANCE) for part in result.parts}
-    write_new(new_path, frozen_text(path, values, new_path=new_path, tables=load_tables(tables)))
-    _complain(f"{new_path}: written, {len(values)} values frozen")
-
-
-def _write_parts(path: str, lines: Sequence[PartLine]) -> None:
-    from biasband.files.stage_writer import write_new
-    from biasband.show.parts_csv import parts_csv
-
-    write_new(path, parts_csv(lines))
-    _complain(f"{path}: written, {len(lines)} kinds of part")
 
 
 def _show_version(asked: bool) -> None:

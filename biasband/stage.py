@@ -13,7 +13,10 @@ from decimal import Decimal
 from typing import Literal
 
 from biasband.constants import ASSUMED_SATURATION_VOLTAGE, KELVIN_OFFSET, REFERENCE_TEMPERATURE
+from biasband.coupling import Capacitor as Capacitor
+from biasband.coupling import Signal as Signal
 from biasband.errors import UsageError
+from biasband.gain_curve import GainCurve
 
 Polarity = Literal["npn", "pnp"]
 Varies = Literal["in use", "by board"]
@@ -104,8 +107,8 @@ class Ratings:
 class Transistor(Ratings):
     """A data sheet at 25 °C: test point [A], [V]; drifts [V/K], [1/K]; leakage doubles every [K].
 
-    `base_emitter_drift` None means the band-gap law. Raises UsageError for an early_voltage without a
-    test_voltage.
+    `base_emitter_drift` None means the band-gap law; `gain_curve` None, that h_FE is the same at any
+    current. Raises UsageError for an early_voltage without a test_voltage.
     """
 
     test_current: float
@@ -113,6 +116,7 @@ class Transistor(Ratings):
     test_voltage: float | None = None
     base_emitter_drift: float | None = -2e-3
     gain_drift: float = 5e-3
+    gain_curve: GainCurve | None = None
     leakage_doubling: float = 10.0
     early_voltage: float | None = None
     reverse_gain: float = 4.0
@@ -186,15 +190,6 @@ class Target:
 
 
 @dataclass(frozen=True, kw_only=True)
-class Signal:
-    """What the capacitors couple: a load [Ω] (None: no load) and a source resistance [Ω]."""
-
-    load: float | None = None
-    source_resistance: float = 0.0
-    bypassed: bool = False
-
-
-@dataclass(frozen=True, kw_only=True)
 class Requirement:
     """A limit on a quantity, in the quantity's SI unit, and how it is to be judged."""
 
@@ -262,13 +257,45 @@ class Stock:
 
 
 @dataclass(frozen=True, kw_only=True)
+class Derating:
+    """The share of each rating that a design may use, as factors of 1: a derating profile.
+
+    `supply_voltage` is the share of V_CEO that the highest supply may reach, `transistor_power` of
+    the power that P_tot and T_j max leave, `current` of I_C max, `emitter_base_voltage` of V_EBO,
+    `resistor_power` of a resistor's rating at its ambient. The junction stays `junction_margin` [K]
+    below T_j max and at or below `junction_ceiling` [K] (None: no ceiling). `origins` says, by field,
+    where a figure comes from; `file` is that of a profile of the user's own.
+    """
+
+    name: str = "full"
+    resistor_power: float = 1.0
+    supply_voltage: float = 1.0
+    transistor_power: float = 1.0
+    current: float = 1.0
+    emitter_base_voltage: float = 1.0
+    junction_margin: float = 0.0
+    junction_ceiling: float | None = None
+    origins: Mapping[str, str] = field(default_factory=dict, hash=False)
+    file: FileRecord | None = None
+
+    def junction_limit(self, max_junction: float) -> float:
+        """The highest junction temperature [K] allowed for a T_j max [K].
+
+        Worked case, stringent: T_j max 150 °C allows 110 °C, 125 °C allows 85 °C.
+        """
+        below = max_junction - self.junction_margin
+        return below if self.junction_ceiling is None else min(self.junction_ceiling, below)
+
+
+@dataclass(frozen=True, kw_only=True)
 class Stage:
     """A one-transistor stage, its surroundings and what is asked of it.
 
     `resistors` holds exactly those that the topology needs, in the topology's order. `ambient` is
     in [K]. `stock` None means that any value of a resistor's series can be had. `snapping` says how
     values are chosen: for the best margin, or nearest to the ideal ones. `own_series` are the user's own,
-    beside biasband's.
+    beside biasband's. `capacitors` are all that the signal section couples, or none: then they are shorts.
+    Raises UsageError where they are some of them.
     """
 
     title: str
@@ -281,8 +308,9 @@ class Stage:
     ambient: Limits = field(default_factory=lambda: Limits.exactly(REFERENCE_TEMPERATURE, stated=False))
     target: Target | None = None
     signal: Signal | None = None
+    capacitors: tuple[Capacitor, ...] = ()
     requirements: tuple[Requirement, ...] = ()
-    derating: str = "full"
+    derating: Derating = Derating()
     document: str = ""
     revision: str = ""
     designed_by: str = ""
@@ -291,6 +319,12 @@ class Stage:
     snapping: Snapping = "margin"
     own_series: tuple[Series, ...] = ()
     files: tuple[FileRecord, ...] = ()
+
+    def __post_init__(self) -> None:
+        given = tuple(capacitor.name for capacitor in self.capacitors)
+        wanted = () if self.signal is None else self.signal.capacitors
+        if given not in ((), wanted):
+            raise UsageError(f"capacitors: {', '.join(wanted) or 'none'}, or none; read {', '.join(given)}")
 
     @property
     def drawn_by_batch(self) -> bool:

@@ -146,17 +146,21 @@ def test_snap_warns_outside_the_practical_range():
         (("10R", "--mark"), "more than one reading"),
         (("5k", "--series", "E7"), "allowed: E3, E6, E12, E24, E48, E96, E192"),
         (("5k", "--series", "e24"), "no series 'e24'"),
-        (("5k", "--tolerance", "nonsense"), "read 'nonsense'"),
-        (("5k", "--tolerance", "nan"), "read 'nan'"),
+        (("5k", "--tolerance", "nonsense"), "--tolerance: not a figure; read 'nonsense'"),
+        (("5k", "--tolerance", "nan"), "--tolerance: not a figure; read 'nan'"),
         (("5k", "--tolerance", "5 V"), "no unit of a ratio"),
-        (("5k", "--tolerance", "150 %", "--pair"), "from 0 to below 1"),
-        (("0.01", "--pair"), "from 500 mΩ to 20 MΩ"),
-        (("1e9", "--pair"), "from 500 mΩ to 20 MΩ"),
+        (("5k", "--tolerance", "150 %"), "--tolerance: not from 0 to below 100 %; read '150 %'"),
+        (("5k", "--tolerance", "100 %"), "--tolerance: not from 0 to below 100 %"),
+        (("5k", "--tolerance", "-5 %"), "--tolerance: not from 0 to below 100 %; read '-5 %'"),
+        (("5k", "--tolerance", "5"), 'read \'5\' (did you mean "5 %"?)'),
+        (("5k", "--stock", "any.csv", "--series", "E12"), "--series: with --stock"),
         (("5k", "--pair", "--series", "E3"), "--tolerance"),
         (("5k", "--stock", "nowhere.csv"), "nowhere.csv: no such file"),
         (("5k", "--stock", "."), "a directory, not a file"),
         (("5k", "--tables", "nowhere"), "nowhere: no such folder"),
-        (("-1",), "-1"),
+        (("-1",), "above 0 and finite"),
+        (("5k", "-4k7"), "above 0 and finite"),
+        (("5k", "--nonsense"), "No such option"),
     ],
 )
 def test_snap_refuses_what_it_cannot_do(arguments, message):
@@ -176,12 +180,13 @@ def test_snap_keeps_to_the_width(width):
 
 def test_snap_writes_to_ascii():
     program = subprocess.run(
-        [sys.executable, "-m", "biasband", "snap", "4k7", "yellow violet red gold", "20M"],
+        [sys.executable, "-m", "biasband", "snap", "4k7", "yellow violet red gold", "20M", "5k", "--pair"],
         cwd=Path(__file__).parents[1], env={"PYTHONIOENCODING": "ascii", "COLUMNS": "80"},
         capture_output=True, check=False,
     )  # fmt: skip
     assert (program.returncode, program.stderr) == (0, b"")
     assert b"4.7 kohm" in program.stdout and b"+/-5 %" in program.stdout and b"?" not in program.stdout
+    assert b" || " in program.stdout
 
 
 # Stock lists.
@@ -274,7 +279,8 @@ def test_too_few_pieces_of_the_nearest_values_are_told(write, nearest_stage):
 def test_parts_that_none_in_stock_can_be_are_all_told(write, nearest_stage):
     stock = write("house.csv", "value,tolerance\n4k7,5 %\n")
     message = refused("design", nearest_stage, "--stock", stock)  # the stage asks for 1 %
-    assert all(f"resistors.{name}: none of the 1 parts" in message for name in ("R1", "R2", "RE"))
+    said = "the one part in stock will not do"
+    assert all(f"resistors.{name}: {said}" in message for name in ("R1", "R2", "RE"))
     assert "resistors.RC" not in message  # its value is given
 
 
@@ -317,7 +323,8 @@ def tables(write, tmp_path):
 def test_series_of_ones_own_serves_every_command(tables, write):
     assert data("snap", "3k", "--tables", tables, "--series", "house")[0]["chosen"] == 2000.0
     stage = write("stage.toml", NEAREST.replace('"E24"', '"house"'))
-    assert "resistors.series: unknown" in refused("design", stage)
+    message = refused("design", stage)
+    assert "resistors.series: unknown" in message and "--tables DIR" in message
     parts = data("design", stage, "--tables", tables)["parts"]
     assert {str(parts[name]["value"])[0] for name in ("R1", "R2", "RE")} <= set("125")
     assert {parts[name]["series"] for name in ("R1", "R2", "RE")} == {"house"}
@@ -391,6 +398,57 @@ def test_pin_that_is_not_in_stock_is_refused(write, nearest_stage):
     assert "RE: 1.8 kΩ is not in stock, the nearest there is 2.7 kΩ" in message
 
 
+def test_value_kept_twice_is_refused(nearest_stage):
+    message = refused("design", nearest_stage, "--keep", "RE=1k6", "--keep", "RE=1k8")
+    assert "--keep: RE is given more than one value: 1k6, 1k8" in message
+
+
+def test_piece_of_a_kept_value_is_not_taken_again(write, nearest_stage):
+    stage = write("stage.toml", TEXT)
+    stock = write("house.csv", "value,quantity\n150k,1\n2k,1\n100k,1\n")
+    found = data("design", stage, "--stock", stock, "--keep", "RE=2k", "--keep", "R1=150k")
+    assert found["parts"]["R2"]["value"] == 100e3  # the only piece that is left
+    message = refused("design", stage, "--stock", stock, *(f"--keep={name}=2k" for name in ("R1", "R2")))
+    assert "R2: too few pieces of 2 kΩ in stock for R1, R2" in message
+
+
+def test_faults_of_options_are_told_once_and_those_of_a_stage_with_its_file(write):
+    one, two = write("one.toml", NEAREST), write("two.toml", NEAREST)
+    for options, said in (
+        (("--keep", "RE=abc"), "RE: not a figure"),
+        (("--keep", "RE"), "--keep: not NAME=VALUE"),
+        (("--tables", "nowhere"), "nowhere: no such folder"),
+        (("--stock", "nowhere.csv"), "nowhere.csv: no such file"),
+    ):
+        result = run("review", one, two, *options)
+        assert (result.exit_code, result.stderr.count(said)) == (2, 1)
+    result = run("review", one, two, "--keep", "RX=1k", "--keep", "RY=1k")
+    lines = result.stderr.splitlines()
+    assert [line.split(": ")[:2] for line in lines] == [
+        [str(path), name] for path in (one, two) for name in ("RX", "RY")
+    ]
+
+
+def test_design_says_where_each_value_is_from(write, nearest_stage):
+    stock = write("house.csv", "value\n180k\n68k\n2k\n")
+    kept = run("design", nearest_stage, "--keep", "RE=1k8").stdout
+    (row,) = [line for line in kept.splitlines() if line.split()[:1] == ["RE"] and "1K8" in line][:1]
+    assert "kept" in row and "E24" in row and "given" not in row
+    assert data("design", nearest_stage, "--keep", "RE=1k8")["parts"]["RE"]["series"] == "E24"
+    from_stock = data("design", nearest_stage, "--stock", stock, "--keep", "RE=2k")["parts"]
+    assert {name: part["series"] for name, part in from_stock.items()} == dict.fromkeys(from_stock)
+    shown = run("design", nearest_stage, "--stock", stock, "--keep", "RE=2k").stdout
+    rows = {line.split()[0]: line for line in shown.splitlines() if line.startswith("R")}
+    assert all("stock" in rows[name] and "E24" not in rows[name] for name in ("R1", "R2", "RE"))
+    assert "stock" not in rows["RC"]
+
+
+def test_miss_of_a_kept_value_is_not_called_given(write):
+    stage = write("stage.toml", re.sub(r'(?m)^value = "3k3".*$', "", NEAREST))
+    warnings = data("design", stage, "--keep", "RC=3k3", "--keep", "RE=1k")["warnings"]
+    assert any("with RC, RE kept there is no freedom for" in warning for warning in warnings)
+
+
 # The choice.
 
 
@@ -434,6 +492,18 @@ def test_pairs_are_offered_for_a_resistor_that_asks(write):
     shown = run("design", stage).stdout
     assert shown.count("Pairs for") == 1 and "Pairs for RE, wanted" in shown
     assert "Two parts and four solder joints" in shown
+    parts = data("design", stage)["parts"]
+    assert [len(parts[name]["pairs"]) for name in ("R1", "RE")] == [0, 3]
+    assert parts["RE"]["pairs"][0]["value"] == parts["RE"]["ideal"]
+
+
+def test_markings_carry_tolerance_in_figures_and_why_there_are_no_bands():
+    (found,) = data("snap", "4k7", "--tolerance", "1 %")
+    assert (found["markings"]["bands_figures"], found["markings"]["bands_reason"]) == ("±1 %", None)
+    (found,) = data("snap", "4k7", "--tolerance", "3 %")
+    assert found["markings"]["bands"] is None
+    assert found["markings"]["bands_figures"] == "±3 %"
+    assert "no colour stands for" in found["markings"]["bands_reason"]
 
 
 @pytest.mark.parametrize(
@@ -495,9 +565,42 @@ def test_design_writes_a_parts_list_with_prices(write, nearest_stage, tmp_path):
     result = run("design", nearest_stage, "--stock", stock, "--parts", path)
     assert result.exit_code == 0
     rows = {row["references"]: row for row in read_csv(path)}
-    assert (rows["R1"]["price"], rows["R1"]["location"]) == ("0.03", "A1")
-    assert (rows["RC"]["price"], rows["RC"]["location"]) == ("", "")  # given, and not in stock
+    assert (rows["R1"]["price_total"], rows["R1"]["location"]) == ("0.03", "A1")
+    assert (rows["RC"]["price_total"], rows["RC"]["location"]) == ("", "")  # given, and not in stock
+    assert [rows[name]["stock"] for name in ("R1", "RC")] == ["", "not in stock"]
+    shown = run("design", nearest_stage, "--stock", stock).stdout
+    assert "Parts to buy" in shown and "not in stock" in shown
+    assert "in stock: 0.03 each, A1" in shown
+    # 0.03 + 0.02 + 0.05; RC has no price.
+    assert "Price of 3 of 4 resistors, the others' is not known: 0.1." in " ".join(shown.split())
     assert all(row["power_worst_watt"] == "" for row in rows.values())  # no corners were looked into
+
+
+@pytest.mark.parametrize(
+    ("paths", "said"),
+    [
+        ({"--parts": ""}, ["--parts: the name of a new file is missing"]),
+        ({"--parts": "no/parts.csv"}, ["--parts: ", "there is no such folder"]),
+        ({"--parts": "there.csv"}, ["--parts: ", "exists already"]),
+        ({"--parts": "new", "--write": "new"}, ["--write and --parts name the same file"]),
+        ({"--parts": "there.csv", "--write": "no/new.toml"}, ["exists already", "there is no such folder"]),
+        ({"--write": "new/"}, ["--write: "]),
+        ({"--parts": "there.csv/parts.csv"}, ["--parts: "]),
+        ({"--parts": "a\0b"}, ["--parts: "]),
+    ],
+)
+def test_new_files_are_checked_before_anything_is_computed(paths, said, write, nearest_stage, monkeypatch):
+    write("there.csv", "mine")
+    monkeypatch.chdir(nearest_stage.parent)
+    monkeypatch.setattr("biasband.signoff.study.design", lambda *_, **__: pytest.fail("computed first"))
+    message = refused("design", nearest_stage, *(text for pair in paths.items() for text in pair))
+    assert all(each in message for each in said)
+
+
+def test_new_file_of_a_review_is_checked_before_anything_is_computed(write, nearest_stage, monkeypatch):
+    monkeypatch.setattr("biasband.signoff.study.review", lambda *_, **__: pytest.fail("computed first"))
+    path = write("parts.csv", "mine")
+    assert "--parts: " in refused("review", nearest_stage, "--parts", path)
 
 
 @pytest.mark.parametrize("command", ["review", "design"])

@@ -10,16 +10,20 @@ import pytest
 
 from biasband.margins.checks import NotMade, Standing
 from biasband.margins.holding import Holding, Nominal
+from biasband.margins.over_temperature import Failure, HeldLimit
 from biasband.margins.records import Evidence, Margin
 from biasband.margins.verdict import Verdict
-from biasband.signoff.parts_list import PartLine
+from biasband.signoff.drifting import Drift, DriftStudy, LimitDrift
+from biasband.signoff.parts_list import CapacitorLine, PartLine
 from biasband.signoff.snapping import Snapped, SnapStudy
 from biasband.signoff.study import CornerStudy, Review, SpreadStudy
+from biasband.values.capacitors import CapacitorChoice, CapacitorStep
 from biasband.values.choosing import Design, PartChoice
 from biasband.values.joint import Contender, Contest
 from biasband.values.pairing import Offer
 from biasband.variation.causes import Causes
 from biasband.variation.corners import Corners, Extreme, Range
+from biasband.variation.finite_change import FiniteChange, Stability
 from biasband.variation.rss import Interval
 from biasband.variation.sampling import Boards, Spread
 
@@ -28,9 +32,11 @@ GLOSSARY = TEXT.split("## Glossary")[1].split("\n## ")[0]
 WORDS = set(re.findall(r"[A-Za-z_]+", GLOSSARY))
 
 RECORDS = (
+    CapacitorChoice, CapacitorLine, CapacitorStep,
     Boards, Causes, Contender, Contest, Corners, CornerStudy, Design, Evidence, Extreme, Holding, Interval,
     Margin, Nominal, NotMade, Offer, PartChoice, PartLine, Range, Review, Snapped, SnapStudy, Spread,
-    SpreadStudy, Standing, Verdict,
+    SpreadStudy, Standing, Verdict, Drift, DriftStudy, Failure, FiniteChange, HeldLimit, LimitDrift,
+    Stability,
 )  # fmt: skip
 
 

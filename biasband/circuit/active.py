@@ -8,11 +8,12 @@ equations.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
 
+from biasband.circuit.gain_curve import GainScaling
 from biasband.circuit.junction import Laws
 from biasband.circuit.network import Ports
 from biasband.circuit.scenarios import Array, Values
@@ -28,6 +29,9 @@ _LEAST_CHANGE = 0.1
 
 FIRST_STEPS = 2
 """Newton steps that a start from nothing needs."""
+
+_BENT_STEPS = 2
+"""Newton steps that a gain curve takes in addition: the equation is no longer nearly linear."""
 
 
 @dataclass(frozen=True)
@@ -148,16 +152,83 @@ def active_region(
     `solved` is False where the equation does not hold to 1e-9 V or the reverse junction matters.
     """
     line = _fold(ports, law)
+    if law.curve is not None:
+        return _bent_region(ports, law, law.curve, line, forward, steps=steps + _BENT_STEPS)
     F = _first_forward(ports, law, line) if forward is None else forward
     guess = _guess(ports, law, line, F)
     for _ in range(steps):
         F = _advanced(ports, law, guess, F)
         guess = _guess(ports, law, line, F)
-    I_B, I_C = F * line.base_share, guess.G
+    return _bias(ports, law, line, guess, F * line.base_share), F
+
+
+def _bias(ports: Ports, law: Laws, line: _Line, guess: _Guess | _BentGuess, I_B: Array) -> Bias:
+    """The bias that a guess amounts to, from the base current [A] without its constant; uses up both."""
+    I_C = guess.G
     I_B -= line.base_constant
     I_C += line.collector_constant
     V_BC = ports.open_bc - ports.z21 * I_B
     V_BC -= ports.z22 * I_C
     solved = np.abs(guess.residual) < RESIDUAL
     solved &= V_BC < _REVERSE_OFF * law.thermal_voltage
-    return Bias(guess.V_BE, V_BC, I_B, I_C, solved), F
+    return Bias(guess.V_BE, V_BC, I_B, I_C, solved)
+
+
+@dataclass(frozen=True)
+class _BentGuess:
+    """The equation at a collector's share G [A] of the forward current, with a gain curve.
+
+    V_BE [V], the residual [V] and its slope against ln G [V], and the base's share [A] before the
+    constant is taken off.
+    """
+
+    V_BE: Array
+    G: Array
+    residual: Array
+    slope: Array
+    base: Array
+
+
+def _bent_region(
+    ports: Ports, law: Laws, curve: GainScaling, line: _Line, start: Array | None, *, steps: int
+) -> tuple[Bias, Array]:
+    """The active region with a gain curve: the same equation, but in G, the current that the curve knows.
+
+    From a current [A] if given; returns the G found.
+    """
+    G = _bent_start(ports, law, curve, line) if start is None else start
+    guess = _bent_guess(ports, law, curve, line, G)
+    for _ in range(steps):
+        G = G * np.maximum(1.0 - guess.residual / guess.slope, _LEAST_CHANGE)
+        guess = _bent_guess(ports, law, curve, line, G)
+    found = G.copy()
+    return _bias(ports, law, line, guess, guess.base), found
+
+
+def _bent_start(ports: Ports, law: Laws, curve: GainScaling, line: _Line) -> Array:
+    """A current [A] to start from: as without a curve, then with the gain that the curve has there."""
+    factor = curve.at(_first_forward(ports, law, line)).factor
+    return _first_forward(ports, law, replace(line, z_base=line.z_base / factor))
+
+
+def _bent_guess(ports: Ports, law: Laws, curve: GainScaling, line: _Line, G: Array) -> _BentGuess:
+    """Evaluate `V_BE(F) + z11·B + z12·G − drive`, B = (F − I_S)/(β·c) + I_S/β.
+
+    G = F·(early + creep·β·B + lean·G) is a quadratic equation in F. From it follows d ln F/d ln G.
+    """
+    scaled, I_S = curve.at(G), law.saturation_current
+    share = 1.0 / scaled.factor
+    creep = line.creep * share
+    early = line.early + (line.creep - creep) * I_S + line.lean * G
+    F = 2.0 * G / (early + np.sqrt(early * early + 4.0 * creep * G))
+    B = (F - I_S) * line.base_share * share + I_S * line.base_share
+    V_BE = law.reference_voltage + law.thermal_voltage * np.log(F / law.reference_current)
+    bend = scaled.slope * creep * F * F
+    F_slope = (G * (1.0 - line.lean * F) + bend) / (G + creep * F * F)
+    return _BentGuess(
+        V_BE=V_BE,
+        G=G,
+        residual=V_BE + ports.z11 * B + ports.z12 * G - line.drive,
+        slope=law.thermal_voltage * F_slope + ports.z12 * G + ports.z11 * B * (F_slope - scaled.slope),
+        base=B,
+    )

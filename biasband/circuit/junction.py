@@ -7,10 +7,11 @@ transport form and the Early factor; the temperature laws as the project's physi
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 
+from biasband.circuit.gain_curve import GainScaling, Scaled
 from biasband.circuit.scenarios import Rows, Values, rows_of
 from biasband.constants import (
     BAND_GAP,
@@ -31,7 +32,8 @@ class Sheet:
 
     `base_emitter_voltage` vbe_25 [V] and `leakage` I_CBO25 [A] are the scenario's own. The forward
     current is `reference_current` [A] at the test point, and `forward_gain` β_F25 the gain there,
-    both without the Early factor, so that the test point is met with it.
+    both without the Early factor, so that the test point is met with it. `curve` scales the gain with
+    the current.
     """
 
     transistor: Transistor
@@ -39,11 +41,12 @@ class Sheet:
     leakage: Values
     reference_current: Values
     forward_gain: Values
+    curve: GainScaling | None = field(default=None, kw_only=True)
 
     def part(self, rows: Rows) -> Sheet:
         """The figures of the scenarios at `rows`."""
         columns = (self.base_emitter_voltage, self.leakage, self.reference_current, self.forward_gain)
-        return Sheet(self.transistor, *(rows_of(values, rows) for values in columns))
+        return Sheet(self.transistor, *(rows_of(values, rows) for values in columns), curve=self.curve)
 
 
 @dataclass(frozen=True)
@@ -52,8 +55,8 @@ class Laws:
 
     `reference_voltage` is V_BE [V] at `reference_current` [A], where the forward current
     I_S·e^{VBE/VT} is that current. `thermal_voltage` V_T [V], `saturation_current` I_S [A],
-    `forward_gain` β_F, `leakage` I_CBO [A]; `inverse_early` 1/V_A [1/V] (0: no Early effect),
-    `inverse_reverse_gain` 1/β_R.
+    `forward_gain` β_F (times what `curve` says of the current), `leakage` I_CBO [A]; `inverse_early`
+    1/V_A [1/V] (0: no Early effect), `inverse_reverse_gain` 1/β_R.
     """
 
     temperature: Values
@@ -65,6 +68,17 @@ class Laws:
     leakage: Values
     inverse_early: float
     inverse_reverse_gain: float
+    curve: GainScaling | None = field(default=None, kw_only=True)
+
+    def scaled(self, forward: Values, V_BC: Values) -> Scaled:
+        """What the gain curve says, from I_S·e^{VBE/VT} [A] and V_BC [V]: at their current to the collector.
+
+        The reverse current is not taken off: deep in saturation the base current would then fall where
+        V_BE rises, and nothing would promise a single operating point.
+        """
+        if self.curve is None:
+            return Scaled(1.0, 0.0, forward)
+        return self.curve.at(forward * (1.0 - V_BC * self.inverse_early))
 
 
 @dataclass(frozen=True)
@@ -117,17 +131,19 @@ def sheet(
     early: Values = 1.0
     if transistor.early_voltage is not None:
         early = 1.0 + ((transistor.test_voltage or 0.0) - base_emitter_voltage) / transistor.early_voltage
+    curve = transistor.gain_curve
     return Sheet(
-        transistor, base_emitter_voltage, leakage, transistor.test_current / early, gain / early
-    )
+        transistor, base_emitter_voltage, leakage, transistor.test_current / early, gain / early,
+        curve=None if curve is None else GainScaling.of(curve, test_current=transistor.test_current),
+    )  # fmt: skip
 
 
 def laws(sheet: Sheet, temperature: Values) -> Laws:
     """The junction parameters at a junction temperature [K].
 
     `I_S = I_test / early · exp(−vbe/V_T)`, `β_F = β_F25 · (T/T0)^(g·T0)`,
-    `I_CBO = I_CBO25 · 2^((T − T0)/D)`. Valid near the test current: the gain does not fall at low
-    or high current.
+    `I_CBO = I_CBO25 · 2^((T − T0)/D)`. Without a gain curve valid near the test current: the gain does
+    not fall at low or high current.
     """
     transistor = sheet.transistor
     V_T = _VOLT_PER_KELVIN * temperature
@@ -144,6 +160,7 @@ def laws(sheet: Sheet, temperature: Values) -> Laws:
         leakage=sheet.leakage * np.exp(folds),
         inverse_early=0.0 if transistor.early_voltage is None else 1.0 / transistor.early_voltage,
         inverse_reverse_gain=1.0 / transistor.reverse_gain,
+        curve=sheet.curve,
     )
 
 
@@ -153,6 +170,7 @@ def flow(law: Laws, V_BE: Values, V_BC: Values) -> Flow:
         I_C = I_S·(e^{VBE/VT} − e^{VBC/VT})·(1 − VBC/V_A) − (I_S/β_R)·(e^{VBC/VT} − 1) + I_CBO
         I_B = (I_S/β_F)·(e^{VBE/VT} − 1) + (I_S/β_R)·(e^{VBC/VT} − 1) − I_CBO
 
+    With a gain curve, β_F·c(I) takes the place of β_F, I = I_S·e^{VBE/VT}·(1 − VBC/V_A).
     Source: Ebers & Moll 1954; Gummel & Poon 1970 (see the module).
     """
     per_volt = 1.0 / law.thermal_voltage
@@ -164,7 +182,7 @@ def flow(law: Laws, V_BE: Values, V_BC: Values) -> Flow:
     reverse_base = (reverse - I_S) * law.inverse_reverse_gain
     g_reverse = reverse * per_volt
     g_base = g_reverse * law.inverse_reverse_gain
-    return Flow(
+    at = Flow(
         forward=forward,
         reverse=reverse,
         base=(forward - I_S) / law.forward_gain + reverse_base - law.leakage,
@@ -173,6 +191,23 @@ def flow(law: Laws, V_BE: Values, V_BC: Values) -> Flow:
         base_bc=g_base,
         collector_be=forward * per_volt * early,
         collector_bc=-g_reverse * early - transport * law.inverse_early - g_base,
+    )
+    return at if law.curve is None else _bent(law, at, V_BC)
+
+
+def _bent(law: Laws, at: Flow, V_BC: Values) -> Flow:
+    """The flow with the gain curve in it: only the base current's forward part knows it.
+
+    d ln I is dV_BE/V_T, and −F/V_A·dV_BC/I; d ln c is the curve's slope times that.
+    """
+    scaled, per_volt = law.scaled(at.forward, V_BC), 1.0 / law.thermal_voltage
+    plain = (at.forward - law.saturation_current) / law.forward_gain
+    extra, bend = 1.0 / scaled.factor - 1.0, plain * scaled.slope / scaled.factor
+    return replace(
+        at,
+        base=at.base + plain * extra,
+        base_be=at.base_be * (1.0 + extra) - bend * per_volt,
+        base_bc=at.base_bc + bend * law.inverse_early * at.forward / scaled.current,
     )
 
 
@@ -187,7 +222,8 @@ class FlowDrift:
 def flow_drift(sheet: Sheet, law: Laws, at: Flow, V_BE: Values, V_BC: Values) -> FlowDrift:
     """∂I_B/∂T and ∂I_C/∂T [A/K] at fixed junction voltages, `at` the flow there.
 
-    From d ln I_S/dT = (vbe/T − dvbe/dT)/V_T, d ln β_F/dT = g·T0/T and d ln I_CBO/dT = ln 2/D.
+    From d ln I_S/dT = (vbe/T − dvbe/dT)/V_T, d ln β_F/dT = g·T0/T and d ln I_CBO/dT = ln 2/D. The gain
+    curve's current rises as the forward one does.
     """
     transistor, T = sheet.transistor, law.temperature
     I_S, vbe_slope = law.saturation_current, _base_emitter_slope(transistor, sheet.base_emitter_voltage, T)
@@ -199,6 +235,10 @@ def flow_drift(sheet: Sheet, law: Laws, at: Flow, V_BE: Values, V_BC: Values) ->
     reverse_base_T = (reverse_T - I_S * I_S_slope) * law.inverse_reverse_gain
     leakage_T = law.leakage * (_LN_2 / transistor.leakage_doubling)
     base_T = (forward_T - I_S * I_S_slope - (at.forward - I_S) * gain_slope) / law.forward_gain
+    if law.curve is not None:
+        scaled = law.scaled(at.forward, V_BC)
+        bend = scaled.slope * (at.forward - I_S) * (I_S_slope - V_BE * thermal)
+        base_T = (base_T - bend / law.forward_gain) / scaled.factor
     early = 1.0 - V_BC * law.inverse_early
     return FlowDrift(
         base=base_T + reverse_base_T - leakage_T,

@@ -7,12 +7,16 @@ from dataclasses import dataclass
 import numpy as np
 
 from biasband.circuit.active import RESIDUAL, Bias
+from biasband.circuit.gain_curve import GainScaling
 from biasband.circuit.junction import Flow, Laws, flow
 from biasband.circuit.network import Ports
 from biasband.circuit.scenarios import Array, Values
 
 _KNEE = 4.0
 """A junction conducts from this many V_T below its voltage at the test current."""
+
+_LEAST_EARLY = 1e-3
+"""The Early factor is taken as no less where a step is cut: beyond V_A there is no active region."""
 
 _SATURATED_START = 0.1
 """[V] V_CE at which the currents of a saturated start are taken."""
@@ -76,7 +80,7 @@ def _active_start(ports: Ports, law: Laws) -> tuple[Array, Array]:
     I_B = drive / (ports.z11 + law.forward_gain * ports.z12)
     I_C = law.forward_gain * I_B
     V_BC = ports.open_bc - ports.z21 * I_B - ports.z22 * I_C
-    return _voltage(law, I_C), np.asarray(np.minimum(V_BC, 0.0))
+    return np.asarray(np.minimum(_voltage(law, I_C), ports.open_be)), np.asarray(np.minimum(V_BC, 0.0))
 
 
 def _saturated_flow(ports: Ports, law: Laws) -> tuple[Array, Array]:
@@ -109,11 +113,26 @@ def newton(ports: Ports, law: Laws, V_BE: Array, V_BC: Array, *, steps: int) -> 
         if not moves.any():
             break
         d_be, d_bc = here.solve(here.f1, here.f2)
+        if law.curve is not None:
+            share = _up_to_kink(law, law.curve, V_BE, V_BC, V_BE - d_be, V_BC - d_bc)
+            d_be, d_bc = share * d_be, share * d_bc
         V_BE = np.where(moves, _moved(V_BE, -d_be, law), V_BE)
         V_BC = np.where(moves, _moved(V_BC, -d_bc, law), V_BC)
         here = tangent(ports, law, V_BE, V_BC)
     I_B, I_C = np.asarray(here.flow.base), np.asarray(here.flow.collector)
     return Bias(V_BE, V_BC, I_B, I_C, here.residual < RESIDUAL)
+
+
+def _up_to_kink(
+    law: Laws, curve: GainScaling, V_BE: Array, V_BC: Array, next_be: Array, next_bc: Array
+) -> Array:
+    """The share of a step [V] that crosses one kink of the gain curve, at most."""
+    before, after = (
+        (be - law.reference_voltage) / law.thermal_voltage
+        + np.log(law.reference_current * np.maximum(1.0 - bc * law.inverse_early, _LEAST_EARLY))
+        for be, bc in ((V_BE, V_BC), (next_be, next_bc))
+    )
+    return curve.up_to_kink(before, after)
 
 
 def _moved(voltage: Array, step: Array, law: Laws) -> Array:

@@ -14,12 +14,15 @@ import numpy as np
 
 from biasband.circuit import signal
 from biasband.circuit.junction import Laws
+from biasband.circuit.large_signal import distortion
+from biasband.circuit.low_corner import low_corner_frequency
 from biasband.circuit.network import sign, total
-from biasband.circuit.operating_point import OperatingPoint
+from biasband.circuit.operating_point import OperatingPoint, thermal_loop_gain
 from biasband.circuit.reading import Reading
 from biasband.circuit.scenarios import Array, Values
 from biasband.circuit.topology import Node
 from biasband.quantity import Kind
+from biasband.stage import Stage
 
 
 @dataclass(frozen=True)
@@ -39,7 +42,8 @@ class Quantity:
     """A quantity: how it is read, shape (N,), and by how much coupled ripple moves it.
 
     `ripple` [same unit] widens the output's voltage either way, and takes from a headroom
-    (`ripple_lifts` False). `by_magnitude` says that a requirement is judged by the magnitude.
+    (`ripple_lifts` False). `by_magnitude` says that a requirement is judged by the magnitude, `costly`
+    that a review looks beyond the nominal point only where a requirement is about it.
     """
 
     name: str
@@ -48,6 +52,7 @@ class Quantity:
     ripple: Callable[[Reading], Values] | None = None
     ripple_lifts: bool = True
     by_magnitude: bool = False
+    costly: bool = False
 
 
 def _node_voltage(node: Node) -> Callable[[Reading], Values]:
@@ -81,7 +86,14 @@ def _supply_current(reading: Reading) -> Values:
     return sign(reading.stage.polarity) * current
 
 
-def _output_conductance(reading: Reading) -> Values:
+def _thermal_loop_gain(reading: Reading) -> Values:
+    stage = reading.stage
+    return thermal_loop_gain(
+        reading.wiring, stage.transistor, stage.polarity, reading.scenarios, reading.point
+    )
+
+
+def output_conductance(reading: Reading) -> Values:
     """Everything that loads the output at signal frequency [S]: its wires and the load."""
     ohms, output = reading.scenarios.resistances, reading.wiring.output
     wires = [wire for wire in reading.wiring.wires if output in (wire.node, wire.other)]
@@ -89,20 +101,13 @@ def _output_conductance(reading: Reading) -> Values:
     return sum((1.0 / total(wire, ohms) for wire in wires), start=0.0 if load is None else 1.0 / load)
 
 
-def _unbypassed(reading: Reading) -> Values:
-    """The emitter resistance [Ω] that the signal sees."""
-    coupled = reading.coupled
-    wires = [w for w in coupled.wiring.wires if w.node is Node.EMITTER and w.other is Node.EMITTER_RAIL]
-    return sum((total(wire, coupled.resistances) for wire in wires), start=0.0)
-
-
 def _into_cut_off(reading: Reading) -> Values:
     """Peak [V] the output can move while the transistor turns off, never beyond its rail."""
     point, volts, output = reading.quiet, reading.quiet_volts, reading.wiring.output
     if output is Node.EMITTER:
-        swing = (point.base_current + point.collector_current) / _output_conductance(reading)
+        swing = (point.base_current + point.collector_current) / output_conductance(reading)
         return np.minimum(swing, volts[Node.EMITTER] - volts[Node.EMITTER_RAIL])
-    swing = point.collector_current / _output_conductance(reading)
+    swing = point.collector_current / output_conductance(reading)
     return np.minimum(swing, volts[Node.COLLECTOR_RAIL] - volts[Node.COLLECTOR])
 
 
@@ -111,8 +116,8 @@ def _into_saturation(reading: Reading) -> Values:
     room = reading.quiet.collector_emitter - reading.stage.saturation_voltage
     if reading.wiring.output is Node.EMITTER:
         return room
-    r_ac = 1.0 / _output_conductance(reading)
-    return room * r_ac / (r_ac + _unbypassed(reading))
+    r_ac = 1.0 / output_conductance(reading)
+    return room * r_ac / (r_ac + reading.unbypassed)
 
 
 def _headroom(up: bool) -> Callable[[Reading], Values]:
@@ -124,6 +129,12 @@ def _headroom(up: bool) -> Callable[[Reading], Values]:
         return side(reading)
 
     return read
+
+
+def clips_first(reading: Reading) -> str:
+    """Where the output of the first scenario clips first: "cut-off" or "saturation"."""
+    off, saturated = (float(np.ravel(side(reading))[0]) for side in (_into_cut_off, _into_saturation))
+    return "cut-off" if off < saturated else "saturation"
 
 
 _SYMMETRIC = Pieces(lambda reading: (_into_cut_off(reading), _into_saturation(reading)), least=True)
@@ -147,6 +158,16 @@ def _ripple_pieces(reading: Reading) -> tuple[Values, ...]:
     return tuple(peak * way for way in ways)
 
 
+def judged_swing(stage: Stage) -> float | None:
+    """The peak swing [V] that requirements ask for, at which distortion is read; None: where it clips."""
+    asked = [r.at_least for r in stage.requirements if r.quantity == "symmetric_peak_swing"]
+    return max((swing for swing in asked if swing is not None), default=None)
+
+
+def _distortion(reading: Reading) -> Values:
+    return distortion(reading, judged_swing(reading.stage) or _SYMMETRIC(reading))
+
+
 _PLAIN = (
     Quantity(
         "collector_voltage", Kind.VOLTAGE, _node_voltage(Node.COLLECTOR), _output_ripple_at(Node.COLLECTOR)
@@ -160,6 +181,7 @@ _PLAIN = (
     Quantity("supply_current", Kind.CURRENT, _supply_current),
     Quantity("transistor_power", Kind.POWER, lambda r: r.point.power),
     Quantity("junction_temperature", Kind.TEMPERATURE, lambda r: r.point.junction_temperature),
+    Quantity("thermal_loop_gain", Kind.NUMBER, _thermal_loop_gain),
     Quantity("headroom_up", Kind.VOLTAGE, _headroom(up=True), _coupled_ripple, ripple_lifts=False),
     Quantity("headroom_down", Kind.VOLTAGE, _headroom(up=False), _coupled_ripple, ripple_lifts=False),
     Quantity("symmetric_peak_swing", Kind.VOLTAGE, _SYMMETRIC, _coupled_ripple, ripple_lifts=False),
@@ -168,7 +190,12 @@ _PLAIN = (
     Quantity("output_resistance", Kind.RESISTANCE, _of_signal(signal.output_resistance)),
     Quantity("supply_feedthrough", Kind.NUMBER, _supply_feedthrough),
     Quantity("output_ripple", Kind.VOLTAGE, Pieces(_ripple_pieces, least=False)),
+    Quantity("distortion", Kind.RATIO, _distortion, costly=True),
 )
+
+
+LOW_CORNER = "low_corner_frequency"
+"""The one quantity that needs capacitors with values."""
 
 
 def _resistor_power(name: str) -> Quantity:
@@ -179,16 +206,19 @@ def _resistor_power(name: str) -> Quantity:
     return Quantity(f"resistor_power.{name}", Kind.POWER, read)
 
 
-def _rows(resistor_names: tuple[str, ...]) -> Iterator[Quantity]:
+def _rows(resistor_names: tuple[str, ...], with_capacitors: bool) -> Iterator[Quantity]:
     yield from _PLAIN
+    if with_capacitors:
+        yield Quantity(LOW_CORNER, Kind.FREQUENCY, low_corner_frequency, costly=True)
     yield from map(_resistor_power, resistor_names)
 
 
-def vocabulary(resistor_names: tuple[str, ...]) -> Mapping[str, Quantity]:
+def vocabulary(resistor_names: tuple[str, ...], *, with_capacitors: bool = False) -> Mapping[str, Quantity]:
     """Every quantity of a stage with these resistors, by name, in the order of the tables."""
-    return {quantity.name: quantity for quantity in _rows(resistor_names)}
+    return {quantity.name: quantity for quantity in _rows(resistor_names, with_capacitors)}
 
 
-def quantity_units(resistor_names: tuple[str, ...]) -> Mapping[str, Kind]:
+def quantity_units(resistor_names: tuple[str, ...], *, with_capacitors: bool = False) -> Mapping[str, Kind]:
     """The kind of every quantity of a stage with these resistors."""
-    return {name: quantity.kind for name, quantity in vocabulary(resistor_names).items()}
+    rows = vocabulary(resistor_names, with_capacitors=with_capacitors)
+    return {name: quantity.kind for name, quantity in rows.items()}

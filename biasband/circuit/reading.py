@@ -47,11 +47,18 @@ class Reading:
         return signal.couple(self.wiring, self.stage.signal, self.scenarios.resistances)
 
     @cached_property
+    def unbypassed(self) -> Values:
+        """The emitter resistance [Ω] that the signal sees."""
+        coupled = self.coupled
+        wires = [w for w in coupled.wiring.wires if w.node is Node.EMITTER and w.other is Node.EMITTER_RAIL]
+        return sum((total(wire, coupled.resistances) for wire in wires), start=0.0)
+
+    @cached_property
     def law(self) -> Laws:
         """The junction laws at the quiet point's junction temperature; NaN for an ideal transistor."""
         transistor, scenarios = self.stage.transistor, self.scenarios
         if isinstance(transistor, IdealTransistor):
-            return Laws(*(np.nan for _ in fields(Laws)))
+            return Laws(*(np.nan for each in fields(Laws) if not each.kw_only))
         figures = sheet(
             transistor,
             gain=scenarios.gain,

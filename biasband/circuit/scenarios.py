@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterator, Mapping
-from dataclasses import dataclass, fields, replace
+from dataclasses import dataclass, field, fields, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -22,7 +22,8 @@ class Scenarios:
 
     Resistances [Ω] by name, after tolerance, tempco and drift; `gain` (h_FE at the test point) and
     `base_emitter_voltage` [V] and `leakage` [A], all three at 25 °C; `supply` [V] without ripple,
-    `ripple` [V], `negative_supply` [V]; ambient `temperature` [K].
+    `ripple` [V], `negative_supply` [V]; ambient `temperature` [K]. Capacitances [F] by name, where the
+    stage has capacitors.
     """
 
     resistances: Mapping[str, Values]
@@ -33,19 +34,22 @@ class Scenarios:
     ripple: Values
     negative_supply: Values
     temperature: Values
+    capacitances: Mapping[str, Values] = field(default_factory=dict)
 
     def __len__(self) -> int:
         return int(np.broadcast(*(np.asarray(values) for values in self.named().values())).size)
 
     def named(self) -> dict[str, Values]:
         """Every value under its contributor's name (formats: `low_at`)."""
-        return {**self.resistances, **{name: getattr(self, name) for name in _PLAIN}}
+        return {**self.resistances, **self.capacitances, **{name: getattr(self, name) for name in _PLAIN}}
 
     def part(self, rows: Rows) -> Scenarios:
         """The scenarios at `rows`."""
         plain = {name: rows_of(getattr(self, name), rows) for name in _PLAIN}
         return Scenarios(
-            resistances={name: rows_of(ohms, rows) for name, ohms in self.resistances.items()}, **plain
+            resistances={name: rows_of(ohms, rows) for name, ohms in self.resistances.items()},
+            capacitances={name: rows_of(farads, rows) for name, farads in self.capacitances.items()},
+            **plain,
         )
 
     def without_ripple(self) -> Scenarios:
@@ -53,7 +57,8 @@ class Scenarios:
         return replace(self, ripple=0.0)
 
 
-_PLAIN = tuple(field.name for field in fields(Scenarios) if field.name != "resistances")
+_BY_NAME = ("resistances", "capacitances")
+_PLAIN = tuple(each.name for each in fields(Scenarios) if each.name not in _BY_NAME)
 
 
 def rows_of(values: Values, rows: Rows) -> Values:

@@ -20,7 +20,9 @@ from biasband.circuit.scenarios import Array, Values
 from biasband.circuit.topology import TERMINALS, Node, Wire, Wiring
 from biasband.stage import Polarity, Signal
 
-_LOAD, _SOURCE = "load", "source"
+LOAD, SOURCE = "load", "source"
+"""The names under which load and source resistance stand among the resistances."""
+
 _RAILS = (Node.COLLECTOR_RAIL, Node.EMITTER_RAIL, Node.GROUND, Node.SOURCE)
 _QUIET: Rails = dict.fromkeys(_RAILS, 0.0)
 
@@ -38,6 +40,15 @@ class Coupled:
         wiring = Wiring(wires, {**self.wiring.ties, node: Node.SOURCE}, self.wiring.output)
         return Coupled(wiring, self.resistances)
 
+    def with_quiet_source(self) -> Coupled:
+        """The same with the source's EMF zero."""
+        wires = tuple(
+            Wire(wire.parts, wire.node, Node.GROUND) if wire.other is Node.SOURCE else wire
+            for wire in self.wiring.wires
+        )
+        ties = {n: Node.GROUND if rail is Node.SOURCE else rail for n, rail in self.wiring.ties.items()}
+        return Coupled(Wiring(wires, ties, self.wiring.output), self.resistances)
+
 
 def couple(wiring: Wiring, signal: Signal | None, resistances: Mapping[str, Values]) -> Coupled:
     """Wire the stage for the signal; without a signal section base driven, RE unbypassed, no load."""
@@ -47,11 +58,11 @@ def couple(wiring: Wiring, signal: Signal | None, resistances: Mapping[str, Valu
         wires, ties = _bypass(wires, ties)
     ohms = dict(resistances)
     if asked.load is not None:
-        wires.append(Wire((_LOAD,), wiring.output, Node.GROUND))
-        ohms[_LOAD] = asked.load
+        wires.append(Wire((LOAD,), wiring.output, Node.GROUND))
+        ohms[LOAD] = asked.load
     if asked.source_resistance > 0.0:
-        wires.append(Wire((_SOURCE,), Node.BASE, Node.SOURCE))
-        ohms[_SOURCE] = asked.source_resistance
+        wires.append(Wire((SOURCE,), Node.BASE, Node.SOURCE))
+        ohms[SOURCE] = asked.source_resistance
     else:
         ties[Node.BASE] = Node.SOURCE
     return Coupled(Wiring(tuple(wires), ties, wiring.output), ohms)
@@ -110,22 +121,17 @@ def voltage_gain(coupled: Coupled, law: Laws, point: OperatingPoint) -> Values:
 
 def input_resistance(coupled: Coupled, law: Laws, point: OperatingPoint) -> Values:
     """Seen from the source's terminal, load on [Ω]."""
-    return _driving_point(coupled.tied_to_source(Node.BASE, without=_SOURCE), law, point, Node.BASE)
+    return driving_point(coupled.tied_to_source(Node.BASE, without=SOURCE), law, point, Node.BASE)
 
 
 def output_resistance(coupled: Coupled, law: Laws, point: OperatingPoint) -> Values:
     """Seen from the load, with the source's EMF zero and the load off [Ω]."""
-    grounded = tuple(
-        Wire(wire.parts, wire.node, Node.GROUND) if wire.other is Node.SOURCE else wire
-        for wire in coupled.wiring.wires
-    )
-    ties = {n: Node.GROUND if rail is Node.SOURCE else rail for n, rail in coupled.wiring.ties.items()}
-    still = Coupled(Wiring(grounded, ties, coupled.wiring.output), coupled.resistances)
     output = coupled.wiring.output
-    return _driving_point(still.tied_to_source(output, without=_LOAD), law, point, output)
+    driven = coupled.with_quiet_source().tied_to_source(output, without=LOAD)
+    return driving_point(driven, law, point, output)
 
 
-def _driving_point(driven: Coupled, law: Laws, point: OperatingPoint, node: Node) -> Values:
+def driving_point(driven: Coupled, law: Laws, point: OperatingPoint, node: Node) -> Values:
     """Resistance [Ω] seen by one volt at a driven terminal: the currents of its wires and its own."""
     ports = condense(driven.wiring, driven.resistances, {**_QUIET, Node.SOURCE: 1.0})
     moved = answer(ports, law, point)

@@ -8,7 +8,7 @@ from enum import IntEnum
 import numpy as np
 from numpy.typing import NDArray
 
-from biasband.circuit.active import Bias, active_region
+from biasband.circuit.active import FIRST_STEPS, Bias, active_region
 from biasband.circuit.junction import Laws, Sheet, laws, sheet
 from biasband.circuit.network import Ports
 from biasband.circuit.newton import newton, start
@@ -68,10 +68,15 @@ def patient(problem: Problem, temperature: Values) -> Bias:
     return bias
 
 
-def isothermal(problem: Problem, temperature: Values) -> Bias:
-    """Solve a chunk at the junction temperature [K]: as active, and patiently what is not."""
+def isothermal(
+    problem: Problem, temperature: Values, forward: Array | None = None, *, steps: int = FIRST_STEPS
+) -> Bias:
+    """Solve a chunk at the junction temperature [K]: as active, and patiently what is not.
+
+    From a forward current [A] if one is given, in as many steps.
+    """
     law = problem.laws(temperature)
-    bias, _ = active_region(problem.ports, law)
+    bias, _ = active_region(problem.ports, law, forward, steps=steps)
     if bias.solved.all():
         return bias
     left = ~bias.solved

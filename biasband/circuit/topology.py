@@ -15,7 +15,7 @@ from types import MappingProxyType
 
 
 class Node(StrEnum):
-    """A place in the bias network: a terminal of the transistor, or a rail (the signal source included)."""
+    """A place in the bias network: a terminal of the transistor, a rail, or a capacitor's far end."""
 
     BASE = "base"
     COLLECTOR = "collector"
@@ -24,6 +24,8 @@ class Node(StrEnum):
     EMITTER_RAIL = "emitter rail"
     GROUND = "ground"
     SOURCE = "source"
+    LOAD = "load"
+    BYPASS = "bypass"
 
 
 TERMINALS = (Node.BASE, Node.COLLECTOR, Node.EMITTER)

@@ -14,8 +14,10 @@ from typing import Annotated, Any, Literal
 from pydantic import AfterValidator, BeforeValidator, ValidationInfo
 
 from biasband.constants import HOTTEST_JUNCTION
-from biasband.errors import QuantityError
+from biasband.coupling import LARGEST_CAPACITOR, SMALLEST_CAPACITOR
+from biasband.errors import QuantityError, UsageError
 from biasband.files.ledger import nearest, shown
+from biasband.gain_curve import MOST_POINTS, GainCurve
 from biasband.parts.series import MOST_STEPS
 from biasband.quantity import Kind, Toleranced, format_quantity, parse, parse_toleranced
 
@@ -39,12 +41,17 @@ class SupplyOver:
 
 
 def figure(
-    kind: Kind, *, above: float | None = None, least: float | None = None, below: float | None = None
+    kind: Kind,
+    *,
+    above: float | None = None,
+    least: float | None = None,
+    below: float | None = None,
+    most: float | None = None,
 ) -> BeforeValidator:
     """Make a reader of figures of a kind, within a range in SI."""
 
     def read(value: Any) -> float:
-        return within(parse(value, kind), value, kind, above=above, least=least, below=below)
+        return within(parse(value, kind), value, kind, above=above, least=least, below=below, most=most)
 
     return BeforeValidator(read)
 
@@ -57,6 +64,7 @@ def within(
     above: float | None = None,
     least: float | None = None,
     below: float | None = None,
+    most: float | None = None,
 ) -> float:
     """Return the number where it is in range; raise QuantityError, naming `value`, where it is not."""
     if number != 0.0 and not _SMALLEST <= abs(number) <= _LARGEST:
@@ -66,6 +74,7 @@ def within(
         ("above", above, above is None or number > above),
         ("at least", least, least is None or number >= least),
         ("below", below, below is None or number < below),
+        ("at most", most, most is None or number <= most),
     )
     if all(good for _, _, good in bounds):
         return number
@@ -81,27 +90,32 @@ def choice(known: Callable[[], Collection[str]]) -> BeforeValidator:
     return BeforeValidator(lambda value: _chosen(value, known()))
 
 
-def choice_of_caller(name: str) -> BeforeValidator:
-    """Make a reader of one word out of those that the caller of the check holds ready under a name."""
+def choice_of_caller(name: str, *, hint: str = "") -> BeforeValidator:
+    """Make a reader of one word out of those that the caller of the check holds ready under a name.
+
+    `hint` helps where another word is read that is near none of them.
+    """
 
     def read(value: Any, info: ValidationInfo) -> str:
         held: Mapping[str, Collection[str]] = info.context or {}
-        return _chosen(value, held[name])
+        return _chosen(value, held[name], hint)
 
     return BeforeValidator(read)
 
 
-def _chosen(value: object, words: Collection[str]) -> str:
+def _chosen(value: object, words: Collection[str], hint: str = "") -> str:
     if isinstance(value, str) and value in words:
         return value
-    hint = nearest(value, words) if isinstance(value, str) else ""
-    raise Refusal("unknown", allowed=", ".join(words), hint=hint)
+    near = nearest(value, words) if isinstance(value, str) else ""
+    raise Refusal("unknown", allowed=", ".join(words), hint=near or hint)
 
 
-def _toleranced(kind: Kind, *, above: float | None = None) -> BeforeValidator:
+def _toleranced(
+    kind: Kind, *, above: float | None = None, least: float | None = None, most: float | None = None
+) -> BeforeValidator:
     def read(value: Any) -> Toleranced:
         figure = parse_toleranced(value, kind)
-        within(figure.value, value, kind, above=above)
+        within(figure.value, value, kind, above=above, least=least, most=most)
         within(figure.tolerance or 0.0, value, Kind.RATIO, below=1.0)
         return figure
 
@@ -138,6 +152,27 @@ def _steps(value: Any) -> int:
     return _whole(value)
 
 
+def _gain_point(value: Any) -> tuple[Any, ...]:
+    if isinstance(value, list) and len(value) == 2:
+        return tuple(value)
+    raise Refusal("not a point of the curve", allowed='a current and the h_FE there: ["1 mA", 240]')
+
+
+def _gain_points(value: Any) -> Any:
+    if isinstance(value, list):
+        return value
+    raise Refusal("not a list of points", allowed='as in [["0.1 mA", 180], ["1 mA", 240]]')
+
+
+def _gain_curve(points: list[tuple[float, float]]) -> GainCurve:
+    try:
+        return GainCurve(tuple(points))
+    except UsageError as error:
+        raise Refusal(str(error), allowed=_A_CURVE) from None
+
+
+_A_CURVE = f"2 to {MOST_POINTS} points, currents rising, h_FE rising by less than they do"
+
 COLLECTOR_PLACES = ("mid-swing", "max-swing")
 
 
@@ -163,11 +198,18 @@ PositiveWatts = Annotated[float, figure(Kind.POWER, above=0.0)]
 PositiveOhms = Annotated[float, figure(Kind.RESISTANCE, above=0.0)]
 OhmsFromZero = Annotated[float, figure(Kind.RESISTANCE, least=0.0)]
 TolerancedOhms = Annotated[Toleranced, _toleranced(Kind.RESISTANCE, above=0.0)]
+PositiveHertz = Annotated[float, figure(Kind.FREQUENCY, above=0.0)]
+TolerancedFarads = Annotated[
+    Toleranced, _toleranced(Kind.CAPACITANCE, least=SMALLEST_CAPACITOR, most=LARGEST_CAPACITOR)
+]
 Temperature = Annotated[float, figure(Kind.TEMPERATURE)]
 Ambient = Annotated[float, figure(Kind.TEMPERATURE, above=150.0, below=HOTTEST_JUNCTION)]
 """Between −123 °C and the hottest junction that the model knows."""
 
 PositiveKelvins = Annotated[float, figure(Kind.TEMPERATURE_DIFFERENCE, above=0.0)]
+KelvinsBelow = Annotated[float, figure(Kind.TEMPERATURE_DIFFERENCE, least=0.0, below=200.0)]
+"""A distance below T_j max: 200 K leave no junction that any ambient allows."""
+
 KelvinsPerWatt = Annotated[float, figure(Kind.THERMAL_RESISTANCE, least=0.0)]
 GainDrift = Annotated[float, figure(Kind.RELATIVE_SLOPE, above=-0.05, below=0.05)]
 """Ten times what a transistor does either way; a bare number is usually a forgotten unit."""
@@ -175,8 +217,11 @@ GainDrift = Annotated[float, figure(Kind.RELATIVE_SLOPE, above=-0.05, below=0.05
 Tempco = Annotated[float, figure(Kind.RELATIVE_SLOPE, least=0.0, below=0.01)]
 """Below 10 000 ppm/K: no resistor drifts more, a bare number is usually a forgotten unit."""
 Share = Annotated[float, figure(Kind.RATIO, least=0.0, below=1.0)]
+Factor = Annotated[float, figure(Kind.RATIO, above=0.0, most=1.0)]
 ProperShare = Annotated[float, figure(Kind.RATIO, above=0.0, below=1.0)]
 PositiveNumber = Annotated[float, figure(Kind.NUMBER, above=0.0)]
+GainPoint = Annotated[tuple[PositiveAmperes, PositiveNumber], BeforeValidator(_gain_point)]
+GainCurvePoints = Annotated[list[GainPoint], BeforeValidator(_gain_points), AfterValidator(_gain_curve)]
 Count = Annotated[int, BeforeValidator(_whole)]
 Steps = Annotated[int, BeforeValidator(_steps)]
 EmitterVoltage = Annotated[float | SupplyOver, BeforeValidator(_emitter_voltage)]

@@ -1,4 +1,4 @@
-"""Reads the files that a stage file names, relative to it: the transistor's own, the stock list."""
+"""Reads the files that a stage file names, relative to it: transistor, stock list, derating profile."""
 
 from __future__ import annotations
 
@@ -7,14 +7,18 @@ from collections.abc import Callable
 from typing import TypeVar
 
 from biasband.errors import BadlyWritten, Fault
+from biasband.files.derating_file import read_derating_file
 from biasband.files.ledger import Ledger, shown
+from biasband.files.stage_models import DeratingSection
 from biasband.files.stage_sections import read_transistor
 from biasband.files.stock_file import read_stock
 from biasband.files.toml_file import read_toml
 from biasband.files.toml_lines import KeyPath, line_of
-from biasband.stage import Stock, Transistor
+from biasband.files.validation import check_companions, check_section
+from biasband.parts.derating import PROFILES
+from biasband.stage import Derating, Stock, Transistor
 
-PART, STOCK = ("transistor", "file"), ("resistors", "stock")
+PART, STOCK, DERATING = ("transistor", "file"), ("resistors", "stock"), ("derating", "file")
 """The keys that name a file."""
 
 AnyFile = TypeVar("AnyFile")
@@ -45,6 +49,20 @@ def read_stock_list(resistors: object, ledger: Ledger) -> Stock | None:
     name = resistors.get("stock") if isinstance(resistors, dict) else None
     # What is not a text is noted with the other keys of [resistors].
     return _read_named(name, STOCK, read_stock, ledger) if isinstance(name, str) else None
+
+
+def read_derating(table: object, ledger: Ledger) -> Derating | None:
+    """Read [derating]: one of biasband's own profiles, or the one in the file that it names."""
+    check_companions("derating", table, ("derating",), ledger)
+    section = check_section(DeratingSection, table, ("derating",), ledger)
+    name = table.get("file") if isinstance(table, dict) else None
+    if isinstance(name, str):
+        return _read_named(name, DERATING, read_derating_file, ledger)
+    if section is None or section.profile is None:
+        if section is not None:
+            ledger.add(("derating", "profile"), "missing", allowed="profile, or file")
+        return None
+    return PROFILES[section.profile]
 
 
 def _read_named(

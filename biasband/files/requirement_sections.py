@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections import Counter
 from collections.abc import Mapping
 
-from biasband.circuit.quantities import Quantity, vocabulary
+from biasband.circuit.quantities import LOW_CORNER, Quantity, vocabulary
 from biasband.errors import QuantityError
 from biasband.files.ledger import Ledger, nearest, shown
 from biasband.files.stage_models import RequireSection
@@ -16,15 +16,17 @@ from biasband.stage import Requirement
 
 LIMITS = ("at_least", "at_most")
 
+_NEEDS_CAPACITORS = 'it needs capacitors: lowest_frequency = "50 Hz" in [signal], or [capacitors]'
+
 
 def read_requirements(
-    tables: object, resistor_names: tuple[str, ...], ledger: Ledger
+    tables: object, resistor_names: tuple[str, ...], ledger: Ledger, *, with_capacitors: bool = False
 ) -> tuple[Requirement, ...]:
     """Read every [[require]]; their faults are in the ledger."""
     if not isinstance(tables, list):
         ledger.add(("require",), "not a list of tables", read=shown(tables), allowed='"[[require]]"')
         return ()
-    known = vocabulary(resistor_names)
+    known = vocabulary(resistor_names, with_capacitors=with_capacitors)
     read = [_requirement(table, position, known, ledger) for position, table in enumerate(tables)]
     requirements = tuple(requirement for requirement in read if requirement is not None)
     counts = Counter(requirement.id for requirement in requirements)
@@ -47,7 +49,7 @@ def _requirement(
     _check_yield(section, path, ledger)
     quantity = known.get(section.quantity)
     if quantity is None:
-        hint = nearest(section.quantity, known)
+        hint = _NEEDS_CAPACITORS if section.quantity == LOW_CORNER else nearest(section.quantity, known)
         read, allowed = shown(section.quantity), ", ".join(known)
         ledger.add((*path, "quantity"), "unknown quantity", read=read, allowed=allowed, hint=hint)
     return Requirement(

@@ -11,13 +11,14 @@ from typing import Any
 
 from biasband.circuit.topology import EMITTER_PARTS, TOPOLOGIES, Node, Topology
 from biasband.errors import BadlyWritten, PhysicallyImpossible
+from biasband.files.capacitor_sections import Surroundings, read_capacitors
 from biasband.files.distribution_keys import check_batches
 from biasband.files.ledger import Ledger, nearest
-from biasband.files.named_files import read_stock_list, read_transistor_and_file
+from biasband.files.named_files import read_derating, read_stock_list, read_transistor_and_file
 from biasband.files.requirement_sections import read_requirements
 from biasband.files.resistor_sections import EMITTER_RESISTOR, Needs, read_resistors
 from biasband.files.series_folder import SeriesTables, load_tables
-from biasband.files.stage_models import DeratingSection, StageSection
+from biasband.files.stage_models import StageSection
 from biasband.files.stage_rules import note_impossibilities
 from biasband.files.stage_sections import (
     read_ambient,
@@ -33,12 +34,12 @@ from biasband.stage import Resistor, Snapping, Stage
 COMPULSORY_SECTIONS = ("stage", "supply", "transistor")
 SECTIONS = (
     "stage", "supply", "negative_supply", "ambient", "transistor", "target", "signal", "resistors",
-    "require", "derating",
+    "capacitors", "require", "derating",
 )  # fmt: skip
 
 
 def read_stage(path: str | os.PathLike[str], *, tables: SeriesTables | None = None) -> Stage:
-    """Read a stage file, and the transistor's own file and the stock list where it names them.
+    """Read a stage file, and the transistor's file, stock list and derating profile where it names them.
 
     `tables` holds the series that it may name; None means biasband's own.
     Returns: the stage in SI units, with every default filled in and every file read on record.
@@ -67,14 +68,17 @@ def _read_sections(file: TomlFile, ledger: Ledger, tables: SeriesTables) -> Stag
     _check_negative_supply(data, topology, ledger)
     _check_signal(data, topology, resistors, ledger)
     names = tuple(resistor.name for resistor in resistors) or _every_name()
-    requirements = read_requirements(data.get("require", []), names, ledger)
+    capacitors = read_capacitors(data.get("capacitors"), _around(data, records, tables), ledger)
+    coupled = bool(capacitors) or ("signal" in data and "signal" not in records)
+    requirements = read_requirements(data.get("require", []), names, ledger, with_capacitors=coupled)
     if any(name not in records for name in COMPULSORY_SECTIONS):
         return None
     files = [each.record for each in (file, ledger.part_file) if each is not None]
-    files += [] if stock is None else [stock.file]
+    files += [each.file for each in (stock, records.get("derating")) if each is not None and each.file]
     stage = Stage(
         **dict(records.pop("stage")),
         resistors=resistors,
+        capacitors=capacitors,
         requirements=requirements,
         stock=stock,
         snapping=_snapping(data.get("resistors")),
@@ -84,6 +88,16 @@ def _read_sections(file: TomlFile, ledger: Ledger, tables: SeriesTables) -> Stag
     )
     check_batches(stage, ledger)
     return stage
+
+
+def _around(data: Mapping[str, Any], records: Mapping[str, Any], tables: SeriesTables) -> Surroundings:
+    """What the file means for the capacitors; a faulty signal section has no record."""
+    return Surroundings(
+        signal=records.get("signal"),
+        has_signal="signal" in data,
+        ambient=records.get("ambient"),
+        series=tables.series,
+    )
 
 
 def _snapping(resistors: object) -> Snapping:
@@ -102,7 +116,7 @@ def _records(file: TomlFile, ledger: Ledger) -> dict[str, Any]:
         "transistor": read_transistor_and_file,
         "target": read_target,
         "signal": read_signal,
-        "derating": _read_derating,
+        "derating": read_derating,
     }
     records = {name: read(file.data[name], ledger) for name, read in readers.items() if name in file.data}
     return {name: record for name, record in records.items() if record is not None}
@@ -110,11 +124,6 @@ def _records(file: TomlFile, ledger: Ledger) -> dict[str, Any]:
 
 def _read_head(table: object, ledger: Ledger) -> StageSection | None:
     return check_section(StageSection, table, ("stage",), ledger)
-
-
-def _read_derating(table: object, ledger: Ledger) -> str | None:
-    section = check_section(DeratingSection, table, ("derating",), ledger)
-    return None if section is None else section.profile
 
 
 def _check_names(data: Mapping[str, Any], ledger: Ledger) -> None:

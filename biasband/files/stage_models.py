@@ -20,6 +20,8 @@ from biasband.stage import DistributionName, Method, PlainName, Polarity, Snappi
 SERIES = "series"
 """The name under which the caller of a check holds the series that there are."""
 
+OWN_TABLES = "a table of your own is read with --tables DIR"
+
 ONE_FIGURE, RANGE = "<one figure>", "<range>"
 """Tags that pydantic puts into an error's place, where a figure may also be given as a range."""
 
@@ -142,6 +144,7 @@ class TransistorSection(Section):
     test_voltage: f.PositiveVolts | None = None
     base_emitter_drift: Drift | None = None
     gain_drift: f.GainDrift | None = None
+    gain_curve: f.GainCurvePoints | None = None
     leakage: f.AmperesFromZero | None = None
     leakage_distribution: PlainDistribution | None = None
     leakage_doubling: f.PositiveKelvins | None = None
@@ -172,12 +175,27 @@ class SignalSection(Section):
     load: f.PositiveOhms | None = None
     source_resistance: f.OhmsFromZero | None = None
     bypassed: bool = False
+    lowest_frequency: f.PositiveHertz | None = None
+
+
+class CapacitorsSection(Section):
+    """What may be said of all capacitors, in [capacitors] without its sub-tables, and of each"""
+
+    series: Annotated[str, choice_of_caller(SERIES, hint=OWN_TABLES)] | None = None
+    tolerance: f.Share | None = None
+    temperature_change: f.Share | None = None
+
+
+class CapacitorSection(CapacitorsSection):
+    """[capacitors.NAME]"""
+
+    value: f.TolerancedFarads | None = None
 
 
 class ResistorDefaults(Section):
     """What may be said of all resistors, and of each"""
 
-    series: Annotated[str, choice_of_caller(SERIES)] | None = None
+    series: Annotated[str, choice_of_caller(SERIES, hint=OWN_TABLES)] | None = None
     tolerance: f.Share | None = None
     tempco: f.Tempco | None = None
     life_drift: f.Share | None = None
@@ -227,4 +245,31 @@ class RequireSection(Section):
 class DeratingSection(Section):
     """[derating]"""
 
-    profile: Annotated[str, choice(lambda: tuple(PROFILES))]
+    profile: Annotated[str, choice(lambda: tuple(PROFILES))] | None = None
+    file: f.Text | None = None
+
+
+class DeratingFile(Section):
+    """A derating profile in a file of its own; its table of origins is read apart"""
+
+    name: f.Text
+    resistor_power: f.Factor | None = None
+    supply_voltage: f.Factor | None = None
+    transistor_power: f.Factor | None = None
+    current: f.Factor | None = None
+    emitter_base_voltage: f.Factor | None = None
+    junction_margin: f.KelvinsBelow | None = None
+    junction_ceiling: f.Ambient | None = None
+    origin: Any = None
+
+
+class OriginTable(Section):
+    """[origin] of such a file"""
+
+    resistor_power: f.Text | None = None
+    supply_voltage: f.Text | None = None
+    transistor_power: f.Text | None = None
+    current: f.Text | None = None
+    emitter_base_voltage: f.Text | None = None
+    junction_margin: f.Text | None = None
+    junction_ceiling: f.Text | None = None

@@ -175,7 +175,8 @@ def _resistors_stay_positive(stage: Stage, ledger: Ledger) -> None:
 
 
 def _requirements_in_order(stage: Stage, ledger: Ledger) -> None:
-    kinds = quantity_units(tuple(resistor.name for resistor in stage.resistors))
+    names = tuple(resistor.name for resistor in stage.resistors)
+    kinds = quantity_units(names, with_capacitors=bool(stage.capacitors))
     for position, need in enumerate(stage.requirements):
         if need.at_least is not None and need.at_most is not None and need.at_least > need.at_most:
             shown = partial(format_quantity, kind=kinds[need.quantity], digits=6)

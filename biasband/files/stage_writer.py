@@ -1,4 +1,4 @@
-"""Writes a stage file again with its resistor values frozen, comments and order kept."""
+"""Writes a stage file again with the values of its parts frozen, comments and order kept."""
 
 from __future__ import annotations
 
@@ -13,7 +13,8 @@ import tomlkit
 from tomlkit.exceptions import TOMLKitError
 
 from biasband.errors import BiasbandError, UsageError
-from biasband.files.named_files import PART, STOCK
+from biasband.files.capacitor_sections import CAPACITOR_TABLES
+from biasband.files.named_files import DERATING, PART, STOCK
 from biasband.files.series_folder import SeriesTables
 from biasband.files.stage_file import read_stage
 
@@ -25,26 +26,27 @@ def frozen_text(
     new_path: str | os.PathLike[str] | None = None,
     tables: SeriesTables | None = None,
 ) -> str:
-    """Return the text of a stage file with `value = "…"` set for each resistor in `values`.
+    """Return the text of a stage file with `value = "…"` set for each resistor and capacitor in `values`.
 
     A tolerance behind the old value ("3k3 ± 1 %") stays behind the new one. Where the text is meant
-    for a `new_path` in another folder, transistor.file and resistors.stock are rewritten so that they
-    are found from there. `tables` are those that the stage is read with.
-    Raises: what `read_stage` raises; UsageError where the stage has no resistor of a name;
+    for a `new_path` in another folder, transistor.file, resistors.stock and derating.file are rewritten
+    so that they are found from there. `tables` are those that the stage is read with.
+    Raises: what `read_stage` raises; UsageError where the stage has no part of a name;
     BiasbandError where the layout of the file is beyond rewriting.
     """
     source = os.fspath(path)
-    known = [resistor.name for resistor in read_stage(source, tables=tables).resistors]
+    stage = read_stage(source, tables=tables)
+    known = [part.name for part in stage.resistors] + [part.name for part in stage.capacitors]
     unknown = [name for name in values if name not in known]
     if unknown:
-        raise UsageError(f"{source} has no resistor {', '.join(unknown)}; allowed: {', '.join(known)}")
+        raise UsageError(f"{source} has no part {', '.join(unknown)}; allowed: {', '.join(known)}")
     with open(source, encoding="utf-8-sig", newline="") as file:
         text = file.read()
     target = source if new_path is None else os.fspath(new_path)
 
     def edit(data: Any) -> None:
         _freeze(data, values)
-        for section, key in (PART, STOCK):
+        for section, key in (PART, STOCK, DERATING):
             _point_to_file(data.get(section, {}), key, os.path.dirname(source), os.path.dirname(target))
 
     if (written := _rewritten(text, edit)) is None:
@@ -88,9 +90,9 @@ def write_new(path: str | os.PathLike[str], text: str) -> None:
 
 
 def _freeze(data: Any, values: Mapping[str, str]) -> None:
-    resistors = data.setdefault("resistors", {})
     for name, value in values.items():
-        own = resistors.setdefault(name, {})
+        section = "capacitors" if name in CAPACITOR_TABLES else "resistors"
+        own = data.setdefault(section, {}).setdefault(CAPACITOR_TABLES.get(name, name), {})
         tolerance = re.search(r"\s*(±|\+/[-\u2212]).*", str(own.get("value", "")))
         own["value"] = value + (tolerance[0] if tolerance else "")
 

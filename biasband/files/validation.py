@@ -23,6 +23,7 @@ _WRONG_TYPES = {
 }
 
 _APART: Mapping[str, tuple[tuple[str, str], ...]] = {
+    "derating": (("file", "profile"),),
     "supply": (
         ("min", "voltage"),
         ("nominal", "voltage"),

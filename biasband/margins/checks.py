@@ -17,9 +17,9 @@ from biasband.circuit.reading import Reading, read
 from biasband.circuit.scenarios import Values
 from biasband.circuit.topology import Node
 from biasband.margins.records import Evidence, Margin, Side, share
-from biasband.parts.derating import PROFILES, Profile, derated_rating
+from biasband.parts.derating import derated_rating
 from biasband.quantity import Kind
-from biasband.stage import Resistor, Stage
+from biasband.stage import Derating, Resistor, Stage
 from biasband.variation.contributors import axes, realise
 
 _PREFIX = "check "
@@ -66,14 +66,14 @@ class Standing:
 
 def standing_checks(stage: Stage, *, cut_off: float) -> Standing:
     """Collect the standing checks of a stage; `cut_off` [A] is the current below which it is cut off."""
-    found = list(_checks(stage, PROFILES[stage.derating], cut_off))
+    found = list(_checks(stage, cut_off))
     made = tuple(check for check in found if isinstance(check, Check))
     return Standing(made, tuple(check for check in found if isinstance(check, NotMade)))
 
 
-def _checks(stage: Stage, profile: Profile, cut_off: float) -> Iterator[Check | NotMade]:
+def _checks(stage: Stage, cut_off: float) -> Iterator[Check | NotMade]:
     words = vocabulary(tuple(r.name for r in stage.resistors))
-    sheet = stage.transistor
+    sheet, profile = stage.transistor, stage.derating
     V_CE, I_C = words["collector_emitter_voltage"], words["collector_current"]
     # Above V_CE(sat) by what voltages are solved to, so that a corner on it is saturated here as there.
     yield Check("saturation", "at_least", V_CE, lambda r: stage.saturation_voltage + RESIDUAL)
@@ -110,7 +110,7 @@ def _check(
     return Check(name, side, value, lambda r: limit(r, rating))
 
 
-def _power_check(stage: Stage, profile: Profile, value: Quantity) -> Check | NotMade:
+def _power_check(stage: Stage, profile: Derating, value: Quantity) -> Check | NotMade:
     """Factor × min(P_tot, (T_j max − T_a)/R_θJA); what is not stated does not limit."""
     sheet = stage.transistor
     hottest, per_watt, max_power = sheet.max_junction, sheet.thermal_resistance, sheet.max_power
@@ -127,7 +127,7 @@ def _power_check(stage: Stage, profile: Profile, value: Quantity) -> Check | Not
     return Check("transistor_power", "at_most", value, limit)
 
 
-def _junction_check(stage: Stage, profile: Profile, value: Quantity) -> Check | NotMade:
+def _junction_check(stage: Stage, profile: Derating, value: Quantity) -> Check | NotMade:
     name, sheet = "junction_temperature", stage.transistor
     if sheet.thermal_resistance is None:
         return NotMade(name, "transistor.thermal_resistance")
@@ -136,7 +136,7 @@ def _junction_check(stage: Stage, profile: Profile, value: Quantity) -> Check | 
     )
 
 
-def _resistor_check(resistor: Resistor, profile: Profile, value: Quantity) -> Check | NotMade:
+def _resistor_check(resistor: Resistor, profile: Derating, value: Quantity) -> Check | NotMade:
     def limit(reading: Reading, rating: float) -> Values:
         return profile.resistor_power * derated_rating(
             rating,

@@ -3,12 +3,12 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
 from biasband.circuit.operating_point import Region
-from biasband.circuit.quantities import Quantity, vocabulary
+from biasband.circuit.quantities import Quantity, clips_first, vocabulary
 from biasband.circuit.reading import read
 from biasband.margins.checks import Standing, check_margins, standing_checks
 from biasband.margins.records import Evidence, Margin
@@ -47,7 +47,15 @@ class Holding:
 
 def words(stage: Stage) -> Mapping[str, Quantity]:
     """The vocabulary of a stage."""
-    return vocabulary(tuple(resistor.name for resistor in stage.resistors))
+    names = tuple(resistor.name for resistor in stage.resistors)
+    return vocabulary(names, with_capacitors=bool(stage.capacitors))
+
+
+def looked_into(stage: Stage) -> Mapping[str, Quantity]:
+    """What a review finds the spread of: the vocabulary of a stage, what is costly only where required."""
+    required = {requirement.quantity for requirement in stage.requirements}
+    rows = words(stage).items()
+    return {name: quantity for name, quantity in rows if name in required or not quantity.costly}
 
 
 def nominal(stage: Stage) -> Nominal:
@@ -102,9 +110,19 @@ def _held(
         boards=sampling.sample(stage, measures, points, boards=boards, seed=seed, cut_off=cut_off),
         causes=causing.causes(stage, found.ranges, {**measures, **standing.measures}, cut_off=cut_off),
     )
-    required = requirement_margins(stage.requirements, measures, evidence)
+    required = [
+        _clipping_noted(stage, row) for row in requirement_margins(stage.requirements, measures, evidence)
+    ]
     rows = (*required, *check_margins(stage, standing.made, evidence))
     return Holding(middle, standing, evidence, tuple(sorted(rows, key=smallness)))
+
+
+def _clipping_noted(stage: Stage, row: Margin) -> Margin:
+    """A row about a swing says what it clips at first where it is smallest."""
+    if row.quantity != "symmetric_peak_swing" or np.isnan(row.worst.value):
+        return row
+    first = clips_first(read(stage, realise(stage, row.worst.coordinates)))
+    return replace(row, notes=(f"clips at {first} first there", *row.notes))
 
 
 def smallness(row: Margin) -> float:

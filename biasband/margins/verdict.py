@@ -8,6 +8,7 @@ from math import isnan
 from typing import Literal
 
 from biasband.circuit.operating_point import Region
+from biasband.circuit.quantities import LOW_CORNER
 from biasband.margins.checks import Standing
 from biasband.margins.records import Evidence, Margin
 from biasband.quantity import format_quantity
@@ -113,6 +114,8 @@ def _unstated(stage: Stage) -> Iterator[str]:
     negative = stage.negative_supply
     missing += ["negative supply tolerance"] if negative is not None and not negative.voltage.stated else []
     missing += [f"tolerance of {r.name}" for r in stage.resistors if not r.tolerance_stated]
+    if any(requirement.quantity == LOW_CORNER for requirement in stage.requirements):
+        missing += [f"tolerance of {c.name}" for c in stage.capacitors if not c.tolerance_stated]
     missing += ["gain limits"] if not stage.transistor.gain.stated else []
     if missing:
         how = 'write zero as "0 %", or as min = max'

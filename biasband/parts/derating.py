@@ -6,8 +6,7 @@ one that applies.
 
 from __future__ import annotations
 
-from collections.abc import Mapping
-from dataclasses import dataclass
+from collections.abc import Iterator, Mapping
 from types import MappingProxyType
 
 import numpy as np
@@ -15,78 +14,67 @@ from numpy.typing import ArrayLike, NDArray
 
 from biasband.constants import KELVIN_OFFSET
 from biasband.errors import UsageError
+from biasband.stage import Derating
+
+FACTORS: Mapping[str, str] = MappingProxyType(
+    {
+        "resistor_power": "resistor power",
+        "supply_voltage": "supply",
+        "transistor_power": "transistor power",
+        "current": "collector current",
+        "emitter_base_voltage": "emitter-base voltage",
+    }
+)
+"""What each factor of a profile is a share of, in words."""
+
+MARGIN, CEILING = "junction_margin", "junction_ceiling"
+
+FIGURES = (*FACTORS, MARGIN, CEILING)
+"""The figures of a profile, each with an origin of its own."""
+
+NO_ORIGIN = "origin not stated"
 
 
-@dataclass(frozen=True, kw_only=True)
-class Profile:
-    """The share of each rating that a design may use, as factors of 1.
+def in_words(derating: Derating) -> str:
+    """Write a profile as one sentence: each limit with its origin, then what is not derated."""
+    said = dict(_limits(derating))
+    if not said:
+        return f"Derating profile {derating.name}: no derating applied."
+    by_origin: dict[str, list[str]] = {}
+    for figure, words in said.items():
+        by_origin.setdefault(derating.origins.get(figure, NO_ORIGIN), []).append(words)
+    parts = [f"{', '.join(words)} ({origin})" for origin, words in by_origin.items()]
+    left = [words for figure, words in FACTORS.items() if figure not in said]
+    left += [] if MARGIN in said or CEILING in said else ["junction temperature"]
+    parts += [f"not derated: {', '.join(left)}"] if left else []
+    return f"Derating profile {derating.name}: {'; '.join(parts)}."
 
-    `supply_voltage` is the share of V_CEO that the highest supply may reach, `transistor_power` of
-    the power that P_tot and T_j max leave, `current` of I_C max, `emitter_base_voltage` of V_EBO,
-    `resistor_power` of a resistor's rating at its ambient. The junction stays `junction_margin` [K]
-    below T_j max and at or below `junction_ceiling` [K] (None: no ceiling). `origin` says where the
-    figures come from.
-    """
 
-    name: str
-    origin: str
-    resistor_power: float = 1.0
-    supply_voltage: float = 1.0
-    transistor_power: float = 1.0
-    current: float = 1.0
-    emitter_base_voltage: float = 1.0
-    junction_margin: float = 0.0
-    junction_ceiling: float | None = None
-
-    def junction_limit(self, max_junction: float) -> float:
-        """The highest junction temperature [K] allowed for a T_j max [K].
-
-        Worked case, stringent: T_j max 150 °C allows 110 °C, 125 °C allows 85 °C.
-        """
-        below = max_junction - self.junction_margin
-        return below if self.junction_ceiling is None else min(self.junction_ceiling, below)
-
-    @property
-    def sentence(self) -> str:
-        """One sentence for the report: what is derated, to what, and where the figures come from."""
-        parts = [*self._shares(), *self._junction()]
-        if not parts:
-            return f"Derating profile {self.name}: no derating applied."
-        return f"Derating profile {self.name}: {', '.join(parts)} ({self.origin})."
-
-    def _shares(self) -> list[str]:
-        shares = (
-            ("resistor power", self.resistor_power),
-            ("supply", self.supply_voltage),
-            ("transistor power", self.transistor_power),
-            ("collector current", self.current),
-            ("emitter-base voltage", self.emitter_base_voltage),
-        )
-        return [f"{what} at most {100 * share:.4g} % of its limit" for what, share in shares if share != 1.0]
-
-    def _junction(self) -> list[str]:
-        parts = []
-        if self.junction_ceiling is not None:
-            parts.append(f"junction at most {self.junction_ceiling - KELVIN_OFFSET:.4g} °C")
-        if self.junction_margin:
-            parts.append(f"junction at least {self.junction_margin:.4g} K below its limit")
-        return parts
+def _limits(derating: Derating) -> Iterator[tuple[str, str]]:
+    """Each figure that limits something, and the limit in words."""
+    for figure, words in FACTORS.items():
+        share: float = getattr(derating, figure)
+        if share != 1.0:
+            yield figure, f"{words} at most {100 * share:.4g} % of its limit"
+    if derating.junction_ceiling is not None:
+        yield CEILING, f"junction at most {derating.junction_ceiling - KELVIN_OFFSET:.4g} °C"
+    if derating.junction_margin:
+        yield MARGIN, f"junction at least {derating.junction_margin:.4g} K below its limit"
 
 
 _MEMORY = "memory of published practice, to be checked against the standard that applies"
 
 _ALL = (
-    Profile(name="full", origin="the ratings themselves"),
-    Profile(
+    Derating(name="full"),
+    Derating(
         name="half-power",
-        origin=f"resistor power and both voltages: {_MEMORY}",
         resistor_power=0.5,
         supply_voltage=0.8,
         emitter_base_voltage=0.8,
+        origins=dict.fromkeys(("resistor_power", "supply_voltage", "emitter_base_voltage"), _MEMORY),
     ),
-    Profile(
+    Derating(
         name="stringent",
-        origin=f"every figure: {_MEMORY}",
         resistor_power=0.5,
         supply_voltage=0.75,
         transistor_power=0.65,
@@ -94,11 +82,12 @@ _ALL = (
         emitter_base_voltage=0.75,
         junction_margin=40.0,
         junction_ceiling=110.0 + KELVIN_OFFSET,
+        origins=dict.fromkeys(FIGURES, _MEMORY),
     ),
 )
 
-PROFILES: Mapping[str, Profile] = MappingProxyType({profile.name: profile for profile in _ALL})
-"""Every profile by name (physics: "Cautions").
+PROFILES: Mapping[str, Derating] = MappingProxyType({profile.name: profile for profile in _ALL})
+"""Biasband's own profiles by name (physics: "Cautions").
 
 The sources' factor on a resistor's *voltage* (80 %) has no field: a stage states no such rating.
 """

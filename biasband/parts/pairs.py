@@ -9,18 +9,18 @@ the neighbours of the second part that would be exactly right can be the best.
 from __future__ import annotations
 
 from bisect import bisect_right
-from collections.abc import Iterable, Iterator, Sequence
+from collections.abc import Collection, Iterable, Iterator, Sequence
 from dataclasses import dataclass
 from decimal import Decimal
 from fractions import Fraction
 from heapq import nsmallest
 from itertools import pairwise
-from math import inf, lcm, log, sqrt
+from math import inf, lcm, sqrt
 from typing import Literal, NamedTuple
 
 from biasband.errors import UsageError
-from biasband.parts.series import Series, Snap
-from biasband.quantity import Kind, format_exact, format_quantity
+from biasband.parts.series import Series
+from biasband.quantity import Kind, format_exact
 
 Connection = Literal["series", "parallel"]
 
@@ -98,10 +98,12 @@ def pairs_among(
     tolerance: float | Sequence[float],
     tempco: float | Sequence[float] = 0.0,
     count: int = 5,
+    alone: Collection[float] = (),
 ) -> tuple[Pair, ...]:
     """Find the `count` pairs of the given values [Ω] that come nearest to `value`, the best first.
 
-    `values` ascend, none twice; a value may stand in a pair with itself. `tolerance` (a fraction)
+    `values` ascend, none twice; a value may stand in a pair with itself, but for those in `alone`, of which
+    there is one piece. `tolerance` (a fraction)
     and `tempco` [1/K], both ±, are one for all values or one for each. Both connections compete, and
     are ranked by |ln(total / value)|. Ties: the more equal pair (an equal one, of a single value,
     before all), then the lower total, then series. Each value is taken as the shortest decimal that
@@ -121,28 +123,8 @@ def pairs_among(
     _require(_reach_rule(values, value))
     parts = [_Part(*map(_exact, each)) for each in zip(values, tolerances, tempcos, strict=True)]
     wanted = _exact(value)
-    best = _best([part.ohms for part in parts], wanted, count)
+    best = _best([part.ohms for part in parts], wanted, count, {_exact(each) for each in alone})
     return tuple(_pair(parts[each.first], parts[each.second], each.parallel, wanted) for each in best)
-
-
-def against(pair: Pair, single: Snap) -> tuple[str, ...]:
-    """Say what speaks against a pair, compared with the nearest single value: three reasons at most.
-
-    One sentence each, the weightiest first: that the single value is as near, or that what the pair
-    gains is within its own tolerance; that its smaller share is within that tolerance; that it is
-    two parts. Where the single value is the wanted one exactly, the first sentence says that no pair
-    is nearer.
-
-    Raises UsageError where the two are for different values.
-
-    Source: common practice.
-    """
-    _require((pair.value == single.value, f"a pair for {pair.value:g} Ω, a snap of {single.value:g} Ω"))
-    return (
-        *_against_nearness(pair, single),
-        *_against_trimming(pair),
-        "Two parts and four solder joints instead of one part and two.",
-    )
 
 
 class _Part(NamedTuple):
@@ -166,10 +148,12 @@ class _Candidate(NamedTuple):
     parallel: bool
 
 
-def _best(values: Sequence[Fraction], wanted: Fraction, count: int) -> list[_Candidate]:
+def _best(
+    values: Sequence[Fraction], wanted: Fraction, count: int, alone: Collection[Fraction]
+) -> list[_Candidate]:
     """The best pairs in order: all that could be among them by rounded rank, then by exact rank."""
-    candidates = list(_candidates(values, wanted, keep=count))
-    limit = nsmallest(count, (each.off for each in candidates))[-1]
+    candidates = list(_candidates(values, wanted, keep=count, alone=alone))
+    limit = max(nsmallest(count, (each.off for each in candidates)), default=inf)
 
     def rank(each: _Candidate) -> tuple[Fraction, Fraction, Fraction, bool]:
         first, second = values[each.first], values[each.second]
@@ -180,17 +164,21 @@ def _best(values: Sequence[Fraction], wanted: Fraction, count: int) -> list[_Can
     return nsmallest(count, (each for each in candidates if each.off <= limit), key=rank)
 
 
-def _candidates(values: Sequence[Fraction], wanted: Fraction, *, keep: int) -> Iterator[_Candidate]:
+def _candidates(
+    values: Sequence[Fraction], wanted: Fraction, *, keep: int, alone: Collection[Fraction]
+) -> Iterator[_Candidate]:
     """All pairs that can be among the best `keep`: for each first part, `keep` seconds on each side.
 
-    A second part is never larger than the first, so that each pair comes up once.
+    A second part is never larger than the first, so that each pair comes up once, and smaller than one that
+    is `alone`.
     """
     units = lcm(wanted.denominator, *(each.denominator for each in values))
     target, whole = int(wanted * units), [int(each * units) for each in values]
     for place, first in enumerate(whole):
+        end = place if values[place] in alone else place + 1
         for parallel in (False, True):
-            above = bisect_right(whole, _complement(first, target, parallel), hi=place + 1)
-            for other in range(max(above - keep, 0), min(above + keep, place + 1)):
+            above = bisect_right(whole, _complement(first, target, parallel), hi=end)
+            for other in range(max(above - keep, 0), min(above + keep, end)):
                 yield _Candidate(_off(first, whole[other], target, parallel), place, other, parallel)
 
 
@@ -253,38 +241,6 @@ def _change(first: _Part, second: _Part, parallel: bool, *, by: tuple[int, int])
 
 def _root_of_squares(terms: Iterable[Fraction]) -> float:
     return sqrt(sum(term**2 for term in terms))
-
-
-def _against_nearness(pair: Pair, single: Snap) -> Iterator[str]:
-    alone = f"{format_exact(single.chosen, Kind.RESISTANCE)} alone"
-    off, off_alone = abs(log(pair.total / pair.value)), abs(log(single.chosen / single.value))
-    errors = f"{alone} is off by {_percent(abs(single.error))}, the pair by {_percent(abs(pair.error))}"
-    if single.chosen == single.value:
-        yield f"{alone} is the wanted value exactly: no pair is nearer."
-    elif off_alone <= off:
-        yield f"{errors}: no nearer."
-    elif off_alone - off <= _widest(pair):
-        yield f"{errors}: the gain is within the pair's own tolerance of ±{_percent(_widest(pair))}."
-
-
-def _against_trimming(pair: Pair) -> Iterator[str]:
-    minor = min(pair.first_share, pair.second_share)
-    if minor > _widest(pair):
-        return
-    ohms = (pair.first, pair.second) if pair.first_share >= pair.second_share else (pair.second, pair.first)
-    major, trimmer = (format_exact(each, Kind.RESISTANCE) for each in ohms)
-    yield (
-        f"{major} decides {_percent(1 - minor)} of the total and takes as much of the power; "
-        f"{trimmer} trims {_percent(minor)}, within the tolerance of ±{_percent(_widest(pair))}."
-    )
-
-
-def _widest(pair: Pair) -> float:
-    return max(-pair.tolerance_low, pair.tolerance_high)
-
-
-def _percent(fraction: float) -> str:
-    return format_quantity(fraction, Kind.RATIO, digits=3)
 
 
 def _between(series: Series, lowest: float, highest: float) -> tuple[float, ...]:

@@ -62,7 +62,7 @@ def best_item(stock: Stock, value: float, demand: Demand) -> StockItem | None:
     the one that stands first in the list. Where only some items have a price those come first, and
     where only some state a tolerance, a tempco or a rating those come first too.
     """
-    return min(_serving(stock, value, demand), key=_by_price, default=None)
+    return min(_serving(stock, value, demand), key=by_price, default=None)
 
 
 def pieces_in_stock(stock: Stock, value: float, demand: Demand) -> int | None:
@@ -116,7 +116,7 @@ def _at_most(figure: float | None, limit: float | None) -> bool:
     return figure is None or limit is None or figure <= limit
 
 
-def _by_price(item: StockItem) -> tuple[float, float, float, float]:
+def by_price(item: StockItem) -> tuple[float, float, float, float]:
     """Sort key of the best item; what is not stated comes last."""
     costs = (item.price, item.tolerance, item.tempco)
     price, tolerance, tempco = (inf if cost is None else cost for cost in costs)

@@ -8,7 +8,6 @@ from biasband.circuit.quantities import Quantity
 from biasband.quantity import Kind
 from biasband.show.prose import formula, places
 from biasband.show.table import REGION_WORDS, Column, Row, Table, code, computed, difference, figure, percent
-from biasband.stage import Stage
 from biasband.values.choosing import Design, PartChoice
 from biasband.values.ideal import Step
 from biasband.variation.corners import Corners, Range
@@ -36,7 +35,7 @@ SPREAD_COLUMNS = (
 
 def design_table(design: Design) -> Table:
     """Each ideal value by hand and refined, with its formulas, then the preferred value."""
-    rows = tuple(_design_row(part, design.stage) for part in design.parts)
+    rows = tuple(_design_row(part, design) for part in design.parts)
     notes = (
         "hand: V_BE = 0.7 V, I_E = I_C, an unloaded divider; refined: the real model meets the target.",
         "Values are chosen together, so one may be further off its ideal than its series would have it.",
@@ -44,20 +43,21 @@ def design_table(design: Design) -> Table:
     return Table("Values", DESIGN_COLUMNS, rows, notes if design.chosen else ())
 
 
-def _design_row(part: PartChoice, stage: Stage) -> Row:
+def _design_row(part: PartChoice, design: Design) -> Row:
     steps = (("hand", part.hand), ("refined", part.ideal))
-    series = stage.resistor(part.name).series
+    origin = design.origin_of(part.name)
+    stock = "" if origin == "given" or design.stage.stock is None else "stock"
     return Row(
         (
             part.name,
             _ohms(part.hand),
             _ohms(part.ideal),
             figure(part.value, Kind.RESISTANCE, digits=6),
-            percent(part.value / part.ideal.ohms - 1.0) if part.ideal else "given",
+            percent(part.value / part.ideal.ohms - 1.0) if part.ideal else origin,
             code(part.value),
-            series if part.chosen else "",
+            design.series_of(part.name) or stock,
         ),
-        tuple(f"{name}: {formula(step, stage)}" for name, step in steps if step is not None),
+        tuple(f"{name}: {formula(step, design.stage)}" for name, step in steps if step is not None),
     )
 
 

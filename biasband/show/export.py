@@ -11,14 +11,15 @@ from typing import Any
 from biasband.circuit.operating_point import Region
 from biasband.constants import VERSION
 from biasband.margins.records import Margin
-from biasband.parts.marking import Markings
+from biasband.show.capacitors_json import capacitors_json
+from biasband.show.parts_json import markings_json, parts_json
 from biasband.show.summary import Attempt
 from biasband.show.table import REGION_WORDS, code
-from biasband.signoff.parts_list import PartLine, parts_list
+from biasband.signoff.drifting import DriftStudy, LimitDrift
 from biasband.signoff.snapping import SnapStudy
 from biasband.signoff.study import Review
-from biasband.stage import Resistor, Stage
-from biasband.values.choosing import Design, PartChoice
+from biasband.stage import Stage
+from biasband.values.choosing import Design
 from biasband.values.joint import Contender, Contest
 from biasband.variation.causes import Causes
 from biasband.variation.corners import Corners
@@ -49,14 +50,17 @@ def _finite_value(value: Any) -> Any:
 
 def review_json(review: Review) -> Json:
     """A review as plain data (formats: "JSON")."""
-    boards, words = review.evidence.boards, review.quantities
+    boards, words = review.evidence.boards, review.looked_into
     evidence, standing = review.evidence, review.standing
     result = {
         **_origin(review.stage),
         "seed": boards.seed,
         "boards": boards.boards,
         "boards_per_batch": boards.boards_per_batch,
-        "parts": _parts(review.design, {name: evidence.corners.ranges[name].high.value for name in words}),
+        "parts": parts_json(
+            review.design, {name: evidence.corners.ranges[name].high.value for name in words}
+        ),
+        "capacitors": capacitors_json(review.design),
         "choice": _choice(review.design.contest),
         "nominal": {**review.nominal.values, "region": REGION_WORDS[review.nominal.region]},
         "corners": _ranges(evidence.corners, words),
@@ -92,7 +96,8 @@ def design_json(design: Design) -> Json:
     return _finite(
         {
             **_origin(design.stage),
-            "parts": _parts(design, {}),
+            "parts": parts_json(design, {}),
+            "capacitors": capacitors_json(design),
             "choice": _choice(design.contest),
             "warnings": list(design.warnings),
         }
@@ -113,24 +118,13 @@ def snap_json(study: SnapStudy) -> list[Json]:
                 "code": code(row.snap.chosen),
                 "error": row.snap.error,
                 "worst_error": study.worst_error,
-                "markings": _markings(row.markings),
+                "markings": markings_json(row.markings),
                 "pairs": [asdict(pair) for pair in row.pairs],
                 "notes": [*row.notes, *row.against],
             }
         )
         for row in study.rows
     ]
-
-
-def _markings(found: Markings) -> Json:
-    return {
-        "letter_code": found.letter_code,
-        "bands": found.bands.colours and list(found.bands.colours),
-        "six_bands": found.six_bands.colours and list(found.six_bands.colours),
-        "chip_three": found.chip_three,
-        "chip_four": found.chip_four,
-        "chip_e96": found.chip_e96,
-    }
 
 
 def _choice(contest: Contest | None) -> Json | None:
@@ -141,6 +135,7 @@ def _choice(contest: Contest | None) -> Json | None:
     return {
         "sets": contest.sets,
         "decided_by": "swing" if contest.by_swing else "margin_share",
+        "proved": contest.proved,
         "contenders": [_contender(each, contest.names) for each in contest.contenders],
         "nearest": None if nearest is None else _contender(nearest, contest.names),
     }
@@ -163,7 +158,8 @@ def corners_json(design: Design, corners: Corners, words: Iterable[str]) -> Json
     return _finite(
         {
             **_origin(design.stage),
-            "parts": _parts(design, {}),
+            "parts": parts_json(design, {}),
+            "capacitors": capacitors_json(design),
             "corners": _ranges(corners, words),
             "count": corners.count,
             "regions": _regions(corners.regions),
@@ -180,11 +176,62 @@ def spread_json(design: Design, boards: Boards) -> Json:
             "seed": boards.seed,
             "boards": boards.boards,
             "boards_per_batch": boards.boards_per_batch,
-            "parts": _parts(design, {}),
+            "parts": parts_json(design, {}),
+            "capacitors": capacitors_json(design),
             "spread": _spread(boards),
             "warnings": list(design.warnings),
         }
     )
+
+
+def drift_json(study: DriftStudy) -> Json:
+    """A stage over ambient temperature as plain data: columns of the sweep, what fails where, stability."""
+    slopes = ("slope", "relative_slope", "mean_slope", "relative_mean_slope")
+    return _finite(
+        {
+            **_origin(study.design.stage),
+            "parts": parts_json(study.design, {}),
+            "capacitors": capacitors_json(study.design),
+            "temperatures": study.temperatures.tolist(),
+            "nominal_ambient": study.nominal_ambient,
+            "drift": {
+                name: {
+                    **{line: getattr(found, line).tolist() for line in ("nominal", "low", "high")},
+                    **{slope: getattr(found, slope) for slope in slopes},
+                }
+                for name, found in study.drifts.items()
+            },
+            "regions": {
+                "nominal": [REGION_WORDS[region] for region in study.regions],
+                "corners": [_regions(found.regions) for found in study.corners],
+            },
+            "start": study.start,
+            "limits": [_limit_drift(each) for each in study.limits],
+            "not_made": [{"check": each.check, "missing": each.missing} for each in study.standing.not_made],
+            "stability": {
+                "beta": study.stability.beta,
+                "region": REGION_WORDS[study.stability.region],
+                "changes": {
+                    change.name: {**asdict(change), "region": REGION_WORDS[change.region]}
+                    for change in study.stability.changes
+                },
+            },
+            "warnings": list(study.design.warnings),
+        }
+    )
+
+
+def _limit_drift(each: LimitDrift) -> Json:
+    limit = each.limit
+    return {
+        "id": limit.id or None,
+        "quantity": limit.quantity,
+        "limit": limit.limit,
+        "side": limit.side,
+        "standing": limit.standing,
+        "colder": asdict(each.colder),
+        "hotter": asdict(each.hotter),
+    }
 
 
 def _origin(stage: Stage) -> Json:
@@ -193,38 +240,6 @@ def _origin(stage: Stage) -> Json:
         "stage": {name: getattr(stage, name) for name in head},
         "files": [{"path": file.path, "sha256": file.sha256} for file in stage.files],
         "biasband": VERSION,
-    }
-
-
-def _parts(design: Design, worst: Mapping[str, float]) -> Json:
-    """Every part; `worst` holds the highest value of each quantity, where that is known."""
-    powers = {part.name: worst[power] for part in design.parts if (power := _power(part.name)) in worst}
-    lines = {name: line for line in parts_list(design, powers) for name in line.references}
-    return {
-        part.name: _part(part, design.stage.resistor(part.name), lines[part.name], powers.get(part.name))
-        for part in design.parts
-    }
-
-
-def _power(name: str) -> str:
-    return f"resistor_power.{name}"
-
-
-def _part(part: PartChoice, resistor: Resistor, line: PartLine, power: float | None) -> Json:
-    return {
-        "hand": None if part.hand is None else part.hand.ohms,
-        "ideal": None if part.ideal is None else part.ideal.ohms,
-        "value": part.value,
-        "chosen": part.chosen,
-        "kept": resistor.kept,
-        "series": resistor.series if part.chosen else None,
-        "tolerance": resistor.tolerance,
-        "tempco": resistor.tempco,
-        "code": code(part.value),
-        "markings": _markings(line.markings),
-        "stock": None if line.item is None else asdict(line.item),
-        "power_worst": power,
-        "power_rating": resistor.power_rating,
     }
 
 

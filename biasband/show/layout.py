@@ -13,6 +13,7 @@ from dataclasses import replace
 from rich.cells import cell_len, chop_cells
 from rich.text import Text
 
+from biasband.show.pictures import pictured
 from biasband.show.spelling import Spelling
 from biasband.show.table import Column, Passage, Report, Row, Table, Tone
 
@@ -39,6 +40,9 @@ def _lines(block: Table | Passage, width: int, spelling: Spelling) -> list[Text]
     if isinstance(block, Passage):
         return list(_passage(block, width, spelling))
     table = _spelled(block, spelling)
+    if table.picture is not None:
+        room = width - _total(_widths(table, list(range(len(table.columns))))) - len(_GAP)
+        table = pictured(table, room, spelling)
     rule = spelling("─")
     return list(_flowing(table, width, rule) if table.flows else _table(table, width, rule))
 

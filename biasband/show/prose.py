@@ -3,9 +3,11 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Mapping
 
 from biasband.circuit.topology import EMITTER_PARTS, Node
 from biasband.constants import VERSION
+from biasband.coupling import BYPASS, INPUT, OUTPUT
 from biasband.margins.records import Margin
 from biasband.quantity import Kind
 from biasband.show.table import figure, whole_percent, yield_percent
@@ -41,6 +43,7 @@ _KINDS = {
     RIPPLE: Kind.VOLTAGE,
     NEGATIVE: Kind.VOLTAGE,
     TEMPERATURE: Kind.TEMPERATURE,
+    **dict.fromkeys((INPUT, OUTPUT, BYPASS), Kind.CAPACITANCE),
 }
 
 
@@ -71,15 +74,23 @@ def places(extreme: Extreme) -> str:
     return ", ".join(place(name, extreme) for name in reversed(tuple(extreme.coordinates)))
 
 
+def main_places(extreme: Extreme, causes: Mapping[str, float], *, most: int = MOST_NAMED) -> str:
+    """Where the contributors stand that matter at an extreme, the main one first; empty where none does."""
+    return ", ".join(place(name, extreme) for name in _main_causes(causes)[:most])
+
+
+def _main_causes(causes: Mapping[str, float]) -> list[str]:
+    return [name for name, share in causes.items() if share > MATTERS]
+
+
 def worst(row: Margin) -> str:
     """Where a row's worst corner is and what causes it, the main contributors only."""
     if math.isnan(row.worst.value):
         return "worst: no corner has a value here"
-    named = [name for name, share in row.causes.items() if share > MATTERS][:MOST_NAMED]
+    named = _main_causes(row.causes)
     if not named:
         return "worst: as nominal, nothing that varies moves it towards this limit"
-    where = ", ".join(place(name, row.worst) for name in named)
-    return f"worst: {where}; {_main(named[0], row.causes[named[0]])}"
+    return f"worst: {main_places(row.worst, row.causes)}; {_main(named[0], row.causes[named[0]])}"
 
 
 def _main(name: str, share: float) -> str:

@@ -6,16 +6,23 @@ from collections.abc import Mapping, Sequence
 
 from biasband.circuit.quantities import Quantity
 from biasband.constants import VERSION
-from biasband.parts.derating import PROFILES
+from biasband.parts.derating import in_words
 from biasband.show.analysis_tables import corners_table, design_table, spread_tables
+from biasband.show.capacitor_tables import capacitor_parts, capacitor_values
 from biasband.show.cautions import CAUTIONS
 from biasband.show.choice_table import choice_table
+from biasband.show.drift_tables import drift_table, failure_table, first_to_fail, swept
+from biasband.show.parts_table import parts_table
 from biasband.show.prose import frozen_or_chosen, head, joint_yield, rss_assumption, sampled
-from biasband.show.review_tables import margin_table, nominal_table, parts_table, summary_table
+from biasband.show.regions import region_sentences
+from biasband.show.review_tables import margin_table, nominal_table, summary_table
 from biasband.show.snap_tables import offer_table, snap_tables
+from biasband.show.stability_table import stability_table
 from biasband.show.summary import Attempt
 from biasband.show.surroundings import surroundings
 from biasband.show.table import OUTCOME_TONES, Passage, Report
+from biasband.signoff.drifting import DriftStudy
+from biasband.signoff.parts_list import parts_list
 from biasband.signoff.snapping import SnapStudy
 from biasband.signoff.study import Review
 from biasband.values.choosing import Design
@@ -28,11 +35,13 @@ _CAUTIONS = Passage("Cautions", CAUTIONS)
 def review_report(review: Review) -> Report:
     """A review as a reviewer reads it, top to bottom, in a minute."""
     return (
-        _header(review.design, sampled(review.evidence.boards), PROFILES[review.stage.derating].sentence),
+        _header(review.design, sampled(review.evidence.boards), in_words(review.stage.derating)),
         Passage("Held against", surroundings(review.stage, review.nominal)),
-        parts_table(review),
+        parts_table(review.parts_list, review.design),
+        *capacitor_parts(review.design),
         *_compared(review.design),
         nominal_table(review),
+        Passage("", region_sentences(review)),
         margin_table(review),
         *_statistics(review),
         *_warnings(review.warnings),
@@ -52,6 +61,8 @@ def design_report(design: Design) -> Report:
     return (
         _header(design, program),
         design_table(design),
+        *capacitor_values(design),
+        parts_table(parts_list(design, {}), design),
         *_compared(design),
         *_warnings(design.warnings),
         _CAUTIONS,
@@ -79,6 +90,20 @@ def spread_report(design: Design, boards: Boards, words: Mapping[str, Quantity])
         _header(design, sampled(boards)),
         *spread_tables(boards, words),
         *_warnings(design.warnings),
+        _CAUTIONS,
+    )
+
+
+def drift_report(study: DriftStudy) -> Report:
+    """A stage over ambient temperature."""
+    return (
+        _header(study.design, f"biasband {VERSION}"),
+        swept(study),
+        *(drift_table(study, name) for name in study.drifts),
+        failure_table(study),
+        stability_table(study.stability),
+        *_warnings(study.design.warnings),
+        first_to_fail(study),
         _CAUTIONS,
     )
 

@@ -1,15 +1,14 @@
-"""The tables of a review: parts, nominal point, margins; and one line per stage of several."""
+"""The tables of a review: nominal point, margins; and one line per stage of several."""
 
 from __future__ import annotations
 
 import math
 from collections.abc import Iterator, Sequence
 
-from biasband.circuit.quantities import Quantity
+from biasband.circuit.quantities import Quantity, judged_swing
 from biasband.margins.records import Margin
 from biasband.quantity import Kind
 from biasband.show.prose import worst
-from biasband.show.snap_tables import marks
 from biasband.show.summary import Attempt
 from biasband.show.table import (
     NOT_KNOWN,
@@ -19,30 +18,14 @@ from biasband.show.table import (
     Row,
     Table,
     Tone,
-    code,
     computed,
     difference,
     figure,
-    percent,
     whole_percent,
     yield_percent,
 )
-from biasband.signoff.parts_list import PartLine
 from biasband.signoff.study import Review
-from biasband.stage import StockItem
-from biasband.values.ideal import Step
-
-PARTS_COLUMNS = (
-    Column("part", "left"),
-    Column("value"),
-    Column("code", "left"),
-    Column("series", "left", spare=1),
-    Column("tol."),
-    Column("tempco", spare=2),
-    Column("ideal"),
-    Column("worst power"),
-    Column("rating"),
-)
+from biasband.stage import Stage
 
 MARGIN_COLUMNS = (
     Column("limit on", "left"),
@@ -70,57 +53,22 @@ STANDING_NOTE = (
 _SIGNS = {"at_least": "≥", "at_most": "≤"}
 
 
-def parts_table(review: Review) -> Table:
-    """Which resistors to buy, where each value comes from, how it is marked and how warm it gets."""
-    ideal = {part.name: part.ideal for part in review.design.parts}
-    rows = [_part_row(line, [ideal[name] for name in line.references]) for line in review.parts_list]
-    return Table("Parts to buy", PARTS_COLUMNS, tuple(rows))
-
-
-def _part_row(line: PartLine, ideals: Sequence[Step | None]) -> Row:
-    power, rating = line.power_worst, line.power_rating
-    return Row(
-        (
-            ", ".join(line.references),
-            figure(line.value, Kind.RESISTANCE, digits=6),
-            code(line.value),
-            line.series or "",
-            "not stated" if line.tolerance is None else percent(line.tolerance, digits=4),
-            figure(line.tempco, Kind.RELATIVE_SLOPE) if line.tempco else "0 ppm/K",
-            ", ".join("given" if each is None else computed(each.ohms, Kind.RESISTANCE) for each in ideals),
-            NOT_KNOWN if power is None else computed(power, Kind.POWER),
-            "not stated" if rating is None else figure(rating, Kind.POWER),
-        ),
-        (*marks(line.markings), *_in_stock(line.item)),
-    )
-
-
-def _in_stock(item: StockItem | None) -> Iterator[str]:
-    """What the stock list says of the part to take."""
-    if item is None:
-        return
-    known = (
-        "" if item.tolerance is None else f"±{percent(item.tolerance, digits=4)}",
-        "" if item.quantity is None else f"{item.quantity} pieces",
-        "" if item.price is None else f"{item.price:g} each",
-        item.location,
-    )
-    yield f"in stock: {', '.join(filter(None, known)) or 'yes'}"
-
-
 def nominal_table(review: Review) -> Table:
     """Every quantity at the nominal point."""
     rows = [
-        _nominal_row(name, review.nominal.values[name], quantity)
+        _nominal_row(review.stage, name, review.nominal.values[name], quantity)
         for name, quantity in review.quantities.items()
     ]
     title = f"Nominal point: {REGION_WORDS[review.nominal.region]}"
     return Table(title, (Column("quantity", "left"), Column("value")), tuple(rows), flows=True)
 
 
-def _nominal_row(name: str, value: float, quantity: Quantity) -> Row:
-    inverting = quantity.by_magnitude and value < 0.0
-    return Row((f"{name} (inverting)" if inverting else name, computed(value, quantity.kind)))
+def _nominal_row(stage: Stage, name: str, value: float, quantity: Quantity) -> Row:
+    swing = judged_swing(stage)
+    more = "(inverting)" if quantity.by_magnitude and value < 0.0 else ""
+    if name == "distortion":
+        more = "(clipping)" if swing is None else f"({figure(swing, Kind.VOLTAGE)})"
+    return Row((f"{name} {more}".strip(), computed(value, quantity.kind)))
 
 
 def margin_table(review: Review) -> Table:

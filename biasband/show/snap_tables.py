@@ -18,7 +18,7 @@ SNAP_COLUMNS = (
     Column("off", spare=1),
     Column("above"),
     Column("off", spare=1),
-    Column("nearest"),
+    Column("nearest", toned=True),
     Column("off"),
     Column("code", "left"),
 )
@@ -66,16 +66,28 @@ def _snap_row(row: Snapped) -> Row:
 
 
 def marks(found: Markings) -> Iterator[str]:
-    """How a part is marked, in a line: letter code, bands in words, chip marks, as far as they exist."""
+    """How a part is marked: letter code, bands in words, chip marks, as far as they exist.
+
+    Where a tolerance is stated and there are no bands, why; no line where there is nothing to say.
+    """
     bands = found.six_bands if found.six_bands.colours is not None else found.bands
     known = (found.letter_code, None if bands.colours is None else bands.text, chip_marks(found))
-    yield f"marked {', '.join(text for text in known if text)}"
+    marked = ", ".join(text for text in known if text)
+    if marked:
+        yield f"marked {marked}"
+    if found.bands.colours is None and found.bands.figures:
+        yield f"no colour bands at {found.bands.figures}: {found.bands.reason}"
 
 
 def chip_marks(found: Markings) -> str:
     """The chip marks that exist: "chip 472, 4701"."""
-    chips = [mark for mark in (found.chip_three, found.chip_four, found.chip_e96) if mark is not None]
-    return f"chip {', '.join(dict.fromkeys(chips))}" if chips else ""
+    return f"chip {', '.join(chips(found))}" if chips(found) else ""
+
+
+def chips(found: Markings) -> tuple[str, ...]:
+    """The chip marks that exist, each once."""
+    marks = (found.chip_three, found.chip_four, found.chip_e96)
+    return tuple(dict.fromkeys(mark for mark in marks if mark is not None))
 
 
 def _pairs_of(row: Snapped) -> Table:
@@ -94,18 +106,21 @@ def pairs_table(title: str, pairs: Sequence[Pair], against: Sequence[str]) -> Ta
 
 
 def _pair_row(pair: Pair) -> Row:
-    tolerance = max(-pair.tolerance_low, pair.tolerance_high)
     return Row(
         (
             f"{_ohms(pair.first)} {_SIGNS[pair.connection]} {_ohms(pair.second)}",
             figure(pair.total, Kind.RESISTANCE, digits=5),
             percent(pair.error),
-            percent(tolerance),
-            percent(max(-pair.rss_low, pair.rss_high)),
-            figure(pair.tempco, Kind.RELATIVE_SLOPE) if pair.tempco else "0 ppm/K",
+            _stated(max(-pair.tolerance_low, pair.tolerance_high), Kind.RATIO),
+            _stated(max(-pair.rss_low, pair.rss_high), Kind.RATIO),
+            _stated(pair.tempco, Kind.RELATIVE_SLOPE, digits=4),
             percent(max(pair.first_share, pair.second_share)),
         )
     )
+
+
+def _stated(value: float, kind: Kind, *, digits: int = 2) -> str:
+    return "not stated" if math.isnan(value) else figure(value, kind, digits=digits)
 
 
 def _ohms(ohms: float) -> str:

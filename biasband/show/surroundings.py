@@ -50,6 +50,9 @@ def _transistor(transistor: AnyTransistor) -> Iterator[str]:
     at_current = f"both at {figure(transistor.test_current, Kind.CURRENT)} and 25 °C"
     slope = "by the band-gap law" if drift is None else figure(drift, Kind.VOLTAGE_SLOPE)
     yield f"{at_current}, V_BE drifting {slope}, h_FE {figure(transistor.gain_drift, Kind.RELATIVE_SLOPE)}"
+    if transistor.gain_curve is not None:
+        low, high = (figure(current, Kind.CURRENT) for current in transistor.gain_curve.ends)
+        yield f"h_FE following the gain curve from {low} to {high}"
     yield f"I_CBO up to {figure(transistor.leakage, Kind.CURRENT)} at 25 °C"
 
 
@@ -82,6 +85,8 @@ def _signal(signal: Signal, bypassed_to: str) -> Iterator[str]:
     yield f"source {figure(signal.source_resistance, Kind.RESISTANCE)}"
     yield "no load" if signal.load is None else f"load {figure(signal.load, Kind.RESISTANCE)}"
     yield f"emitter bypassed to {bypassed_to}" if signal.bypassed else "emitter resistor not bypassed"
+    if signal.lowest_frequency is not None:
+        yield f"down to {figure(signal.lowest_frequency, Kind.FREQUENCY)}"
 
 
 def _drawn(stage: Stage) -> Iterator[str]:

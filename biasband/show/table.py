@@ -55,14 +55,44 @@ class Row:
 
 
 @dataclass(frozen=True)
+class Strip:
+    """What a picture shows beside one row: a band and the nominal value on it [SI]; NaN is not drawn."""
+
+    low: float
+    nominal: float
+    high: float
+
+
+@dataclass(frozen=True)
+class Bound:
+    """A limit [SI] that a picture shows; `lower` says that the band may not go below it."""
+
+    value: float
+    lower: bool
+
+
+@dataclass(frozen=True)
+class Picture:
+    """A picture of a table's rows on one axis: a strip for each, and the limits."""
+
+    kind: Kind
+    strips: tuple[Strip, ...]
+    bounds: tuple[Bound, ...] = ()
+
+
+@dataclass(frozen=True)
 class Table:
-    """A table with its title and notes; `flows` says that rows may be set in several blocks."""
+    """A table with its title and notes; `flows` says that rows may be set in several blocks.
+
+    A `picture` stands beside the rows where an output has the room.
+    """
 
     title: str
     columns: tuple[Column, ...]
     rows: tuple[Row, ...]
     notes: tuple[str, ...] = ()
     flows: bool = False
+    picture: Picture | None = None
 
 
 @dataclass(frozen=True)

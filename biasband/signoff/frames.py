@@ -12,6 +12,9 @@ from biasband.variation.sampling import QUANTILES, Spread
 if TYPE_CHECKING:
     import pandas as pd
 
+    from biasband.circuit.scenarios import Array
+    from biasband.signoff.drifting import Drift
+
 
 def margin_frame(rows: Sequence[Margin]) -> pd.DataFrame:
     """The margin table: a row per limit, in the order given."""
@@ -58,3 +61,15 @@ def spread_frame(spread: Mapping[str, Spread]) -> pd.DataFrame:
         for place, sample in ((place, getattr(found, place)) for place in places)
     }
     return pd.DataFrame.from_dict(rows, orient="index").rename_axis(["quantity", "place"])
+
+
+def drift_frame(temperatures: Array, drifts: Mapping[str, Drift]) -> pd.DataFrame:
+    """The drift table: a row per quantity and ambient temperature [K], nominal and worst case [SI]."""
+    import pandas as pd
+
+    columns = ("nominal", "low", "high")
+    frames = {
+        name: pd.DataFrame({column: getattr(found, column) for column in columns}, index=temperatures)
+        for name, found in drifts.items()
+    }
+    return pd.concat(frames, names=["quantity", "temperature"])

@@ -14,7 +14,7 @@ from biasband.constants import BOARDS, MOST_BOARDS
 from biasband.errors import UsageError
 from biasband.files.series_files import load_series
 from biasband.margins.checks import Standing
-from biasband.margins.holding import Nominal, hold, words
+from biasband.margins.holding import Nominal, hold, looked_into, words
 from biasband.margins.records import Evidence, Margin
 from biasband.margins.requirements import joint_yield
 from biasband.margins.verdict import Verdict, judge
@@ -62,8 +62,13 @@ class Review:
         return words(self.stage)
 
     @property
+    def looked_into(self) -> Mapping[str, Quantity]:
+        """The part of the vocabulary that was followed beyond the nominal point: costly only if required."""
+        return looked_into(self.stage)
+
+    @property
     def spread(self) -> Mapping[str, sampling.Spread]:
-        """The sampled spread of every quantity."""
+        """The sampled spread of every quantity looked into."""
         return self.evidence.boards.spread
 
     @property
@@ -135,7 +140,7 @@ def corners(stage: Stage, *, progress: Progress = silent) -> CornerStudy:
     """
     chosen = design(stage, progress=lambda done: progress(CHOOSING * done))
     stage = chosen.stage
-    return CornerStudy(chosen, cornering.corners(stage, words(stage), cut_off=cut_off_current(stage)))
+    return CornerStudy(chosen, cornering.corners(stage, looked_into(stage), cut_off=cut_off_current(stage)))
 
 
 def spread(stage: Stage, *, boards: int = BOARDS, seed: int = 1, progress: Progress = silent) -> SpreadStudy:
@@ -148,7 +153,7 @@ def spread(stage: Stage, *, boards: int = BOARDS, seed: int = 1, progress: Progr
     check_sampling(boards, seed)
     chosen = design(stage, progress=lambda done: progress(CHOOSING * done))
     stage, points, cut_off = chosen.stage, points_of_use(chosen.stage), cut_off_current(chosen.stage)
-    drawn = sampling.sample(stage, words(stage), points, boards=boards, seed=seed, cut_off=cut_off)
+    drawn = sampling.sample(stage, looked_into(stage), points, boards=boards, seed=seed, cut_off=cut_off)
     return SpreadStudy(chosen, drawn)
 
 
@@ -175,7 +180,7 @@ def review(stage: Stage, *, boards: int = BOARDS, seed: int = 1, progress: Progr
     check_sampling(boards, seed)
     chosen = design(stage, progress=lambda done: progress(CHOOSING * done))
     stage = chosen.stage
-    held = hold(stage, words(stage), boards=boards, seed=seed)
+    held = hold(stage, looked_into(stage), boards=boards, seed=seed)
     return Review(
         stage=stage,
         design=chosen,

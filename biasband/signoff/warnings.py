@@ -4,11 +4,15 @@ from __future__ import annotations
 
 from collections.abc import Iterator, Mapping
 
+from biasband.circuit.most_swing import most_swing
 from biasband.circuit.operating_point import Region
+from biasband.circuit.reading import read
 from biasband.constants import ASSUMED_SATURATION_VOLTAGE
 from biasband.margins.records import Evidence
+from biasband.quantity import Kind, format_quantity
 from biasband.stage import Stage, Transistor
 from biasband.values.choosing import Design
+from biasband.variation.contributors import NEGATIVE, SUPPLY, realise
 
 DECADE = 10.0
 """Nominal currents this many times above or below the test current are far from it (common practice)."""
@@ -28,6 +32,8 @@ def warnings_of(design: Design, nominal: Mapping[str, float], evidence: Evidence
         *_outside(evidence),
         *_assumed(stage),
         *_far_from_test(stage, nominal),
+        *_beyond_curve(stage, nominal, evidence),
+        *_too_much_swing(stage),
         *_lonely(stage),
         *_dangers(stage),
     )
@@ -62,9 +68,9 @@ def _assumed(stage: Stage) -> Iterator[str]:
 
 
 def _far_from_test(stage: Stage, nominal: Mapping[str, float]) -> Iterator[str]:
-    """h_FE limits hold only at the test current."""
+    """h_FE limits hold only at the test current, unless a gain curve says what becomes of them."""
     transistor, current = stage.transistor, nominal["collector_current"]
-    if not isinstance(transistor, Transistor) or not current > 0.0:
+    if not isinstance(transistor, Transistor) or transistor.gain_curve is not None or not current > 0.0:
         return
     ratio = current / transistor.test_current
     if not 1.0 / DECADE < ratio < DECADE:
@@ -72,6 +78,42 @@ def _far_from_test(stage: Stage, nominal: Mapping[str, float]) -> Iterator[str]:
             f"the stage runs at {ratio:.3g} times the test current: "
             "the limits of h_FE and V_BE hold at the test current only"
         )
+
+
+def _too_much_swing(stage: Stage) -> Iterator[str]:
+    """A swing that these resistors cannot give however they are biased, and the most that they can."""
+    lowest = dict.fromkeys((SUPPLY, NEGATIVE), -1.0)
+    if stage.negative_supply is not None:
+        lowest[NEGATIVE] = 1.0  # the one nearer to ground
+    most = float(most_swing(read(stage, realise(stage, lowest)))[0])
+    for requirement in stage.requirements:
+        wanted = requirement.at_least
+        if requirement.quantity == "symmetric_peak_swing" and wanted is not None and wanted > most:
+            asked, there = (format_quantity(volts, Kind.VOLTAGE, digits=3) for volts in (wanted, most))
+            yield (
+                f"{requirement.id}: no bias gives {asked} of swing with these resistors, load and the lowest "
+                f"supply: {there} at most, where cut-off and saturation are equally far"
+            )
+
+
+def _beyond_curve(stage: Stage, nominal: Mapping[str, float], evidence: Evidence) -> Iterator[str]:
+    """Where the gain curve says nothing, h_FE is held, which is a guess."""
+    transistor = stage.transistor
+    if not isinstance(transistor, Transistor) or transistor.gain_curve is None:
+        return
+    low, high = transistor.gain_curve.ends
+    curve = f"beyond the gain curve ({_amperes(low)} to {_amperes(high)}), where h_FE is held"
+    if not low <= transistor.test_current <= high:
+        yield f"the test current, {_amperes(transistor.test_current)}, is {curve}"
+    current, range_ = nominal["collector_current"], evidence.corners.ranges["collector_current"]
+    if current < low or current > high:
+        yield f"the stage runs at {_amperes(current)}, {curve}"
+    elif range_.low.value < low or range_.high.value > high:
+        yield f"some corners run at {_amperes(range_.low.value)} to {_amperes(range_.high.value)}, {curve}"
+
+
+def _amperes(current: float) -> str:
+    return format_quantity(current, Kind.CURRENT, digits=3)
 
 
 def _lonely(stage: Stage) -> Iterator[str]:

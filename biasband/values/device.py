@@ -7,9 +7,10 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from biasband.circuit.gain_curve import GainScaling
 from biasband.circuit.junction import Laws, Sheet, laws, sheet
 from biasband.constants import HAND_BASE_EMITTER_VOLTAGE, HOTTEST_JUNCTION
-from biasband.stage import IdealTransistor, Stage, Transistor
+from biasband.stage import AnyTransistor, IdealTransistor, Stage, Transistor
 
 _PASSES = 60
 _SETTLED = 1e-12
@@ -35,9 +36,18 @@ Device = Callable[[float, float], Need]
 
 def hand(stage: Stage) -> Device:
     """The transistor of a hand calculation: V_BE = 0.7 V, I_B = I_C/h_FE, I_E = I_C (common practice)."""
-    gain, ideal = stage.transistor.gain.nominal, isinstance(stage.transistor, IdealTransistor)
+    ideal = isinstance(stage.transistor, IdealTransistor)
     V_BE = stage.transistor.base_emitter_voltage.nominal if ideal else HAND_BASE_EMITTER_VOLTAGE
-    return lambda I_C, V_CE: Need(V_BE, I_C / gain, I_C, I_C, stiff=True)
+    return lambda I_C, V_CE: Need(V_BE, I_C / _read_gain(stage.transistor, I_C), I_C, I_C, stiff=True)
+
+
+def _read_gain(transistor: AnyTransistor, I_C: float) -> float:
+    """h_FE as one reads it off the data sheet: the typical one, along the gain curve where there is one."""
+    gain = transistor.gain.nominal
+    if isinstance(transistor, IdealTransistor) or transistor.gain_curve is None:
+        return gain
+    scaling = GainScaling.of(transistor.gain_curve, test_current=transistor.test_current)
+    return gain * float(scaling.at(I_C).factor)
 
 
 def refined(stage: Stage) -> Device:
@@ -81,4 +91,5 @@ def _inverted(law: Laws, I_C: float, V_CE: float, V_BE: float) -> tuple[float, f
     reverse = I_S * float(np.exp(V_BC / V_T))
     back = (reverse - I_S) * law.inverse_reverse_gain
     forward = (I_C + back) / (1.0 - V_BC * law.inverse_early) + reverse
-    return V_T * float(np.log(forward / I_S)), (forward - I_S) / float(law.forward_gain) + back
+    gain = float(law.forward_gain) * float(law.scaled(forward, V_BC).factor)
+    return V_T * float(np.log(forward / I_S)), (forward - I_S) / gain + back

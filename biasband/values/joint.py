@@ -36,6 +36,10 @@ NEAR = 0.10
 FINALIST_BOARDS = 2**13
 """Boards sampled for each finalist where they can show the yield asked for; else as many as usual."""
 
+MOST_HELD = 12
+"""Sets held against everything at most. Healthy stages need a handful; one that saturates or runs away
+at many corners, where the worst lies inside the box, could need them all."""
+
 _BATCH = 32
 """Sets that are held at every corner in one go."""
 
@@ -73,7 +77,8 @@ class Contest:
 
     `nearest` is the set that nearness alone gives, among the contenders or behind them; None where the
     stock list has too few pieces for it. `sets` is how many were compared; `by_swing` says that it was
-    by their swing, the stage having no requirements.
+    by their swing, the stage having no requirements. `proved` is False where the search was given up,
+    so that a better set is not ruled out.
     """
 
     names: tuple[str, ...]
@@ -81,6 +86,7 @@ class Contest:
     nearest: Contender | None
     sets: int
     by_swing: bool
+    proved: bool = True
 
 
 def silent(done: float) -> None:
@@ -106,6 +112,7 @@ def contest(
         nearest=None if nearest is None else search.exact[nearest],
         sets=len(values),
         by_swing=search.rule.by_swing,
+        proved=search.proved,
     )
 
 
@@ -152,6 +159,7 @@ class _Search:
         self.scores = hold_sets(bench, values, self.pool, progress=progress)
         self.held_everywhere = np.zeros(len(values), dtype=bool)
         self.exact: dict[int, Contender] = {}
+        self.proved = True
 
     def finalists(self, *, beside: Sequence[int] = ()) -> list[int]:
         """The best sets, the best first, all held against everything, as are those `beside` them."""
@@ -164,6 +172,9 @@ class _Search:
             bounded = [int(row) for row in leading if row not in self.exact]
             if not bounded:
                 return [int(row) for row in leading]
+            if len(self.exact) >= MOST_HELD:
+                self.proved = False
+                return sorted(self.exact, key=lambda row: self.rule.corner_key(self.exact[row]))[:FINALISTS]
             self.hold_exactly([*bounded, *beside])
 
     def hold_exactly(self, rows: Sequence[int]) -> None:

@@ -6,9 +6,12 @@ from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
 
 from biasband.errors import UsageError
-from biasband.parts.pairs import Pair, against, pairs, pairs_among
-from biasband.parts.series import Series, nearest, nearest_among
-from biasband.parts.stock import demand_of, values_in_stock
+from biasband.parts.drawer import Drawer, Stated
+from biasband.parts.pair_reasons import against
+from biasband.parts.pairs import Pair
+from biasband.parts.series import Series
+from biasband.parts.stock import demand_of
+from biasband.quantity import Kind, format_quantity
 from biasband.stage import Resistor, Stage
 from biasband.values.ideal import Step
 
@@ -18,38 +21,47 @@ OFFERED = 3
 
 @dataclass(frozen=True)
 class Offer:
-    """Pairs that come near the wanted value [Ω] of a resistor, the best first, and what speaks against it."""
+    """Pairs that come near the wanted value [Ω] of a resistor, the best first, and what speaks against it.
+
+    Where there are none, `against` says why.
+    """
 
     name: str
     wanted: float
     pairs: tuple[Pair, ...]
     against: tuple[str, ...]
 
+    @property
+    def warning(self) -> str:
+        """That there are no pairs, and why; empty where there are."""
+        if self.pairs:
+            return ""
+        wanted = format_quantity(self.wanted, Kind.RESISTANCE)
+        return f"{self.name}: no pairs to offer for {wanted}: {'; '.join(self.against)}"
+
 
 def offers(stage: Stage, steps: Mapping[str, Step], series: Mapping[str, Series]) -> Iterator[Offer]:
     """An offer for every resistor that asks for pairs: near its value, or its ideal one where it is free.
 
-    A value that no pair of what there is comes near has no offer.
+    A value that no pair of what there is comes near has one without pairs.
     """
     for resistor in stage.resistors:
         wanted = resistor.value or (steps[resistor.name].ohms if resistor.name in steps else None)
         if resistor.pairs and wanted is not None:
-            yield from _offer(stage, resistor, wanted, series[resistor.series])
+            yield _offer(resistor, wanted, _drawer(stage, resistor, series[resistor.series]))
 
 
-def _offer(stage: Stage, resistor: Resistor, wanted: float, series: Series) -> Iterator[Offer]:
-    stock = None if stage.stock is None else values_in_stock(stage.stock, demand_of(resistor))
+def _drawer(stage: Stage, resistor: Resistor, series: Series) -> Drawer:
+    tolerance = resistor.tolerance if resistor.tolerance_stated else None
+    usual = Stated(tolerance=tolerance, tempco=resistor.tempco or None)
+    return Drawer(series=series, usual=usual, stock=stage.stock, demand=demand_of(resistor))
+
+
+def _offer(resistor: Resistor, wanted: float, drawer: Drawer) -> Offer:
     try:
-        if stock is None:
-            single = nearest(series, wanted)
-            found = pairs(
-                series, wanted, tolerance=resistor.tolerance, tempco=resistor.tempco, count=OFFERED
-            )
-        else:
-            single = nearest_among(stock, wanted, name="stock")
-            found = pairs_among(
-                stock, wanted, tolerance=resistor.tolerance, tempco=resistor.tempco, count=OFFERED
-            )
-    except UsageError:  # nothing in reach of a pair
-        return
-    yield Offer(resistor.name, wanted, found, against(found[0], single))
+        found = drawer.pairs(wanted, count=OFFERED)
+    except UsageError as error:  # nothing in reach of a pair
+        return Offer(resistor.name, wanted, (), (f"{drawer.name}: {error}",))
+    if not found:
+        return Offer(resistor.name, wanted, (), (f"{drawer.name} has one piece alone",))
+    return Offer(resistor.name, wanted, found, against(found[0], drawer.nearest(wanted)))

@@ -76,7 +76,9 @@ def _nothing_for(resistor: Resistor, stock: Stock) -> Fault:
         stock.file.path,
         None,
         f"resistors.{resistor.name}",
-        f"none of the {len(stock.items)} parts in stock will do",
+        "the one part in stock will not do"
+        if len(stock.items) == 1
+        else f"none of the {len(stock.items)} parts in stock will do",
         allowed=_wanted(demand_of(resistor)),
         hint="loosen what the stage asks of it, or leave the stock list out",
     )

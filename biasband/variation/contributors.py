@@ -18,7 +18,7 @@ import numpy as np
 from biasband.circuit.scenarios import Array, Scenarios, Values
 from biasband.constants import REFERENCE_TEMPERATURE
 from biasband.errors import UsageError
-from biasband.stage import Limits, Resistor, Stage, Supply
+from biasband.stage import Capacitor, Limits, Resistor, Stage, Supply
 
 GAIN, BASE_EMITTER, LEAKAGE = "gain", "base_emitter_voltage", "leakage"
 SUPPLY, RIPPLE, NEGATIVE, TEMPERATURE = "supply", "ripple", "negative_supply", "temperature"
@@ -28,7 +28,8 @@ Coordinates = Mapping[str, Values]
 
 A resistor's own name moves its tolerance, drift and tempco together towards one limit; the names
 of its draws (`R1.tolerance`, `R1.life_drift`, `R1.tempco`) move them one by one, the tempco with the
-sign of T_a − T0. Beside coordinates, `R1.value` [Ω] may stand in for the value that the stage gives R1, so
+sign of T_a − T0. Likewise a capacitor's own name and its draws (`C_in.tolerance`, `C_in.temperature_change`).
+Beside coordinates, `R1.value` [Ω] may stand in for the value that the stage gives R1, so
 that many sets of values are one evaluation.
 """
 
@@ -53,6 +54,7 @@ def board_axes(stage: Stage) -> tuple[Axis, ...]:
     names = [resistor.name for resistor in stage.resistors if _varies(stage, resistor)]
     names += [group_axis(group) for group in _groups(stage)]
     names += [batch_axis(group) for group in batch_groups(stage)]
+    names += [capacitor.name for capacitor in stage.capacitors if _changes(stage, capacitor)]
     names += [GAIN] if _spans(transistor.gain) else []
     names += [BASE_EMITTER] if _spans(transistor.base_emitter_voltage) else []
     names += [name for name, rail in _supplies(stage) if rail.varies == "by board"]
@@ -107,6 +109,11 @@ def _varies(stage: Stage, resistor: Resistor) -> bool:
     return max(tolerances(resistor).own, resistor.life_drift, own) > 0.0
 
 
+def _changes(stage: Stage, capacitor: Capacitor) -> bool:
+    warmed = _warms(stage) and capacitor.temperature_distance > 0.0
+    return capacitor.tolerance > 0.0 or (warmed and capacitor.temperature_change > 0.0)
+
+
 def _warms(stage: Stage) -> bool:
     """Whether the ambient ever leaves the reference temperature."""
     return stage.ambient.low != REFERENCE_TEMPERATURE or stage.ambient.high != REFERENCE_TEMPERATURE
@@ -144,7 +151,8 @@ def realise(stage: Stage, x: Coordinates) -> Scenarios:
 
     A resistor is `R·(1 + t·x_t)·(1 + d·x_d)·(1 + (own·x_c + common·x_g)·(T_a − T0))`; by its own name,
     `|T_a − T0|`, so that its low limit is R·(1−t)(1−d)(1−c·|ΔT|). In a group drawn by batch, t·x_t is
-    `own·x_t + common·x_b`, x_b the batch mean's. Raises UsageError where a resistor has no value yet.
+    `own·x_t + common·x_b`, x_b the batch mean's. A capacitor is `C·(1 + t·x_t)·(1 + h·x_h·|T_a − T0|/ΔT)`,
+    the quotient 1 at most. Raises UsageError where a part has no value yet.
     """
     transistor = stage.transistor
     temperature = _between(stage.ambient, x.get(TEMPERATURE, 0.0))
@@ -159,6 +167,7 @@ def realise(stage: Stage, x: Coordinates) -> Scenarios:
         ripple=stage.supply.ripple_peak * x.get(RIPPLE, 0.0),
         negative_supply=0.0 if negative is None else _between(negative.voltage, x.get(NEGATIVE, 0.0)),
         temperature=temperature,
+        capacitances={capacitor.name: _capacitance(capacitor, x, rise) for capacitor in stage.capacitors},
     )
 
 
@@ -189,6 +198,17 @@ def _made_off(resistor: Resistor, x: Coordinates, limit: Values) -> Values:
 def _tempco_term(name: str, tempco: float, x: Coordinates, rise: Values) -> Values:
     drawn = x.get(f"{name}.tempco")
     return tempco * (x.get(name, 0.0) * np.abs(rise) if drawn is None else drawn * rise)
+
+
+def _capacitance(capacitor: Capacitor, x: Coordinates, rise: Values) -> Values:
+    """A capacitor [F] after tolerance and temperature; `value` must be chosen by now."""
+    if capacitor.value is None:
+        raise UsageError(f"{capacitor.name} has no value yet: design the stage first")
+    limit, distance = x.get(capacitor.name, 0.0), capacitor.temperature_distance
+    made = 1.0 + capacitor.tolerance * x.get(f"{capacitor.name}.tolerance", limit)
+    way = np.minimum(np.abs(rise) / distance, 1.0) if distance else 0.0
+    warmed = capacitor.temperature_change * x.get(f"{capacitor.name}.temperature_change", limit)
+    return capacitor.value * made * (1.0 + warmed * way)
 
 
 def _between(limits: Limits, x: Values, *, logarithmic: bool = False) -> Values:

@@ -14,7 +14,7 @@ import numpy as np
 
 from biasband.circuit.scenarios import Array
 from biasband.errors import UsageError
-from biasband.stage import Resistor, Stage
+from biasband.stage import Capacitor, Resistor, Stage
 from biasband.variation.contributors import (
     BASE_EMITTER,
     GAIN,
@@ -48,9 +48,10 @@ class Draw:
 
 
 def draws(stage: Stage) -> tuple[Draw, ...]:
-    """Every draw of a stage: a resistor's tolerance, drift and tempco are three separate ones."""
+    """Every draw of a stage: a part's tolerance and what else changes it are separate ones."""
     found = [draw for resistor in stage.resistors for draw in _resistor_draws(resistor)]
     found += _group_draws(stage)
+    found += [draw for capacitor in stage.capacitors for draw in _capacitor_draws(capacitor)]
     shapes, names = _shapes(stage), [axis.name for axis in board_axes(stage)]
     return (*found, *(Draw(name, shapes[name]) for name in names if name in shapes))
 
@@ -65,6 +66,10 @@ def _resistor_draws(resistor: Resistor) -> tuple[Draw, ...]:
         Draw(f"{resistor.name}.life_drift", plain_shape(aged)),
         Draw(f"{resistor.name}.tempco", plain_shape(warmed)),
     )
+
+
+def _capacitor_draws(capacitor: Capacitor) -> tuple[Draw, ...]:
+    return (Draw(f"{capacitor.name}.tolerance"), Draw(f"{capacitor.name}.temperature_change"))
 
 
 def _group_draws(stage: Stage) -> Iterator[Draw]:

@@ -3,10 +3,10 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from itertools import product
 
-from biasband.stage import Stage
+from biasband.stage import Limits, Stage
 from biasband.variation.contributors import NEGATIVE, RIPPLE, SUPPLY, TEMPERATURE, use_axes
 
 
@@ -30,3 +30,8 @@ def points_of_use(stage: Stage) -> tuple[PointOfUse, ...]:
         {name: side for names, side in zip(moves, sides, strict=True) for name in names} for sides in corners
     ]
     return (NOMINAL_USE, *(PointOfUse(coordinates) for coordinates in combined if coordinates))
+
+
+def held_at(stage: Stage, temperature: float) -> Stage:
+    """The stage in an ambient that stands still at a temperature [K], so that all else is what varies."""
+    return replace(stage, ambient=Limits.exactly(temperature))

@@ -77,6 +77,7 @@ def test_vocabulary_holds_the_published_names_and_one_power_per_resistor() -> No
         "supply_current",
         "transistor_power",
         "junction_temperature",
+        "thermal_loop_gain",
         "headroom_up",
         "headroom_down",
         "symmetric_peak_swing",

@@ -8,6 +8,7 @@ junction temperature by a scan and `brentq`.
 
 from __future__ import annotations
 
+import itertools
 from collections.abc import Callable
 from dataclasses import dataclass
 from math import exp, log
@@ -120,13 +121,29 @@ class Junctions:
     leakage: float
     per_early: float
     beta_reverse: float
+    test_current: float
+    points: tuple[tuple[float, float], ...] = ()
+
+    def gain_at(self, current: float) -> float:
+        """β at a current [A] to the collector: by the ratio of the curve's h_FE there and at the test."""
+        return self.beta * self.h_FE(current) / self.h_FE(self.test_current) if self.points else self.beta
+
+    def h_FE(self, current: float) -> float:
+        """The curve's h_FE at a current [A]: a power law between two points, held beyond the ends."""
+        if current <= self.points[0][0]:
+            return self.points[0][1]
+        for (low, gain_low), (high, gain_high) in itertools.pairwise(self.points):
+            if current <= high:
+                return gain_low * (gain_high / gain_low) ** (log(current / low) / log(high / low))
+        return self.points[-1][1]
 
     def currents(self, v_be: float, v_bc: float) -> tuple[float, float]:
         """I_B and I_C [A]."""
         forward, reverse = exp(v_be / self.V_T), exp(v_bc / self.V_T)
         back = self.I_S / self.beta_reverse * (reverse - 1.0)
         I_C = self.I_S * (forward - reverse) * (1.0 - v_bc * self.per_early) - back + self.leakage
-        I_B = self.I_S / self.beta * (forward - 1.0) + back - self.leakage
+        beta = self.gain_at(self.I_S * forward * (1.0 - v_bc * self.per_early))
+        I_B = self.I_S / beta * (forward - 1.0) + back - self.leakage
         return I_B, I_C
 
 
@@ -148,6 +165,8 @@ def junctions(case: Case, T: float) -> Junctions:
         leakage=case.leakage * 2.0 ** ((T - T0) / part.leakage_doubling),
         per_early=per_early,
         beta_reverse=part.reverse_gain,
+        test_current=part.test_current,
+        points=() if part.gain_curve is None else part.gain_curve.points,
     )
 
 

@@ -10,6 +10,7 @@ from hypothesis import strategies as st
 
 from biasband.errors import BadlyWritten, BiasbandError, PhysicallyImpossible
 from biasband.files.stage_file import read_stage
+from biasband.parts.derating import PROFILES
 from biasband.stage import (
     Distribution,
     FileRecord,
@@ -138,7 +139,7 @@ def test_sample_of_the_format_is_read_to_the_stage_it_describes(read, tmp_path):
                 yield_at_least=0.9973,
             ),
         ),
-        derating="half-power",
+        derating=PROFILES["half-power"],
         files=(
             FileRecord(
                 path=str(tmp_path / "stage.toml"),

@@ -83,7 +83,7 @@ def test_transistor_file_is_found_from_another_folder(tmp_path, folder):
 
 
 def test_value_of_an_unknown_resistor_is_refused(stage_path):
-    with pytest.raises(UsageError, match="has no resistor R9; allowed: R1, R2, RC, RE"):
+    with pytest.raises(UsageError, match="has no part R9; allowed: R1, R2, RC, RE"):
         frozen_text(stage_path, {"R9": "1 kΩ"})
 
 

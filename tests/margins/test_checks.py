@@ -10,7 +10,8 @@ from variation.stages import ROOM, ideal, limits, stage, with_resistors
 from biasband.circuit.quantities import vocabulary
 from biasband.margins.checks import check_margins, standing_checks
 from biasband.margins.records import Evidence, Margin
-from biasband.stage import Limits, Signal, Stage, Supply
+from biasband.parts.derating import PROFILES
+from biasband.stage import Derating, Limits, Signal, Stage, Supply
 from biasband.variation.causes import causes
 from biasband.variation.corners import corners
 from biasband.variation.points_of_use import points_of_use
@@ -29,7 +30,7 @@ RATINGS = {
 }
 
 
-def rated(*, without: str = "", derating: str = "full", **more) -> Stage:
+def rated(*, without: str = "", derating: Derating = PROFILES["full"], **more) -> Stage:
     """A divider of a textbook transistor with every rating stated, between −10 and 85 °C."""
     ratings = {name: value for name, value in {**RATINGS, **more}.items() if name != without}
     if without == "saturation_voltage":
@@ -141,7 +142,7 @@ FACTORS = {
 @pytest.mark.parametrize("profile", FACTORS)
 def test_limits_are_the_profile_s_share_of_each_rating(profile):
     power, supply, current, resistor, emitter_base, junction = FACTORS[profile]
-    found = rows(rated(derating=profile))
+    found = rows(rated(derating=PROFILES[profile]))
     assert found["saturation"].limit == pytest.approx(0.3, abs=2e-9)  # above it by what is solved, 1e-9 V
     assert found["cut_off"].limit == 1e-5
     assert found["supply_voltage"].limit == pytest.approx(supply * 36.0, rel=1e-12)
@@ -152,6 +153,15 @@ def test_limits_are_the_profile_s_share_of_each_rating(profile):
     # 0.25 W.
     assert found["transistor_power"].limit == pytest.approx(power * 65.0 / 280.0, rel=1e-12)
     assert found["resistor_power.RC"].limit == pytest.approx(resistor * 0.25 * 70.0 / 85.0, rel=1e-12)
+
+
+def test_limits_are_the_share_of_a_profile_of_one_s_own():
+    own = Derating(name="own", transistor_power=0.7, junction_margin=60.0, junction_ceiling=400.0)
+    found = rows(rated(derating=own))
+    # 70 % of (150 − 85) K / 280 K/W; the lower of 400 K and 150 °C − 60 K; the rest as rated.
+    assert found["transistor_power"].limit == pytest.approx(0.7 * 65.0 / 280.0, rel=1e-12)
+    assert found["junction_temperature"].limit == pytest.approx(363.15, rel=1e-12)
+    assert found["supply_voltage"].limit == pytest.approx(36.0, rel=1e-12)
 
 
 def test_worst_values_by_hand():

@@ -8,11 +8,11 @@ import pytest
 from variation.stages import ideal, stage, with_resistor
 
 from biasband.circuit.operating_point import Region
-from biasband.circuit.quantities import vocabulary
+from biasband.circuit.quantities import LOW_CORNER, vocabulary
 from biasband.margins.checks import Check, NotMade, Standing
 from biasband.margins.requirements import requirement_margins
 from biasband.margins.verdict import Verdict, judge
-from biasband.stage import Limits, Requirement, Stage, Supply
+from biasband.stage import Capacitor, Limits, Requirement, Signal, Stage, Supply
 from margins.evidence import evidence, requirement
 
 WORDS = vocabulary(("RB", "RC"))
@@ -261,3 +261,16 @@ def test_row_without_a_value_does_not_hide_one_that_fails():
     assert found.outcome == "fail"
     assert "R-2" in found.because[0] and "fails by corners" in found.because[0]
     assert any("R-1" in reason for reason in found.because[1:])
+
+
+@pytest.mark.parametrize(
+    ("quantity", "stated_tolerance", "outcome"),
+    [(LOW_CORNER, False, "inconclusive"), (LOW_CORNER, True, "pass"), ("collector_voltage", False, "pass")],
+)
+def test_tolerance_of_a_capacitor_matters_where_a_requirement_needs_it(quantity, stated_tolerance, outcome):
+    coupling = Capacitor(name="C_in", value=1e-6, tolerance_stated=stated_tolerance)
+    of = replace(stated(), signal=Signal(), capacitors=(coupling,))
+    of = replace(of, requirements=(requirement(quantity=quantity, at_least=3.0),))
+    found = judge(of, Region.ACTIVE, (), standing(), evidence(**GOOD))
+    assert found.outcome == outcome
+    assert ("tolerance of C_in" in "".join(found.because)) is (outcome == "inconclusive")

@@ -10,7 +10,8 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from biasband.errors import UsageError
-from biasband.parts.derating import PROFILES, derated_rating
+from biasband.parts.derating import FIGURES, NO_ORIGIN, PROFILES, derated_rating, in_words
+from biasband.stage import Derating
 
 ZERO_CELSIUS = 273.15
 FILM = {"derate_from": 70 + ZERO_CELSIUS, "derate_to": 155 + ZERO_CELSIUS}
@@ -45,25 +46,55 @@ def test_junction_limit_follows_the_data_sheets(name: str, max_celsius: float, l
 
 
 def test_full_profile_says_that_nothing_is_derated() -> None:
-    assert "no derating applied" in PROFILES["full"].sentence
+    assert in_words(PROFILES["full"]) == "Derating profile full: no derating applied."
 
 
 def test_sentence_names_every_figure_and_its_origin() -> None:
-    sentence = PROFILES["stringent"].sentence
-    for said in ("stringent", "50 %", "75 %", "65 %", "110 °C", "40 K", "memory", "standard that applies"):
+    sentence = in_words(PROFILES["stringent"])
+    for said in ("stringent", "50 %", "75 %", "65 %", "110 °C", "40 K", "(memory", "standard that applies"):
         assert said in sentence
-    assert "transistor power" not in PROFILES["half-power"].sentence
+    assert "not derated" not in sentence
 
 
-def test_profiles_are_named_by_their_key_and_state_an_origin() -> None:
+def test_what_a_profile_leaves_alone_is_said() -> None:
+    sentence = in_words(PROFILES["half-power"])
+    assert sentence.endswith("; not derated: transistor power, collector current, junction temperature.")
+    assert "transistor power at most" not in sentence
+    ceiling = in_words(Derating(name="own", junction_ceiling=373.15))
+    assert "junction temperature" not in ceiling
+
+
+def test_each_limit_stands_before_its_own_origin() -> None:
+    own = Derating(
+        name="own",
+        resistor_power=0.6,
+        supply_voltage=0.8,
+        current=0.9,
+        junction_margin=30.0,
+        origins={"resistor_power": "rule 4", "supply_voltage": "memory", "junction_margin": "rule 4"},
+    )
+    assert in_words(own) == (
+        "Derating profile own: resistor power at most 60 % of its limit, "
+        "junction at least 30 K below its limit (rule 4); "
+        "supply at most 80 % of its limit (memory); "
+        "collector current at most 90 % of its limit (origin not stated); "
+        "not derated: transistor power, emitter-base voltage."
+    )
+
+
+def test_profiles_are_named_by_their_key_and_state_an_origin_for_every_figure() -> None:
     for name, profile in PROFILES.items():
         assert profile.name == name
-        assert profile.origin
+        assert NO_ORIGIN not in in_words(profile)
 
 
-def test_this_file_knows_every_factor_of_a_profile() -> None:
-    others = {"name", "origin", "junction_margin", "junction_ceiling"}
-    assert {field.name for field in fields(PROFILES["full"])} == {*FACTORS, *others}
+def test_profile_of_a_stage_that_names_none_is_full() -> None:
+    assert Derating() == PROFILES["full"]
+
+
+def test_this_file_knows_every_figure_of_a_profile() -> None:
+    assert {field.name for field in fields(Derating)} == {*FIGURES, "name", "origins", "file"}
+    assert set(FIGURES) == {*FACTORS, "junction_margin", "junction_ceiling"}
 
 
 def test_rating_falls_linearly_and_never_below_zero() -> None:

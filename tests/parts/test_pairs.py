@@ -21,8 +21,12 @@ from hypothesis import strategies as st
 
 from biasband.errors import UsageError
 from biasband.files.series_files import load_series
-from biasband.parts.pairs import Pair, against, pairs, pairs_among
+from biasband.parts.pair_reasons import against
+from biasband.parts.pairs import Pair, pairs, pairs_among
 from biasband.parts.series import nearest
+
+DRAWER = (1.0, 1.5, 2.2, 3.3, 4.7, 6.8, 10.0, 15.0)
+"""[Ω] Invented."""
 
 ROUNDING = 1e-12
 """Room for a few roundings of a double (each 1.1e-16), divided by shares and tolerances above 1e-3."""
@@ -295,6 +299,26 @@ def test_tolerances_of_two_kinds_are_weighed() -> None:
     assert parallel.tolerance_low == pytest.approx(270 * 98 / 368 / 75 - 1, abs=ROUNDING)
     assert parallel.tolerance_high == pytest.approx(330 * 102 / 432 / 75 - 1, abs=ROUNDING)
     assert (parallel.first_share, parallel.second_share) == (0.25, 0.75)
+
+
+@given(st.lists(st.sampled_from(DRAWER), min_size=1, max_size=6, unique=True), st.data())
+def test_value_that_is_alone_never_stands_with_itself_and_the_rest_is_searched_whole(
+    values: list[float], data: st.DataObject
+) -> None:
+    values = sorted(values)
+    alone = data.draw(st.sets(st.sampled_from(values)))
+    wanted = data.draw(st.floats(values[0] / 2, 2 * values[-1]))
+    every = [
+        (total, first, second)
+        for first in values
+        for second in values
+        if second < first or (second == first and first not in alone)
+        for total in (first + second, first * second / (first + second))
+    ]
+    best = sorted(abs(log(total / wanted)) for total, _, _ in every)[:3]
+    found = pairs_among(values, wanted, tolerance=0.01, count=3, alone=alone)
+    assert [abs(log(pair.total / wanted)) for pair in found] == pytest.approx(best, abs=1e-12)  # roundings
+    assert all(pair.first != pair.second or pair.first not in alone for pair in found)
 
 
 # ---- what speaks against it

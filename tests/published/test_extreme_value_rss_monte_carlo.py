@@ -11,7 +11,7 @@ import pytest
 from variation.stages import ideal, stage
 
 from biasband.circuit.quantities import vocabulary
-from biasband.stage import Limits, Stage, Supply
+from biasband.stage import IdealTransistor, Limits, Resistor, Stage, Supply
 from biasband.variation.corners import corners
 from biasband.variation.points_of_use import points_of_use
 from biasband.variation.rss import rss
@@ -98,3 +98,29 @@ def test_highest_power_lies_inside_the_box():
     assert high.at["gain"] == pytest.approx(58.0, abs=0.5)
     assert low.value - base == pytest.approx(7.7e-3, abs=0.05e-3)
     assert low.at["gain"] == pytest.approx(100.0, rel=1e-9)
+
+
+def test_millman_9_2_collector_current_between_the_limits_of_the_gain():
+    """Millman & Halkias, Integrated Electronics, ex. 9-2: 1.75…2.25 mA over β 36…90, V_BE 0.65 V.
+
+    The book's design (20 V, RC 4 kΩ, RE 1 kΩ, R1 118 kΩ, R2 24.3 kΩ; R_B 20.1 kΩ) held at the corners of
+    the gain must come out at the limits that it was designed for.
+    """
+    transistor = IdealTransistor(
+        gain=Limits(low=36.0, nominal=57.0, high=90.0), base_emitter_voltage=Limits.exactly(0.65)
+    )
+    values = {"R1": 118e3, "R2": 24.3e3, "RC": 4e3, "RE": 1e3}
+    of = Stage(
+        title="published",
+        topology="divider",
+        polarity="npn",
+        supply=Supply(voltage=Limits.exactly(20.0)),
+        transistor=transistor,
+        resistors=tuple(Resistor(name=name, value=ohms) for name, ohms in values.items()),
+    )
+    measures = {"collector_current": vocabulary(tuple(values))["collector_current"]}
+    found = corners(of, measures, cut_off=0.0).ranges["collector_current"]
+    # The book's resistors are rounded to three figures ("about"): 1 %.
+    assert found.low.value == pytest.approx(1.75e-3, rel=0.01)
+    assert found.high.value == pytest.approx(2.25e-3, rel=0.01)
+    assert (found.low.at["gain"], found.high.at["gain"]) == (36.0, 90.0)

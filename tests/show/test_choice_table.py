@@ -9,7 +9,7 @@ from dataclasses import replace
 import pytest
 
 from biasband.quantity import Kind, parse
-from biasband.show.choice_table import choice_table
+from biasband.show.choice_table import choice_table, typed
 from tests.show.reviews import FAILING, reviewed
 from tests.show.test_tables import cells
 
@@ -84,17 +84,21 @@ def test_nearest_set_among_the_contenders_is_marked_there_and_not_repeated():
 def test_nearest_set_that_the_stock_has_not_is_no_row():
     contest = replace(contest_of(PASSING), nearest=None)
     assert cells(table_of(contest), "set") == ["chosen", "2nd", "3rd"]
+    said = "The nearest set has no row: the stock list has too few pieces"
+    assert said in notes_of(contest) and said not in notes_of(contest_of(PASSING))
 
 
 def test_title_counts_the_sets():
     # Three free resistors, two steps to each side (issue 3): 5³.
     assert "125 sets" in table_of(contest_of(PASSING)).title
+    assert "1 set by" in table_of(replace(contest_of(PASSING), sets=1)).title
 
 
 def test_failing_set_has_its_tone_and_names_what_fails():
     contest = contest_of(FAILING)
     for row, each in zip(table_of(contest, FAILING).rows, contest.contenders, strict=False):
         assert each.failing and row.tone == "fail"
+        assert any(column.toned for column in table_of(contest, FAILING).columns)
         (below,) = row.below
         assert below.startswith("FAILS ")
         assert all(below.count(margin.quantity) == 1 for margin in each.failing)
@@ -124,7 +128,9 @@ def test_that_no_set_passes_is_said_only_where_none_does():
 def test_set_without_a_share_has_no_percentage():
     contest = contest_of(PASSING)
     none = replace(contest.contenders[0], share=-math.inf)
-    assert cells(table_of(replace(contest, contenders=(none,), nearest=None)), "share") == ["none"]
+    without = replace(contest, contenders=(none,), nearest=None)
+    assert cells(table_of(without), "share") == ["none"]
+    assert "share none: " in notes_of(without) and "share none: " not in notes_of(contest)
 
 
 def test_swing_is_shown_where_it_decides():
@@ -154,16 +160,33 @@ def test_current_more_than_a_tenth_off_its_target_is_said(share, said):
 
 
 def test_unsolved_current_of_the_chosen_set_is_not_passed_over():
-    assert "off its target" in notes_of(current_at(contest_of(PASSING), math.nan))
+    notes = notes_of(current_at(contest_of(PASSING), math.nan))
+    assert "I_C of the chosen set is not solved" in notes and "nan" not in notes
+
+
+def pinned(table):
+    """The values of the hint, as --keep reads them."""
+    hints = [note for note in table.notes if "--keep" in note]
+    return {name: parse(text, Kind.RESISTANCE) for note in hints for name, text in KEEP.findall(note)}
+
+
+KEEP = re.compile(r"--keep (\w+)=(\S+)")
 
 
 @pytest.mark.parametrize("name", [PASSING, FAILING])
-def test_example_pins_a_value_of_another_set(name):
+def test_hint_pins_the_whole_second_set(name):
+    # What is left free is chosen anew, so that fewer values would not promise this set.
     contest = contest_of(name)
-    example = next(note for note in table_of(contest, name).notes if "--keep" in note)
-    pinned = re.findall(r"(\w+)=(\S+)", example)
-    assert pinned
-    best, second = (dict(zip(contest.names, each.values, strict=True)) for each in contest.contenders[:2])
-    for resistor, text in pinned:
-        value = parse(text, Kind.RESISTANCE)  # as --keep reads it
-        assert value == second[resistor] != best[resistor]
+    second = dict(zip(contest.names, contest.contenders[1].values, strict=True))
+    assert pinned(table_of(contest, name)) == second
+
+
+def test_single_set_has_no_hint():
+    contest = contest_of(PASSING)
+    assert pinned(table_of(replace(contest, contenders=contest.contenders[:1]))) == {}
+
+
+@pytest.mark.parametrize("ohms", [0.01, 0.047, 0.1, 0.47, 4.7, 1e3, 3300.0, 4.99e6, 1e9, 1e13, 123456.0])
+def test_typed_value_is_read_back(ohms):
+    assert parse(typed(ohms), Kind.RESISTANCE) == ohms
+    assert " " not in typed(ohms)

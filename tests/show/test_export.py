@@ -23,12 +23,12 @@ NAN = float("nan")
 
 # formats.md, "JSON of `review --json`", and what issue 2 adds to it.
 TOP = {
-    "stage", "files", "biasband", "seed", "boards", "boards_per_batch", "parts", "choice", "nominal",
-    "corners", "rss", "spread", "causes", "margins", "checks", "warnings", "verdict", "because",
+    "stage", "files", "biasband", "seed", "boards", "boards_per_batch", "parts", "capacitors", "choice",
+    "nominal", "corners", "rss", "spread", "causes", "margins", "checks", "warnings", "verdict", "because",
 }  # fmt: skip
 PART = {
     "hand", "ideal", "value", "chosen", "kept", "series", "tolerance", "tempco", "code", "markings", "stock",
-    "power_worst", "power_rating",
+    "pairs", "power_worst", "power_rating",
 }  # fmt: skip
 MARGIN = {
     "id", "quantity", "limit", "side", "judged_by", "nominal", "corners", "rss", "yield", "yield_low",
@@ -54,9 +54,10 @@ def test_keys_are_those_of_the_formats(name):
     assert all(set(part) == PART for part in found["parts"].values())
     assert all(set(margin) == MARGIN for margin in found["margins"])
     assert set(found["nominal"]) == words | {"region"}
-    assert set(found["spread"]) == words | {"regions"}
+    looked_into = set(review.looked_into)
+    assert set(found["spread"]) == looked_into | {"regions"}
     for section in ("corners", "rss", "causes"):
-        assert set(found[section]) == words  # no "check …" measure of our own
+        assert set(found[section]) == looked_into  # no "check …" measure of our own
     assert set(found["checks"]) == {"made", "not_made"}
 
 
@@ -79,7 +80,7 @@ def test_figures_are_the_reviews_own_to_the_bit(name):
     found = data(review)
     for quantity, value in review.nominal.values.items():
         assert found["nominal"][quantity] == value
-        range_ = review.evidence.corners.ranges[quantity]
+    for quantity, range_ in ((name, review.evidence.corners.ranges[name]) for name in review.looked_into):
         assert (found["corners"][quantity]["low"], found["corners"][quantity]["high"]) == (
             range_.low.value, range_.high.value,
         )  # fmt: skip
@@ -100,7 +101,7 @@ def test_figures_are_the_reviews_own_to_the_bit(name):
 def test_spread_has_the_promised_figures():
     review = reviewed(HIVE)
     found = data(review)["spread"]
-    for name in review.quantities:
+    for name in review.looked_into:
         for place in ("nominal_use", "lowest_in_use", "highest_in_use"):
             sample = getattr(review.spread[name], place)
             assert found[name][place] == {
@@ -143,7 +144,7 @@ def test_analyses_use_the_keys_of_the_review():
     review = reviewed(HIVE)
     whole, evidence = data(review), review.evidence
     design = design_json(review.design)
-    corners = corners_json(review.design, evidence.corners, review.quantities)
+    corners = corners_json(review.design, evidence.corners, review.looked_into)
     spread = spread_json(review.design, evidence.boards)
     assert corners["corners"] == whole["corners"]
     assert spread["spread"] == whole["spread"]

@@ -42,7 +42,7 @@ def line(**more):
         "references": ("R1", "R2", "RE"), "value": 4990.0, "series": "E96", "tolerance": 0.001,
         "tempco": 25e-6, "power_rating": 0.125, "power_worst": 0.0123,
         "markings": markings(4990.0, tolerance=0.001, tempco=25e-6),
-        "item": StockItem(value=4990.0, quantity=40, price=0.07, location='drawer 3, "precision"'),
+        "items": (StockItem(value=4990.0, quantity=40, price=0.07, location='drawer 3, "precision"'),) * 3,
     }  # fmt: skip
     return PartLine(**{**facts, **more})
 
@@ -114,14 +114,14 @@ def test_line_says_how_many_and_how_they_are_marked():
     assert (row["references"], row["quantity"], row["series"]) == ("R1 R2 RE", "3", "E96")
     # IEC 60062: B and violet are 0.1 %, yellow as the sixth band 25 ppm/K; E96 place 68 is 499, B is 10¹.
     assert row["letter_code"] == "4K99B"
-    assert row["colour_bands"] == "yellow white white brown violet yellow (±0.1 %, 25 ppm/K)"
-    assert [mark.strip() for mark in row["chip_marks"].split(",")] == ["4991", "68B"]
+    assert row["colour_bands"] == "yellow white white brown violet yellow (+/-0.1 %, 25 ppm/K)"
+    assert row["chip_marks"].split() == ["4991", "68B"]
 
 
 def test_price_is_that_of_all_pieces():
     (row,) = rows_of([line()])
     assert float(row["price_each"]) == 0.07
-    assert float(row["price"]) == pytest.approx(0.21, rel=TWELVE_DIGITS)  # 3 · 0.07
+    assert float(row["price_total"]) == pytest.approx(0.21, rel=TWELVE_DIGITS)  # 3 · 0.07
 
 
 def test_text_with_separators_and_quotes_comes_back():
@@ -131,24 +131,44 @@ def test_text_with_separators_and_quotes_comes_back():
 
 def test_what_is_not_known_is_empty():
     bare = line(
-        series=None, tolerance=None, power_rating=None, power_worst=None, item=None,
+        series=None, tolerance=None, power_rating=None, power_worst=None, items=(), tempco=None,
         markings=markings(1e13),  # beyond every mark
     )  # fmt: skip
     (row,) = rows_of([bare])
-    known = {"references", "quantity", "value_ohm", "tempco_ppm_per_kelvin"}
+    known = {"references", "quantity", "value_ohm"}
     assert {column for column, cell in row.items() if cell} == known
 
 
 def test_item_without_a_price_costs_nothing_that_is_known():
-    (row,) = rows_of([line(item=StockItem(value=4990.0, location="A"))])
-    assert (row["price_each"], row["price"], row["location"]) == ("", "", "A")
-    (free,) = rows_of([line(item=StockItem(value=4990.0, price=0.0))])
-    assert (free["price_each"], free["price"]) == ("0", "0")
+    (row,) = rows_of([line(items=(StockItem(value=4990.0, location="A"),) * 3)])
+    assert (row["price_each"], row["price_total"], row["location"]) == ("", "", "A")
+    (free,) = rows_of([line(items=(StockItem(value=4990.0, price=0.0),) * 3)])
+    assert (free["price_each"], free["price_total"]) == ("0", "0")
+
+
+def test_line_from_two_rows_of_the_list_has_both_prices_and_places():
+    one = StockItem(value=4990.0, quantity=1, price=0.01, location="A")
+    two = StockItem(value=4990.0, quantity=1, price=0.5, location="B")
+    (row,) = rows_of([line(references=("R1", "R2"), items=(one, two))])
+    assert (row["price_each"], row["price_total"], row["location"]) == ("", "0.51", "A, B")  # 0.01 + 0.50
+    assert row["stock"] == ""
+
+
+def test_what_the_stock_lacks_is_said_and_has_no_price():
+    one = StockItem(value=4990.0, quantity=1, price=0.01, location="A")
+    (row,) = rows_of([line(references=("R1", "R2"), items=(one, None), pieces=1)])
+    assert (row["price_total"], row["stock"]) == ("", "only 1 in stock")
+    (row,) = rows_of([line(references=("R1",), items=(None,), pieces=0)])
+    assert (row["price_each"], row["price_total"], row["stock"]) == ("", "", "not in stock")
+
+
+def test_text_of_our_own_is_ascii_for_spreadsheets_that_guess_the_encoding():
+    assert parts_csv([line()]).isascii()
 
 
 def test_bands_fall_back_to_those_without_a_tempco():
     (row,) = rows_of([line(markings=markings(4990.0, tolerance=0.01))])
-    assert row["colour_bands"] == "yellow white white brown brown (±1 %)"  # IEC 60062
+    assert row["colour_bands"] == "yellow white white brown brown (+/-1 %)"  # IEC 60062
 
 
 def test_value_keeps_its_digits():

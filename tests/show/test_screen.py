@@ -21,7 +21,7 @@ from tests.show.reviews import EVERY, FAILING, HIVE, reviewed
 
 def reports(name):
     review = reviewed(name)
-    evidence, words = review.evidence, review.quantities
+    evidence, words = review.evidence, review.looked_into
     return (
         review_report(review),
         design_report(review.design),
@@ -115,7 +115,8 @@ def test_every_report_on_a_stage_ends_with_the_cautions():
 
 def test_markup_and_control_characters_of_the_user_stay_text():
     review = reviewed(HIVE)
-    rows = tuple(replace(row, id="[bold]R", reason="[/red]\x1b[2J") for row in review.rows[:1])
+    first = replace(review.rows[0], id="[bold]R", reason="[/red]\x1b[2J")
+    rows = (first, *review.rows[1:])
     stage = replace(review.stage, title="[red]Hive[/red] \x1b]0;x\x07", designed_by=":bee:")
     design = replace(review.design, stage=stage)
     text = "\n".join(shown(replace(review, stage=stage, design=design, rows=rows)))

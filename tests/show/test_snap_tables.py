@@ -8,10 +8,13 @@ import pytest
 
 from biasband.files.series_files import load_series
 from biasband.parts.marking import markings
-from biasband.parts.pairs import against, pairs
+from biasband.parts.pair_reasons import against
+from biasband.parts.pairs import pairs
 from biasband.parts.series import nearest
 from biasband.quantity import Kind, parse
+from biasband.show.layout import STYLES, lines_of
 from biasband.show.snap_tables import chip_marks, marks, offer_table, pairs_table, snap_tables
+from biasband.show.spelling import Spelling
 from biasband.show.table import NOT_KNOWN
 from biasband.signoff.snapping import snap_texts
 from biasband.values.pairing import Offer
@@ -99,8 +102,37 @@ def test_marks_take_the_six_bands_where_a_tempco_is_stated():
 
 
 def test_mark_that_does_not_exist_is_left_out():
-    (line,) = marks(markings(6650.0, tolerance=0.03))  # no letter and no colour for 3 %
+    line, why = marks(markings(6650.0, tolerance=0.03))  # no letter and no colour for 3 %
     assert line == "marked 6K65, chip 6651, 80B"  # E96 place 80 is 665, B is 10¹
+    assert why == "no colour bands at ±3 %: no colour stands for ±3 %"
+
+
+def test_why_there_are_no_bands_is_said_only_where_a_tolerance_is_known():
+    assert list(marks(markings(6650.0))) == ["marked 6K65, chip 6651, 80B"]
+    assert any("more than 2 figures" in text for text in marks(markings(6650.0, tolerance=0.05)))
+
+
+def test_part_without_any_mark_has_no_line_of_marks():
+    assert list(marks(markings(1e13))) == []  # beyond letters, chips and colours
+    assert not any(text.startswith("marked") for text in marks(markings(1e13, tolerance=0.05)))
+
+
+def test_doubtful_value_is_coloured():
+    (table,) = snap_tables(snap_texts(["20M"]))
+    lines = lines_of((table,), width=80, spelling=Spelling())
+    assert STYLES["doubt"] in {str(span.style) for line in lines for span in line.spans}
+
+
+def test_what_the_parts_of_a_pair_do_not_state_is_not_zero(tmp_path):
+    stock = tmp_path / "house.csv"
+    stock.write_text("value,tolerance\n10k,1 %\n3k3,\n", encoding="utf-8")
+    _, table = snap_tables(snap_texts(["20k"], stock=stock, pair=True))
+    shown = dict(zip(cells(table, "pair"), cells(table, "tol."), strict=True))
+    assert shown["10 kΩ + 10 kΩ"] == "1 %"
+    assert {text for pair, text in shown.items() if "3.3" in pair} == {"not stated"}
+    assert set(cells(table, "tempco")) == {"not stated"}
+    assert not any("n/a" in text for row in table.rows for text in row.cells)
+    assert not any("n/a" in note for note in table.notes)
 
 
 def test_chip_marks_are_named_once():

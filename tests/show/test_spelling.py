@@ -48,3 +48,9 @@ def test_any_text_becomes_one_line_that_can_be_written(text, encoding):
     assert spelled.isprintable() or "\ufffd" in spelled
     assert "\x1b" not in spelled
     assert len(spelled.splitlines()) <= 1
+
+
+def test_parallel_sign_is_spelled_as_two_bars():
+    assert Spelling("ascii")("10 kΩ ∥ 10 kΩ") == "10 kohm || 10 kohm"
+    # An output without it, which has all else of ours, must not put a question mark.
+    assert "?" not in Spelling("latin-1")("10 kΩ ∥ 10 kΩ")

@@ -8,9 +8,11 @@ import pytest
 from biasband.circuit.operating_point import Region
 from biasband.quantity import Kind, parse
 from biasband.show.analysis_tables import corners_table, design_table, spread_tables
-from biasband.show.review_tables import margin_table, nominal_table, parts_table, summary_table
+from biasband.show.parts_table import parts_table
+from biasband.show.review_tables import margin_table, nominal_table, summary_table
 from biasband.show.summary import Attempt
 from biasband.show.table import Table, code, difference, percent, whole_percent, yield_percent
+from biasband.signoff.parts_list import parts_list
 from tests.show.reviews import EVERY, FAILING, HIVE, SPLIT, reviewed
 
 NAN = float("nan")
@@ -102,7 +104,7 @@ def test_reason_of_a_requirement_is_kept_as_written():
 
 def test_parts_table_says_what_to_buy():
     review = reviewed(HIVE)
-    table = parts_table(review)
+    table = parts_table(review.parts_list, review.design)
     for text, part in zip(cells(table, "value"), review.design.parts, strict=True):
         assert parse(text, Kind.RESISTANCE) == part.value
     assert cells(table, "part") == ["R1", "R2", "RC", "RE"]
@@ -116,25 +118,28 @@ def test_parts_table_says_what_to_buy():
 
 
 def test_given_part_has_no_ideal_and_claims_no_series():
-    table = parts_table(reviewed("organ_vibrato_repair"))
+    review = reviewed("organ_vibrato_repair")
+    table = parts_table(review.parts_list, review.design)
     assert set(cells(table, "ideal")) == {"given"}
     assert set(cells(table, "series")) == {""}
 
 
 def test_what_a_resistor_does_not_state_is_said_not_to_be_stated():
     review = reviewed(HIVE)
-    bare = replace(review.stage.resistors[0], tolerance_stated=False, power_rating=None)
+    bare = replace(review.stage.resistors[0], tolerance_stated=False, tempco=0.0, power_rating=None)
     stage = replace(review.stage, resistors=(bare, *review.stage.resistors[1:]))
-    table = parts_table(replace(review, stage=stage, design=replace(review.design, stage=stage)))
-    assert cells(table, "tol.")[0] == cells(table, "rating")[0] == "not stated"
+    design = replace(review.design, stage=stage)
+    table = parts_table(parts_list(design, {}), design)
+    assert {cells(table, heading)[0] for heading in ("tol.", "tempco", "rating")} == {"not stated"}
+    assert "worst power" not in [column.heading for column in table.columns]  # no corners were looked into
 
 
 def test_nominal_table_holds_every_quantity():
     review = reviewed(SPLIT)
     table = nominal_table(review)
-    names = [text.removesuffix(" (inverting)") for text in cells(table, "quantity")]
+    names = [text.split(" (")[0] for text in cells(table, "quantity")]
     assert names == list(review.quantities)
-    assert "voltage_gain (inverting)" in cells(table, "quantity")
+    assert {"voltage_gain (inverting)", "distortion (clipping)"} <= set(cells(table, "quantity"))
     for text, (name, quantity) in zip(cells(table, "value"), review.quantities.items(), strict=True):
         slack = 0.05 if quantity.kind is Kind.TEMPERATURE else 1e-12
         assert read_back(text, quantity.kind) == pytest.approx(
@@ -151,8 +156,8 @@ def test_nominal_table_names_the_region():
 
 def test_corners_table_holds_the_extremes():
     review = reviewed(HIVE)
-    table = corners_table(review.evidence.corners, review.quantities)
-    for row, (name, quantity) in zip(table.rows, review.quantities.items(), strict=True):
+    table = corners_table(review.evidence.corners, review.looked_into)
+    for row, (name, quantity) in zip(table.rows, review.looked_into.items(), strict=True):
         found = review.evidence.corners.ranges[name]
         slack = 0.05 if quantity.kind is Kind.TEMPERATURE else 1e-12
         for text, extreme in ((row.cells[1], found.low), (row.cells[2], found.high)):
@@ -163,7 +168,7 @@ def test_corners_table_holds_the_extremes():
 
 def test_spread_tables_hold_the_quantiles():
     review = reviewed(HIVE)
-    tables = spread_tables(review.evidence.boards, review.quantities)
+    tables = spread_tables(review.evidence.boards, review.looked_into)
     assert [table.title for table in tables] == [
         "At nominal use", "Each board's lowest in use", "Each board's highest in use",
     ]  # fmt: skip

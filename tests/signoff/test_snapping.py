@@ -152,6 +152,25 @@ def test_mark_with_two_readings_is_never_guessed():
     assert row.snap.value == 10.0 and any("1.24 Ω" in note for note in row.notes)
 
 
+def test_note_promises_no_reading_that_mark_refuses():
+    (note,) = one("10R").notes
+    assert note == "as an E96 chip mark 10R is 1.24 Ω"
+    (note,) = one("472").notes
+    assert note.endswith(": --mark reads it so")
+
+
+@pytest.mark.parametrize(("text", "ohms"), [("4k7", 4700.0), ("6.65k", 6650.0), ("130 ohm", 130.0)])
+def test_text_that_is_no_mark_stays_a_resistance(text, ohms):
+    row = one(text, as_marks=True)
+    assert (row.snap.value, row.notes) == (ohms, ())
+
+
+@pytest.mark.parametrize("text", ["47", "4", "47000"])
+def test_digits_that_are_no_mark_are_not_taken_for_ohms_behind_mark(text):
+    with pytest.raises(UsageError, match="not a chip mark"):
+        snap_texts([text], as_marks=True)
+
+
 def test_grey_as_a_tolerance_is_told_to_be_ambiguous():
     # Editions of IEC 60062 disagree: 0.05 % in 2005, 0.01 % in 2016 (check_values.md).
     notes = " ".join(one("yellow violet red grey").notes)
@@ -166,6 +185,18 @@ def test_grey_as_a_tolerance_is_told_to_be_ambiguous():
 def test_value_that_no_part_has_is_refused(text):
     with pytest.raises(UsageError, match="above 0 and finite"):
         snap_texts([text])
+
+
+@pytest.mark.parametrize("text", ["nan", "inf", "-inf", "Infinity", "NaN"])
+def test_number_that_is_none_is_told_to_be_no_figure(text):
+    with pytest.raises(UsageError, match=r"^not a figure") as caught:
+        snap_texts([text])
+    assert "colour" not in str(caught.value)
+
+
+def test_series_in_the_wrong_case_is_suggested():
+    with pytest.raises(UsageError, match='did you mean "E24"'):
+        snap_texts(["4k7"], series="e24")
 
 
 @pytest.mark.parametrize("text", ["nan", "inf", "-inf", "", " ", "purple red red", "5 V", "4k7x", "5,1k"])
@@ -233,6 +264,28 @@ def test_stock_without_a_part_that_will_do_is_refused(house):
         snap_texts(["4k7"], stock=stock, tolerance=0.01)
 
 
+def test_part_in_stock_is_marked_with_what_the_list_states(house):
+    stock = house("value,tolerance,tempco\n4k7,1 %,100 ppm/K\n10k,,\n")
+    found = one("4k7", stock=stock).markings
+    # IEC 60062: F is 1 %, brown; as the sixth band brown is 100 ppm/K.
+    assert found.letter_code == "4K7F"
+    assert found.six_bands.colours == ("yellow", "violet", "black", "brown", "brown", "brown")
+    assert one("10k", stock=stock).markings.letter_code == "10K"  # not the ±5 % of a series never asked for
+    assert one("10k", stock=stock, tolerance=0.02).markings.letter_code == "10KG"  # said for what states none
+
+
+def test_series_beside_a_stock_list_is_refused(house):
+    with pytest.raises(UsageError, match="--series: with --stock the values are those of the list"):
+        snap_texts(["4k7"], stock=house("value\n4k7\n"), series="E12")
+
+
+def test_chosen_value_outside_the_practical_range_is_warned_of(house):
+    row = one("9M", stock=house("value\n11M\n"))
+    assert any(note.startswith("WARNING: 11 MΩ is outside") for note in row.notes)
+    both = one("0.9", stock=house("value\n0.5\n"))
+    assert any("900 mΩ and 500 mΩ are outside" in note for note in both.notes)
+
+
 def test_faulty_stock_list_is_refused_with_its_line(house):
     with pytest.raises(BadlyWritten, match=r"house\.csv:3: value"):
         snap_texts(["4k7"], stock=house("value\n4k7\n10 mA\n"))
@@ -277,10 +330,38 @@ def test_what_speaks_against_a_pair_is_about_the_snap():
 
 
 @pytest.mark.parametrize("text", ["0.01", "1e9", "0.49", "21M"])
-def test_value_that_no_pair_reaches_is_refused_with_the_reach(text):
+def test_value_that_no_pair_reaches_has_a_note_and_stops_no_other(text):
+    far, near = snap_texts([text, "5k"], pair=True).rows
     # From half of 1 Ω to twice 10 MΩ.
-    with pytest.raises(UsageError, match="from 500 mΩ to 20 MΩ"):
-        snap_texts([text], pair=True)
+    assert any("no pairs in E24: " in note and "from 500 mΩ to 20 MΩ" in note for note in far.notes)
+    assert far.pairs == () and near.pairs
+
+
+def test_value_that_no_pair_in_stock_reaches_says_so_of_the_stock(house):
+    row = one("1M", stock=house("value\n1k\n2k2\n"), pair=True)
+    assert any(note.startswith("no pairs in stock: ") for note in row.notes)
+
+
+def test_value_of_which_there_is_one_piece_makes_no_pair_with_itself(house):
+    row = one("20k", stock=house("value,quantity\n10k,1\n4k7,2\n"), pair=True)
+    pairs = {(pair.first, pair.second) for pair in row.pairs}
+    assert (10e3, 10e3) not in pairs and (10e3, 4700.0) in pairs
+    alone = one("20k", stock=house("value,quantity\n10k,1\n"), pair=True)
+    assert alone.pairs == () and any("one piece alone" in note for note in alone.notes)
+    assert one("20k", stock=house("value,quantity\n10k,2\n"), pair=True).pairs[0].error == 0.0
+
+
+def test_pair_in_stock_has_the_tolerance_of_its_parts(house):
+    row = one("20k", stock=house("value,tolerance,tempco\n10k,1 %,50 ppm/K\n"), pair=True)
+    # Two equal parts in series move together: 1 %, 50 ppm/K.
+    assert row.pairs[0].tolerance_high == pytest.approx(0.01, rel=1e-12)
+    assert row.pairs[0].tempco == pytest.approx(50e-6, rel=1e-12)
+
+
+def test_two_pieces_of_unequal_tolerance_count_as_the_wider(house):
+    stock = house("value,tolerance,quantity,price\n10k,1 %,1,0.01\n10k,5 %,9,0.02\n")
+    pair = next(each for each in one("20k", stock=stock, pair=True).pairs if each.second == 10e3)
+    assert pair.tolerance_high == pytest.approx(0.05, rel=1e-12)
 
 
 def test_pairs_of_a_series_without_tolerance_need_one():

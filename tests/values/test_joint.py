@@ -342,3 +342,14 @@ def test_set_that_runs_away_at_a_corner_never_wins(asked: tuple[Requirement, ...
     assert found.nearest.share == found.nearest.corner_share == -np.inf
     assert isnan(found.nearest.swing)
     assert found.nearest.failing_at_corners == len(found.nearest.failing) > 0
+
+
+def test_search_that_is_given_up_says_so(monkeypatch: pytest.MonkeyPatch) -> None:
+    """Where exact figures fall behind their bounds a second round is needed, and with it the proof."""
+    small = SMALL["power limited by the junction"]
+    best = found_in(small, nearest=None)
+    assert best.proved
+    monkeypatch.setattr(joint, "MOST_HELD", 1)
+    given_up = found_in(small, nearest=None)
+    assert not given_up.proved
+    assert given_up.contenders[0].share <= best.contenders[0].share

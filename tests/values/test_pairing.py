@@ -3,13 +3,14 @@
 from __future__ import annotations
 
 from dataclasses import replace
+from math import isnan
 
 import pytest
 from variation.stages import with_resistor
 
 from biasband.files.series_files import load_all
 from biasband.parts.pairs import pairs, pairs_among
-from biasband.stage import Resistor, Stage
+from biasband.stage import Resistor, Stage, StockItem
 from biasband.values.choosing import choose
 from biasband.values.pairing import OFFERED, Offer, offers
 from values.test_candidates import exact_of
@@ -73,8 +74,33 @@ def test_pairs_are_made_of_what_is_in_stock_where_there_is_a_list() -> None:
 
 
 @pytest.mark.parametrize("values", [(1e3,), (100e3, 1e6)])
-def test_value_out_of_reach_of_every_pair_in_stock_has_no_offer(values: tuple[float, ...]) -> None:
-    assert offered(replace(given(4e3), stock=drawer(*values))) == {}
+def test_value_out_of_reach_of_every_pair_in_stock_is_warned_of(values: tuple[float, ...]) -> None:
+    of = replace(given(4e3), stock=drawer(*values))
+    offer = offered(of)["RC"]
+    assert offer.pairs == ()
+    design = choose(of, SERIES)
+    assert design.offers == ()
+    (warning,) = [text for text in design.warnings if "pairs" in text]
+    assert warning.startswith("RC: no pairs to offer for 4 kΩ: stock: ") and "reach from" in warning
+
+
+def test_only_piece_of_a_list_makes_no_pair_and_that_is_told() -> None:
+    of = replace(given(4e3), stock=drawer(StockItem(value=4e3, quantity=1)))
+    assert offered(of)["RC"].warning == "RC: no pairs to offer for 4 kΩ: stock has one piece alone"
+    two = replace(of, stock=drawer(StockItem(value=4e3, quantity=2)))
+    assert offered(two)["RC"].pairs[0].first == 4e3
+
+
+def test_tolerance_and_tempco_that_are_not_stated_are_not_zero() -> None:
+    best = offered(given(5e3, series="E12", tolerance_stated=False))["RC"].pairs[0]
+    assert isnan(best.tolerance_high) and isnan(best.rss_low) and isnan(best.tempco)
+
+
+def test_pair_in_stock_has_what_its_items_state() -> None:
+    stock = drawer(StockItem(value=1e3, tolerance=0.001, tempco=25e-6), StockItem(value=3e3, tolerance=0.001))
+    best = offered(replace(given(4e3, tolerance=0.01, tempco=1e-4), stock=stock))["RC"].pairs[0]
+    assert best.tolerance_high == pytest.approx(0.001)
+    assert best.tempco == pytest.approx(0.25 * 25e-6 + 0.75 * 100e-6)  # 1 of 4 kΩ at 25, 3 at the usual 100
 
 
 def test_choice_hands_the_offers_on_and_takes_none_of_them() -> None:

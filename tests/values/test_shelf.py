@@ -133,7 +133,7 @@ def test_every_resistor_that_nothing_in_stock_serves_is_named_with_what_it_asks(
     of = with_resistor(of, "R1", tolerance=0.001)  # has a value: not asked for
     of = with_resistor(of, "R2", tolerance=0.01)
     of = with_resistor(of, "RC", tempco=5e-5, power_rating=0.5)
-    with pytest.raises(PhysicallyImpossible, match="none of the 1 parts in stock will do") as caught:
+    with pytest.raises(PhysicallyImpossible, match="the one part in stock will not do") as caught:
         shelves(of, SERIES)
     assert [(fault.file, fault.key) for fault in caught.value.faults] == [
         ("invented.csv", "resistors.R2"), ("invented.csv", "resistors.RC")
