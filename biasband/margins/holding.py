@@ -58,11 +58,14 @@ def looked_into(stage: Stage) -> Mapping[str, Quantity]:
     return {name: quantity for name, quantity in rows if name in required or not quantity.costly}
 
 
-def nominal(stage: Stage) -> Nominal:
-    """Solve a stage, every resistor valued, with every contributor at its nominal value."""
-    reading = read(stage, realise(stage, {}))
+def nominal(stage: Stage, measures: Measures | None = None) -> Nominal:
+    """Solve a stage, every resistor valued, with every contributor at its nominal value.
+
+    Without `measures`, the whole vocabulary is read.
+    """
+    reading, wanted = read(stage, realise(stage, {})), words(stage) if measures is None else measures
     with np.errstate(all="ignore"):
-        values = {name: _first(quantity.read(reading)) for name, quantity in words(stage).items()}
+        values = {name: _first(measure.read(reading)) for name, measure in wanted.items()}
     region = Region(int(reading.regions(cut_off_current(stage))[0]))
     return Nominal(values, region)
 
@@ -101,7 +104,7 @@ def _held(
     boards: int,
     seed: int,
 ) -> Holding:
-    middle = nominal(stage)
+    middle = nominal(stage, measures)
     points = (*points_of_use(stage), *_interior_points(stage, found, measures))
     evidence = Evidence(
         nominal=middle.values,

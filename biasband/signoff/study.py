@@ -14,7 +14,7 @@ from biasband.constants import BOARDS, MOST_BOARDS
 from biasband.errors import UsageError
 from biasband.files.series_files import load_series
 from biasband.margins.checks import Standing
-from biasband.margins.holding import Nominal, hold, looked_into, words
+from biasband.margins.holding import Nominal, hold, looked_into, nominal, words
 from biasband.margins.records import Evidence, Margin
 from biasband.margins.requirements import joint_yield
 from biasband.margins.verdict import Verdict, judge
@@ -180,15 +180,16 @@ def review(stage: Stage, *, boards: int = BOARDS, seed: int = 1, progress: Progr
     check_sampling(boards, seed)
     chosen = design(stage, progress=lambda done: progress(CHOOSING * done))
     stage = chosen.stage
+    middle = nominal(stage)
     held = hold(stage, looked_into(stage), boards=boards, seed=seed)
     return Review(
         stage=stage,
         design=chosen,
-        nominal=held.nominal,
+        nominal=middle,
         evidence=held.evidence,
         rows=held.rows,
         standing=held.standing,
-        verdict=judge(stage, held.nominal.region, held.rows, held.standing, held.evidence),
-        warnings=warnings_of(chosen, held.nominal.values, held.evidence),
+        verdict=judge(stage, middle.region, held.rows, held.standing, held.evidence),
+        warnings=warnings_of(chosen, middle.values, held.evidence),
         joint_yield=joint_yield(stage.requirements, words(stage), held.evidence),
     )

@@ -17,7 +17,7 @@ import numpy as np
 from biasband.circuit.operating_point import Region
 from biasband.circuit.scenarios import Array
 from biasband.constants import BOARDS
-from biasband.margins.holding import Holding, hold_all, words
+from biasband.margins.holding import Holding, hold_all, nominal, words
 from biasband.margins.records import NAN, Margin
 from biasband.stage import Stage, Target
 from biasband.values.bench import CURRENT, SWING, Bench, Indices, bench, hold_sets
@@ -227,8 +227,9 @@ def _contenders(bench: Bench, values: Array) -> Iterator[Contender]:
         seed=_SEED,
         sides={name: side for name, side in sides.items() if side},
     )
-    for row, holding in zip(values, held, strict=True):
-        yield _contender(row, holding)
+    current = {CURRENT: vocabulary[CURRENT]}
+    for row, stage, holding in zip(values, stages, held, strict=True):
+        yield _contender(row, nominal(stage, current).values[CURRENT], holding)
 
 
 def finalist_boards(stage: Stage) -> int:
@@ -239,7 +240,7 @@ def finalist_boards(stage: Stage) -> int:
     return (FINALIST_BOARDS if few else BOARDS) if yields else 1
 
 
-def _contender(values: Array, held: Holding) -> Contender:
+def _contender(values: Array, current: float, held: Holding) -> Contender:
     """A set as it was held; one that runs away, or is not solved, at some corner is the worst there is."""
     corners = held.evidence.corners
     lost = corners.regions.keys() & {Region.RUNAWAY, Region.UNSOLVED}
@@ -250,7 +251,7 @@ def _contender(values: Array, held: Holding) -> Contender:
         smallest=held.rows[0],
         failing=held.rows if lost else tuple(row for row in held.rows if row.verdict == "fail"),
         failing_at_corners=sum(bool(lost) or not row.passes_at_corners for row in held.rows),
-        current=held.nominal.values[CURRENT],
+        current=current,
         swing=corners.ranges[SWING].low.value if SWING in corners.ranges and not lost else NAN,
         regions=tuple(sorted(lost)),
     )

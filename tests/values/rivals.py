@@ -14,7 +14,7 @@ from typing import Any
 
 from variation.stages import ideal, limits, real, some, stage, with_resistor
 
-from biasband.margins.holding import Holding, hold
+from biasband.margins.holding import Holding, hold, nominal
 from biasband.margins.records import Margin
 from biasband.stage import Limits, Requirement, Signal, Stage, Supply, Target
 
@@ -90,7 +90,7 @@ def judged(of: Stage, names: Sequence[str], values: Values) -> Judged:
         corner_share=min(map(at_corners, found.rows)),
         failing=sum(row.verdict == "fail" for row in found.rows),
         failing_at_corners=sum(not row.passes_at_corners for row in found.rows),
-        current=found.nominal.values["collector_current"],
+        current=nominal(valued(of, names, values)).values["collector_current"],
         swing=ranges[SWING].low.value if SWING in ranges else nan,
         rows=found.rows,
     )
