@@ -13,7 +13,7 @@ def allot(stock: Stock, values: Sequence[float], demands: Sequence[Demand]) -> t
     """Hand out one piece to each of several resistors, by value [Ω] and demand; None where none is left.
 
     As many resistors as can be get a piece, and what they get is together the cheapest. The pieces are
-    offered from the best down (see `best_item`), each to whoever can use it, where need be by another
+    offered from the best down (see `by_price`), each to whoever can use it, where need be by another
     piece's changing hands: one that has found a place keeps a place, and is never given up for a worse one.
 
     Worked case: of one piece at 0.01 and one at 0.50, two resistors of any tolerance get both: 0.51.
@@ -29,6 +29,15 @@ def allot(stock: Stock, values: Sequence[float], demands: Sequence[Demand]) -> t
         for piece in repeat(item, count):
             _place(piece, seekers, holders, set())
     return tuple(holders.get(place) for place in range(len(seekers)))
+
+
+def enough_in_stock(stock: Stock, values: Sequence[float], demands: Sequence[Demand]) -> bool:
+    """Whether the list has a part for each of several resistors at once, by value [Ω] and demand.
+
+    Worked case: one piece of 10 kΩ at 1 % and one at 5 % are enough for a 1 % and a 5 % resistor, not for
+    two of 1 %.
+    """
+    return None not in allot(stock, values, demands)
 
 
 def _place(

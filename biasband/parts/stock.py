@@ -6,9 +6,7 @@ wanted, since a list may leave out what is the same for the whole drawer.
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
-from itertools import chain, combinations
 from math import inf
 
 from biasband.stage import Resistor, Stock, StockItem
@@ -55,16 +53,6 @@ def values_in_stock(stock: Stock, demand: Demand) -> tuple[float, ...]:
     return tuple(sorted({item.value for item in stock.items if demand.met_by(item)}))
 
 
-def best_item(stock: Stock, value: float, demand: Demand) -> StockItem | None:
-    """Find the item to take for a value [Ω]: the cheapest that serves; None where none does.
-
-    Among equal prices the tightest tolerance, then the smallest tempco, then the largest rating, then
-    the one that stands first in the list. Where only some items have a price those come first, and
-    where only some state a tolerance, a tempco or a rating those come first too.
-    """
-    return min(_serving(stock, value, demand), key=by_price, default=None)
-
-
 def pieces_in_stock(stock: Stock, value: float, demand: Demand) -> int | None:
     """Count the pieces of a value [Ω] that serve, over all their items; 0 where there are none.
 
@@ -81,32 +69,6 @@ def pieces_in_stock(stock: Stock, value: float, demand: Demand) -> int | None:
     return total
 
 
-def enough_in_stock(stock: Stock, values: Sequence[float], demands: Sequence[Demand]) -> bool:
-    """Whether the list has a part for each of several resistors at once, by value [Ω] and demand.
-
-    Resistors of one value draw on the same pieces: any of them together must find as many as they are
-    (Hall's condition), so that a loosely toleranced one does not take the only tight part.
-    Worked case: one piece of 10 kΩ at 1 % and one at 5 % are enough for a 1 % and a 5 % resistor, not for two
-    of 1 %.
-    Source: P. Hall, "On representatives of subsets", J. London Math. Soc. 10 (1935); memory.
-    """
-    wanted: dict[float, list[Demand]] = {}
-    for value, demand in zip(values, demands, strict=True):
-        wanted.setdefault(value, []).append(demand)
-    groups = ((value, some) for value, alike in wanted.items() for some in _subsets(alike))
-    return all(_pieces_for_any(stock, value, some) >= len(some) for value, some in groups)
-
-
-def _subsets(demands: Sequence[Demand]) -> Iterator[tuple[Demand, ...]]:
-    return chain.from_iterable(combinations(demands, size) for size in range(1, len(demands) + 1))
-
-
-def _pieces_for_any(stock: Stock, value: float, demands: Sequence[Demand]) -> float:
-    """How many pieces of a value serve at least one of the demands; infinite where not counted."""
-    items = [i for i in stock.items if i.value == value and any(demand.met_by(i) for demand in demands)]
-    return sum((inf if item.quantity is None else item.quantity for item in items), start=0.0)
-
-
 def _serving(stock: Stock, value: float, demand: Demand) -> list[StockItem]:
     return [item for item in stock.items if item.value == value and demand.met_by(item)]
 
@@ -117,7 +79,12 @@ def _at_most(figure: float | None, limit: float | None) -> bool:
 
 
 def by_price(item: StockItem) -> tuple[float, float, float, float]:
-    """Sort key of the best item; what is not stated comes last."""
+    """Sort key of the item to take first: the cheapest.
+
+    Among equal prices the tightest tolerance, then the smallest tempco, then the largest rating. Where
+    only some items have a price those come first, and where only some state a tolerance, a tempco or a
+    rating those come first too.
+    """
     costs = (item.price, item.tolerance, item.tempco)
     price, tolerance, tempco = (inf if cost is None else cost for cost in costs)
     return price, tolerance, tempco, -(item.power_rating or 0.0)

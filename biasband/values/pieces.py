@@ -5,8 +5,8 @@ from __future__ import annotations
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 
-from biasband.parts.allotment import allot
-from biasband.parts.stock import Demand, demand_of, enough_in_stock
+from biasband.parts.allotment import allot, enough_in_stock
+from biasband.parts.stock import Demand, demand_of
 from biasband.stage import Resistor, Stage, Stock
 
 

@@ -9,17 +9,16 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from biasband.parts.stock import (
-    Demand,
-    best_item,
-    demand_of,
-    enough_in_stock,
-    pieces_in_stock,
-    values_in_stock,
-)
+from biasband.parts.allotment import allot, enough_in_stock
+from biasband.parts.stock import Demand, demand_of, pieces_in_stock, values_in_stock
 from biasband.stage import FileRecord, Resistor, Stock, StockItem
 
 ANYTHING = Demand()
+
+
+def best_item(stock: Stock, value: float, demand: Demand) -> StockItem | None:
+    """What a lone resistor gets."""
+    return allot(stock, (value,), (demand,))[0]
 
 
 def stock_of(*items: StockItem) -> Stock:
