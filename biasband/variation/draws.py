@@ -1,16 +1,13 @@
-"""Draws: which random numbers a board takes, and the coordinates that they give.
+"""Draws: which uniform numbers a board takes, and the coordinates that they give.
 
-Each draw has its own counter-based stream, named after it: adding a contributor does not reshuffle
-the others, two designs can be compared on the same draws, and the numbers do not depend on the
-chunk they are drawn in. A batch mean has a stream of its own, indexed by batch.
+Where the numbers come from (streams.py) is another matter: random ones, quasi-random ones, or those
+of an analysis that holds some of them still. A batch mean is a number of its own, shared by a batch.
 """
 
 from __future__ import annotations
 
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
-
-import numpy as np
 
 from biasband.circuit.scenarios import Array
 from biasband.errors import UsageError
@@ -36,11 +33,12 @@ from biasband.variation.distributions import (
     shape_around,
     shape_between,
 )
+from biasband.variation.streams import Number, plain
 
 
 @dataclass(frozen=True)
 class Draw:
-    """One coordinate per board: its stream's name and its distribution; `by_batch`: alike in a batch."""
+    """One coordinate per board: its name and its distribution; `by_batch`: alike in a batch."""
 
     name: str
     shape: Shape | Batch = UNIFORM
@@ -109,29 +107,31 @@ def batch_size(stage: Stage) -> int:
 
 def coordinates(stage: Stage, rows: slice, *, seed: int) -> dict[str, Array]:
     """The coordinates of the boards at `rows`, whatever the chunk they are drawn in."""
-    size = batch_size(stage)
-    return {draw.name: _coordinate(draw, rows, seed, size) for draw in draws(stage)}
+    return coordinates_from(stage, plain(numbers(stage), rows, seed=seed, batch_size=batch_size(stage)))
 
 
-def _coordinate(draw: Draw, rows: slice, seed: int, size: int) -> Array:
+def numbers(stage: Stage) -> tuple[Number, ...]:
+    """Every uniform number that a board takes: one a draw, two where a board lies around a batch's mean."""
+    return tuple(number for draw in draws(stage) for number in _numbers(draw))
+
+
+def _numbers(draw: Draw) -> Iterator[Number]:
     if isinstance(draw.shape, Batch):
-        mean = _uniform_by_batch(f"{draw.name}.batch", rows, seed, size)
-        return draw.shape.coordinate(mean, _uniform(draw.name, rows, seed))
-    if draw.by_batch:
-        return draw.shape.quantile(_uniform_by_batch(draw.name, rows, seed, size))
-    return draw.shape.quantile(_uniform(draw.name, rows, seed))
+        yield Number(_mean_of(draw), by_batch=True)
+    yield Number(draw.name, by_batch=draw.by_batch)
 
 
-def _uniform_by_batch(name: str, rows: slice, seed: int, size: int) -> Array:
-    """Uniform numbers of one stream, indexed by batch: the same for all boards of a batch."""
-    batches = np.arange(rows.start, rows.stop) // size
-    drawn = _uniform(name, slice(int(batches[0]), int(batches[-1]) + 1), seed)
-    return np.asarray(drawn[batches - batches[0]])
+def _mean_of(draw: Draw) -> str:
+    """The name of the number that gives a draw's batch mean."""
+    return f"{draw.name}.batch"
 
 
-def _uniform(name: str, rows: slice, seed: int) -> Array:
-    """Uniform numbers in [0, 1) of one stream; the counter gives four doubles a step."""
-    stream = np.random.Philox(np.random.SeedSequence([seed, *name.encode()]))
-    stream.advance(rows.start // 4)
-    skip = rows.start % 4
-    return np.asarray(np.random.Generator(stream).random(rows.stop - rows.start + skip)[skip:])
+def coordinates_from(stage: Stage, uniforms: Mapping[str, Array]) -> dict[str, Array]:
+    """The coordinates that uniform numbers in [0, 1] make, by name (`numbers`), shape (N,) each."""
+    return {draw.name: _coordinate(draw, uniforms) for draw in draws(stage)}
+
+
+def _coordinate(draw: Draw, uniforms: Mapping[str, Array]) -> Array:
+    if isinstance(draw.shape, Batch):
+        return draw.shape.coordinate(uniforms[_mean_of(draw)], uniforms[draw.name])
+    return draw.shape.quantile(uniforms[draw.name])

@@ -12,13 +12,13 @@ from dataclasses import dataclass
 from functools import cached_property
 
 import numpy as np
-from numpy.typing import NDArray
 
 from biasband.circuit.operating_point import Region
 from biasband.circuit.scenarios import Array, chunks
 from biasband.stage import Stage
 from biasband.variation.draws import batch_size, coordinates
-from biasband.variation.evaluation import Measures, Outcome, evaluate
+from biasband.variation.evaluation import Measures
+from biasband.variation.in_use import in_use
 from biasband.variation.points_of_use import PointOfUse
 
 CHUNK = 16384
@@ -107,28 +107,16 @@ def sample(
     cut_off: float,
 ) -> Boards:
     """Draw boards and solve each at every point of use, nominal use first."""
-    table = {name: np.empty((3, boards)) for name in measures}
+    values = {name: np.empty((3, boards)) for name in measures}
     regions = np.zeros(len(Region), dtype=np.int64)
     for rows in chunks(boards, CHUNK):
-        drawn = coordinates(stage, rows, seed=seed)
-        for count, point in enumerate(points):
-            outcome = evaluate(stage, {**drawn, **point.coordinates}, measures, cut_off=cut_off)
-            regions += np.bincount(outcome.region, minlength=len(Region))
-            _gather(table, rows, outcome, first=count == 0)
-    spread = {name: Spread(*(Sample(row) for row in kept)) for name, kept in table.items()}
+        found = in_use(stage, coordinates(stage, rows, seed=seed), measures, points, cut_off=cut_off)
+        regions += found.regions
+        for name, kept in values.items():
+            kept[:, rows] = found.values[name]
+    spread = {name: Spread(*(Sample(row) for row in kept)) for name, kept in values.items()}
     counted = {region: int(regions[region]) for region in Region if regions[region]}
     return Boards(spread, boards, seed, len(points), counted, batch_size(stage))
-
-
-def _gather(table: dict[str, NDArray[np.float64]], rows: slice, outcome: Outcome, *, first: bool) -> None:
-    """Keep nominal use, and the lowest and highest so far; NaN stays, so a failed board shows."""
-    for name, kept in table.items():
-        low, high = outcome.low[name], outcome.high[name]
-        if first:
-            kept[0, rows], kept[1, rows], kept[2, rows] = low, low, high
-        else:
-            np.minimum(kept[1, rows], low, out=kept[1, rows])
-            np.maximum(kept[2, rows], high, out=kept[2, rows])
 
 
 def yield_bound(held: int, boards: int, *, boards_per_batch: int = 1, confidence: float = 0.95) -> float:

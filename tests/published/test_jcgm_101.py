@@ -19,8 +19,9 @@ from variation.stages import ideal, stage, with_resistors
 
 from biasband.stage import Distribution
 from biasband.variation.distributions import UNIFORM
-from biasband.variation.draws import _uniform, coordinates
+from biasband.variation.draws import coordinates
 from biasband.variation.sampling import Sample, allowed_failures, yield_bound
+from biasband.variation.streams import uniform
 
 DRAWS = 10**6
 LOW, HIGH = 0.025, 0.975
@@ -72,7 +73,7 @@ def test_uncut_normal_inputs_by_the_engine_s_streams():
     # JCGM 101, 9.2.2 itself: the streams through the inverse normal, without the cut.
     from scipy.special import ndtri
 
-    streams = [_uniform(name, slice(0, DRAWS), 1) for name in ("R1", "R2", "R3", "R4")]
+    streams = [uniform(name, slice(0, DRAWS), 1) for name in ("R1", "R2", "R3", "R4")]
     total = Sample(np.sum(ndtri(np.maximum(streams, 1e-300)), axis=0))
     assert total.quantile(LOW) == pytest.approx(-3.92, abs=0.0128 + 0.005)  # and half the last printed digit
     assert total.quantile(HIGH) == pytest.approx(3.92, abs=0.0128 + 0.005)
@@ -82,7 +83,7 @@ def standard_normal(name: str) -> np.ndarray:
     """N(0, 1) from one of the engine's streams."""
     from scipy.special import ndtri
 
-    return np.asarray(ndtri(np.maximum(_uniform(name, slice(0, DRAWS), 1), 1e-300)))
+    return np.asarray(ndtri(np.maximum(uniform(name, slice(0, DRAWS), 1), 1e-300)))
 
 
 def test_mass_calibration():
@@ -90,9 +91,9 @@ def test_mass_calibration():
     # densities (8 ± 1) and (8.00 ± 0.05)·10³ kg/m³: u = 0.0754 mg where first order gives 0.0539.
     m_R = 100_000.0 + 0.050 * standard_normal("m_R")
     small = 1.234 + 0.020 * standard_normal("small")
-    air = 1.20 + 0.10 * UNIFORM.quantile(_uniform("air", slice(0, DRAWS), 1))
-    weighed = 8e3 + 1e3 * UNIFORM.quantile(_uniform("weighed", slice(0, DRAWS), 1))
-    reference = 8e3 + 50.0 * UNIFORM.quantile(_uniform("reference", slice(0, DRAWS), 1))
+    air = 1.20 + 0.10 * UNIFORM.quantile(uniform("air", slice(0, DRAWS), 1))
+    weighed = 8e3 + 1e3 * UNIFORM.quantile(uniform("weighed", slice(0, DRAWS), 1))
+    reference = 8e3 + 50.0 * UNIFORM.quantile(uniform("reference", slice(0, DRAWS), 1))
     mass = Sample((m_R + small) * (1.0 + (air - 1.2) * (1.0 / weighed - 1.0 / reference)) - 100_000.0)
     # Half of the last printed digit and three standard deviations of 0.0754/√(2N).
     assert mass.sd == pytest.approx(0.0754, abs=0.00005 + 0.00016)

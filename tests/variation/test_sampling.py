@@ -16,10 +16,11 @@ from biasband.stage import Distribution, Limits, Stage, Supply
 from biasband.variation import sampling
 from biasband.variation.contributors import realise
 from biasband.variation.corners import corners
-from biasband.variation.draws import _uniform, coordinates, draws
+from biasband.variation.draws import coordinates, draws
 from biasband.variation.evaluation import cut_off_current
 from biasband.variation.points_of_use import NOMINAL_USE, points_of_use
 from biasband.variation.sampling import Sample, Spread, sample
+from biasband.variation.streams import uniform
 from variation.stages import (
     ROOM,
     coupled,
@@ -99,9 +100,9 @@ def test_seed_changes_the_boards_and_the_same_seed_does_not():
 
 
 def test_rows_can_be_drawn_from_anywhere():
-    whole = _uniform("R1.tolerance", slice(0, 101), 7)
+    whole = uniform("R1.tolerance", slice(0, 101), 7)
     for start, stop in ((0, 3), (1, 2), (2, 9), (5, 101), (97, 101)):
-        assert np.array_equal(_uniform("R1.tolerance", slice(start, stop), 7), whole[start:stop])
+        assert np.array_equal(uniform("R1.tolerance", slice(start, stop), 7), whole[start:stop])
 
 
 @settings(deadline=None, derandomize=True, max_examples=15, suppress_health_check=[HealthCheck.too_slow])

@@ -1,0 +1,48 @@
+"""Streams: where the uniform numbers of boards come from.
+
+Plain numbers: each has its own counter-based stream, named after it, so that adding a contributor
+does not reshuffle the others, two designs can be compared on the same draws, and the numbers do not
+depend on the chunk they are drawn in. A number shared by a batch is indexed by batch.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+
+from biasband.circuit.scenarios import Array
+
+
+@dataclass(frozen=True)
+class Number:
+    """A uniform number per board, the name of its stream; `by_batch`: alike in a batch."""
+
+    name: str
+    by_batch: bool = False
+
+
+def plain(numbers: Sequence[Number], rows: slice, *, seed: int, batch_size: int = 1) -> dict[str, Array]:
+    """Random numbers in [0, 1) of the boards at `rows`, by name, shape (N,) each."""
+    return {
+        number.name: _by_batch(number.name, rows, seed, batch_size)
+        if number.by_batch
+        else uniform(number.name, rows, seed)
+        for number in numbers
+    }
+
+
+def _by_batch(name: str, rows: slice, seed: int, size: int) -> Array:
+    """Numbers of one stream, indexed by batch: the same for all boards of a batch."""
+    batches = np.arange(rows.start, rows.stop) // size
+    drawn = uniform(name, slice(int(batches[0]), int(batches[-1]) + 1), seed)
+    return np.asarray(drawn[batches - batches[0]])
+
+
+def uniform(name: str, rows: slice, seed: int) -> Array:
+    """Numbers of one stream, in [0, 1); the counter gives four doubles a step."""
+    stream = np.random.Philox(np.random.SeedSequence([seed, *name.encode()]))
+    stream.advance(rows.start // 4)
+    skip = rows.start % 4
+    return np.asarray(np.random.Generator(stream).random(rows.stop - rows.start + skip)[skip:])
