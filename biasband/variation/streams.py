@@ -7,12 +7,19 @@ depend on the chunk they are drawn in. A number shared by a batch is indexed by 
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
+from typing import Protocol
 
 import numpy as np
 
-from biasband.circuit.scenarios import Array
+from biasband.circuit.scenarios import Array, chunks
+
+BLOCK = 2**14
+"""Boards drawn and solved in one go."""
+
+SEQUENCE = 2**16
+"""Boards of one task of a run with plain numbers."""
 
 
 @dataclass(frozen=True)
@@ -21,6 +28,51 @@ class Number:
 
     name: str
     by_batch: bool = False
+
+
+@dataclass(frozen=True)
+class Block:
+    """Some boards in a row, numbered from `first`: their uniform numbers by name, (B,) each."""
+
+    first: int
+    uniforms: Mapping[str, Array]
+
+
+class Source(Protocol):
+    """Where a run has its boards from: `tasks` pieces of work that know nothing of each other."""
+
+    @property
+    def boards(self) -> int:
+        """How many boards there are in all."""
+
+    @property
+    def tasks(self) -> int:
+        """How many tasks they are divided into."""
+
+    def blocks(self, numbers: Sequence[Number], task: int) -> Iterator[Block]:
+        """The boards of a task, block by block."""
+
+
+@dataclass(frozen=True)
+class Plain:
+    """Random boards; those of one batch, `batch_size` of them, share the numbers that are by batch."""
+
+    boards: int
+    seed: int
+    batch_size: int = 1
+
+    @property
+    def tasks(self) -> int:
+        """Sequences of boards, the last of which may be a part of one."""
+        return -(-self.boards // SEQUENCE)
+
+    def blocks(self, numbers: Sequence[Number], task: int) -> Iterator[Block]:
+        """The boards of one sequence."""
+        start = task * SEQUENCE
+        for rows in chunks(min(SEQUENCE, self.boards - start), BLOCK):
+            boards = slice(start + rows.start, start + rows.stop)
+            drawn = plain(numbers, boards, seed=self.seed, batch_size=self.batch_size)
+            yield Block(boards.start, drawn)
 
 
 def plain(numbers: Sequence[Number], rows: slice, *, seed: int, batch_size: int = 1) -> dict[str, Array]:

@@ -1,0 +1,92 @@
+"""A job: everything that a task of a run needs, in a form that travels to another process."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Mapping
+from dataclasses import dataclass
+
+from biasband.circuit.quantities import vocabulary
+from biasband.circuit.scenarios import Array
+from biasband.stage import Stage
+from biasband.variation.contributors import RIPPLE, Coordinates, use_axes
+from biasband.variation.distributions import PLAIN, UNIFORM
+from biasband.variation.draws import coordinates_from, numbers
+from biasband.variation.evaluation import Measures, evaluate
+from biasband.variation.in_use import InUse, in_use
+from biasband.variation.points_of_use import PointOfUse
+from biasband.variation.streams import Block, Source, uniform
+from biasband.variation.tally import Bound, Scale, Tally, tally
+
+
+@dataclass(frozen=True)
+class Job:
+    """A run of boards: the stage, what is looked into and between which limits, where the boards come from.
+
+    `scales` holds the measures by name; `bounds` are limits to count the boards that hold them; `points`
+    are where every board is solved, nominal use first.
+    """
+
+    stage: Stage
+    scales: Mapping[str, Scale]
+    bounds: tuple[Bound, ...]
+    points: tuple[PointOfUse, ...]
+    source: Source
+    seed: int
+    cut_off: float
+
+    @property
+    def measures(self) -> Measures:
+        """The measures themselves, which do not travel."""
+        names = tuple(resistor.name for resistor in self.stage.resistors)
+        words = vocabulary(names, with_capacitors=bool(self.stage.capacitors))
+        return {name: words[name] for name in self.scales}
+
+    def work(self, task: int) -> Tally:
+        """Tally the boards of one task."""
+        return merged(each.tally for each in self.solved(task))
+
+    def solved(self, task: int) -> Iterator[SolvedBlock]:
+        """Draw, solve and count the boards of one task, block by block."""
+        measures, taken = self.measures, numbers(self.stage)
+        for block in self.source.blocks(taken, task):
+            drawn = coordinates_from(self.stage, block.uniforms)
+            found = in_use(self.stage, drawn, measures, self.points, cut_off=self.cut_off)
+            moment = self._moment(block, drawn, measures)
+            counted = tally(found, self.scales, first_board=block.first, bounds=self.bounds, moment=moment)
+            yield SolvedBlock(block.first, drawn, found, counted)
+
+    def _moment(
+        self, block: Block, drawn: Coordinates, measures: Measures
+    ) -> Mapping[str, tuple[Array, Array]]:
+        """Lowest and highest of each bounded measure where each board is at a random moment in use."""
+        wanted = {bound.measure: measures[bound.measure] for bound in self.bounds}
+        if not wanted:
+            return {}
+        count = len(next(iter(block.uniforms.values())))
+        moment = moments(self.stage, slice(block.first, block.first + count), seed=self.seed)
+        outcome = evaluate(self.stage, {**drawn, **moment}, wanted, cut_off=self.cut_off)
+        return {name: (outcome.low[name], outcome.high[name]) for name in wanted}
+
+
+@dataclass(frozen=True)
+class SolvedBlock:
+    """Some boards in a row, numbered from `first`: coordinates by draw, values in use, and their tally."""
+
+    first: int
+    drawn: Coordinates
+    found: InUse
+    tally: Tally
+
+
+def merged(tallies: Iterator[Tally]) -> Tally:
+    """The tally of all, of which there is one at least."""
+    total = next(tallies)
+    for each in tallies:
+        total = total.merged(each)
+    return total
+
+
+def moments(stage: Stage, rows: slice, *, seed: int) -> Coordinates:
+    """A random moment in use for each board: uniform within each range, ripple as a sine meets it."""
+    shapes = {axis.name: PLAIN["sine"] if axis.name == RIPPLE else UNIFORM for axis in use_axes(stage)}
+    return {name: shape.quantile(uniform(f"moment {name}", rows, seed)) for name, shape in shapes.items()}
