@@ -20,7 +20,9 @@ from biasband.variation import rss as summing
 from biasband.variation import sampling
 from biasband.variation.contributors import realise, use_axes
 from biasband.variation.corners import BOTH, Sides
+from biasband.variation.draws import coordinates
 from biasband.variation.evaluation import Measures, cut_off_current
+from biasband.variation.outside import extended
 from biasband.variation.points_of_use import PointOfUse, points_of_use
 
 _INTERIOR_DIGITS = 2
@@ -104,14 +106,20 @@ def _held(
     boards: int,
     seed: int,
 ) -> Holding:
-    middle = nominal(stage, measures)
-    points = (*points_of_use(stage), *_interior_points(stage, found, measures))
+    middle, points = nominal(stage, measures), points_met(stage, found, measures)
+    sampled = sampling.sample(stage, measures, points, boards=boards, seed=seed, cut_off=cut_off)
+    wide = extended(
+        stage, found, measures, points, sampled.farthest,
+        lambda board: coordinates(stage, slice(board, board + 1), seed=seed), cut_off=cut_off,
+    )  # fmt: skip
+    ranges, everything = wide.corners.ranges, {**measures, **standing.measures}
     evidence = Evidence(
         nominal=middle.values,
-        corners=found,
+        corners=wide.corners,
         rss=summing.rss(stage, measures, cut_off=cut_off),
-        boards=sampling.sample(stage, measures, points, boards=boards, seed=seed, cut_off=cut_off),
-        causes=causing.causes(stage, found.ranges, {**measures, **standing.measures}, cut_off=cut_off),
+        boards=sampled,
+        causes=causing.causes(stage, ranges, everything, cut_off=cut_off),
+        outside=wide.outside,
     )
     required = [
         _clipping_noted(stage, row) for row in requirement_margins(stage.requirements, measures, evidence)
@@ -136,6 +144,11 @@ def smallness(row: Margin) -> float:
 
 def _first(values: object) -> float:
     return float(np.ravel(np.asarray(values))[0])
+
+
+def points_met(stage: Stage, found: cornering.Corners, measures: Measures) -> tuple[PointOfUse, ...]:
+    """Where every board is solved: the points of use, and those where a corner search ended inside."""
+    return (*points_of_use(stage), *_interior_points(stage, found, measures))
 
 
 def _interior_points(

@@ -10,6 +10,7 @@ from biasband.quantity import Kind
 from biasband.stage import Method
 from biasband.variation.causes import Causes
 from biasband.variation.corners import Corners, Extreme
+from biasband.variation.outside import Outside
 from biasband.variation.rss import Interval
 from biasband.variation.sampling import Boards
 
@@ -19,13 +20,17 @@ NAN = float("nan")
 
 @dataclass(frozen=True)
 class Evidence:
-    """What the three methods found for the measures of one stage, and the causes of the extremes."""
+    """What the three methods found for the measures of one stage, and the causes of the extremes.
+
+    `outside` holds the boards that lay beyond the corner limits, to which these were then widened.
+    """
 
     nominal: Mapping[str, float]
     corners: Corners
     rss: Mapping[str, Interval]
     boards: Boards
     causes: Mapping[str, Causes]
+    outside: tuple[Outside, ...] = ()
 
 
 @dataclass(frozen=True, kw_only=True)

@@ -12,7 +12,8 @@ from biasband.circuit.quantities import Quantity
 from biasband.margins.records import NAN, Evidence, Margin, Side, share
 from biasband.stage import Requirement
 from biasband.variation.corners import Extreme
-from biasband.variation.sampling import Boards, allowed_failures, yield_bound
+from biasband.variation.intervals import allowed_failures, yield_bound
+from biasband.variation.sampling import Boards
 
 
 def requirement_margins(

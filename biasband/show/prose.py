@@ -24,7 +24,8 @@ from biasband.variation.contributors import (
     TEMPERATURE,
 )
 from biasband.variation.corners import Extreme
-from biasband.variation.sampling import Boards, yield_bound
+from biasband.variation.intervals import yield_bound
+from biasband.variation.sampling import Boards
 
 MATTERS = 0.05
 """A contributor with a smaller share of the way to the worst is not named."""

@@ -2,25 +2,25 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Mapping
+from collections.abc import Iterator, Mapping, Sequence
 
 from biasband.circuit.most_swing import most_swing
 from biasband.circuit.operating_point import Region
 from biasband.circuit.reading import read
 from biasband.constants import ASSUMED_SATURATION_VOLTAGE
+from biasband.margins.holding import words
 from biasband.margins.records import Evidence
 from biasband.quantity import Kind, format_quantity
 from biasband.stage import Stage, Transistor
 from biasband.values.choosing import Design
 from biasband.variation.contributors import NEGATIVE, SUPPLY, realise
+from biasband.variation.outside import Outside
 
 DECADE = 10.0
 """Nominal currents this many times above or below the test current are far from it (common practice)."""
 
 HIGH_VOLTAGE = 60.0
 """[V] DC above which a supply can hurt (common practice; local codes decide)."""
-
-_ROUNDING = 1e-9
 
 
 def warnings_of(design: Design, nominal: Mapping[str, float], evidence: Evidence) -> tuple[str, ...]:
@@ -29,7 +29,7 @@ def warnings_of(design: Design, nominal: Mapping[str, float], evidence: Evidence
     return (
         *design.warnings,
         *_regions(evidence),
-        *_outside(evidence),
+        *outside_words(stage, evidence.outside),
         *_assumed(stage),
         *_far_from_test(stage, nominal),
         *_beyond_curve(stage, nominal, evidence),
@@ -40,20 +40,22 @@ def warnings_of(design: Design, nominal: Mapping[str, float], evidence: Evidence
 
 
 def _regions(evidence: Evidence) -> Iterator[str]:
-    for region, words in ((Region.SATURATED, "saturate"), (Region.CUT_OFF, "cut off")):
+    for region, does in ((Region.SATURATED, "saturate"), (Region.CUT_OFF, "cut off")):
         count = evidence.corners.regions.get(region, 0)
         if count:
-            yield f"{count} of {evidence.corners.count} corners {words}"
+            yield f"{count} of {evidence.corners.count} corners {does}"
 
 
-def _outside(evidence: Evidence) -> Iterator[str]:
-    """Sampled values beyond the corner limits: a defect of the corner set, never kept quiet."""
-    for name, spread in evidence.boards.spread.items():
-        found = evidence.corners.ranges[name]
-        low, high = spread.lowest_in_use.lowest, spread.highest_in_use.highest
-        slack = _ROUNDING * max(abs(found.low.value), abs(found.high.value))
-        if low < found.low.value - slack or high > found.high.value + slack:
-            yield f"{name}: a sampled board lies outside the corner limits: the corners miss the worst case"
+def outside_words(stage: Stage, outside: Sequence[Outside]) -> Iterator[str]:
+    """Boards beyond the corner limits: a defect of the corner set, never kept quiet."""
+    vocabulary = words(stage)
+    for each in outside:
+        kind = vocabulary[each.measure].kind
+        value, limit = (format_quantity(x, kind, digits=6) for x in (each.value, each.limit))
+        yield (
+            f"{each.measure}: sampled board {each.board} reaches {value}, beyond the corner limit {limit}: "
+            "the search of the corners missed it, and the limit was moved to that board"
+        )
 
 
 def _assumed(stage: Stage) -> Iterator[str]:

@@ -22,7 +22,7 @@ from biasband.margins.records import NAN, Margin
 from biasband.stage import Stage, Target
 from biasband.values.bench import CURRENT, SWING, Bench, Indices, bench, hold_sets
 from biasband.variation.draws import batch_size
-from biasband.variation.sampling import allowed_failures
+from biasband.variation.intervals import allowed_failures
 
 FINALISTS = 3
 """How many sets are held against everything and shown side by side."""

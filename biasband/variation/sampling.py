@@ -6,7 +6,6 @@ that hold it everywhere. The result is the same bytes for any chunk size.
 
 from __future__ import annotations
 
-import functools
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from functools import cached_property
@@ -19,6 +18,7 @@ from biasband.stage import Stage
 from biasband.variation.draws import batch_size, coordinates
 from biasband.variation.evaluation import Measures
 from biasband.variation.in_use import in_use
+from biasband.variation.outside import Farthest
 from biasband.variation.points_of_use import PointOfUse
 
 CHUNK = 16384
@@ -92,9 +92,23 @@ class Boards:
     boards_per_batch: int = 1
 
     @property
+    def farthest(self) -> Mapping[str, Farthest]:
+        """The lowest and the highest of all boards, by measure; none where no board solved."""
+        return {
+            name: Farthest(low.lowest, high.highest, _first(low, low.lowest), _first(high, high.highest))
+            for name, low, high in ((n, s.lowest_in_use, s.highest_in_use) for n, s in self.spread.items())
+            if not (np.isnan(low.lowest) or np.isnan(high.highest))
+        }
+
+    @property
     def batches(self) -> int:
         """How many batches the boards come from, the last of which may be a part of one."""
         return -(-self.boards // self.boards_per_batch)
+
+
+def _first(sample: Sample, value: float) -> int:
+    """The number of the first board with a value."""
+    return int(np.argmax(sample.values == value))
 
 
 def sample(
@@ -117,34 +131,3 @@ def sample(
     spread = {name: Spread(*(Sample(row) for row in kept)) for name, kept in values.items()}
     counted = {region: int(regions[region]) for region in Region if regions[region]}
     return Boards(spread, boards, seed, len(points), counted, batch_size(stage))
-
-
-def yield_bound(held: int, boards: int, *, boards_per_batch: int = 1, confidence: float = 0.95) -> float:
-    """The one-sided lower Clopper–Pearson bound of a yield: `held` of `boards` passed.
-
-    Boards of one batch are dependent, at worst all alike, so both counts are divided by the boards
-    of a batch: B = N/n batches, of which k/n failed. The beta quantile takes such fractions. That is
-    exact where the boards of a batch are all alike and conservative where they are not (a design
-    effect of n, the largest there is; Kish, "Survey Sampling", 1965, memory).
-    Source: Clopper & Pearson, "The use of confidence or fiducial limits", Biometrika 26 (1934).
-    """
-    from scipy.special import betaincinv
-
-    if held == 0:
-        return 0.0
-    failed = (boards - held) / boards_per_batch
-    return float(betaincinv(held / boards_per_batch, failed + 1.0, 1.0 - confidence))
-
-
-@functools.cache
-def allowed_failures(
-    boards: int, required: float, *, boards_per_batch: int = 1, confidence: float = 0.95
-) -> int:
-    """How many boards may fail while the bound still reaches the required yield; −1: not even none."""
-    from scipy.special import betainc
-
-    # The bound with f failures reaches `required` when P(X >= held) at that yield is at most 1 - confidence.
-    failures = np.arange(boards)
-    held = (boards - failures) / boards_per_batch
-    reaches = betainc(held, failures / boards_per_batch + 1.0, required) <= 1.0 - confidence
-    return int(np.sum(np.cumprod(reaches))) - 1

@@ -20,7 +20,8 @@ from variation.stages import ideal, stage, with_resistors
 from biasband.stage import Distribution
 from biasband.variation.distributions import UNIFORM
 from biasband.variation.draws import coordinates
-from biasband.variation.sampling import Sample, allowed_failures, yield_bound
+from biasband.variation.intervals import allowed_failures, yield_bound
+from biasband.variation.sampling import Sample
 from biasband.variation.streams import uniform
 
 DRAWS = 10**6
