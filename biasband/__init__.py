@@ -8,7 +8,8 @@ if TYPE_CHECKING:
     from biasband.errors import BadlyWritten, BiasbandError, PhysicallyImpossible, UsageError
     from biasband.signoff.drifting import drift
     from biasband.signoff.intake import read_stage
-    from biasband.signoff.study import corners, design, review, snap, spread
+    from biasband.signoff.spreading import spread
+    from biasband.signoff.study import corners, design, review, snap
     from biasband.stage import Stage
 
 _ROOMS = {
@@ -23,7 +24,7 @@ _ROOMS = {
     "read_stage": "signoff.intake",
     "review": "signoff.study",
     "snap": "signoff.study",
-    "spread": "signoff.study",
+    "spread": "signoff.spreading",
 }
 
 __all__ = [

@@ -10,12 +10,35 @@ from __future__ import annotations
 import functools
 import re
 from collections.abc import Callable, Sequence
+from contextlib import nullcontext
 from typing import TYPE_CHECKING, Annotated, Any, ParamSpec
 
 import typer
 from typer.core import TyperCommand
 
-from biasband.constants import BOARDS, MOST_BOARDS, VERSION
+from biasband.arguments import (
+    AsJson,
+    BoardCount,
+    Cluster,
+    Coldest,
+    DrawsFile,
+    Hottest,
+    Kept,
+    ManyBoards,
+    NewFile,
+    PartsFile,
+    Points,
+    Resistances,
+    Sampling,
+    Seed,
+    SeriesName,
+    StageFile,
+    StageFiles,
+    StockList,
+    Tables,
+    Until,
+)
+from biasband.constants import BOARDS, VERSION
 from biasband.errors import BiasbandError, UsageError
 
 if TYPE_CHECKING:
@@ -26,6 +49,11 @@ if TYPE_CHECKING:
 
 PASSED, NOT_PASSED, BAD_INPUT, INTERRUPTED = 0, 1, 2, 130
 
+_ENDINGS = {
+    "complete": PASSED, "good enough": PASSED, "not good enough": NOT_PASSED, "interrupted": INTERRUPTED
+}  # fmt: skip
+"""The status of a run of boards by how it ended."""
+
 app = typer.Typer(
     add_completion=False,
     pretty_exceptions_enable=False,
@@ -34,41 +62,6 @@ app = typer.Typer(
     help="From a hand-computed bias network to buyable parts and a signed-off margin table.",
 )
 
-StageFile = Annotated[str, typer.Argument(metavar="STAGE", help="A stage file (TOML).")]
-StageFiles = Annotated[
-    list[str], typer.Argument(metavar="STAGE...", help="Stage files (TOML), or folders of them.")
-]
-AsJson = Annotated[bool, typer.Option("--json", help="Write the result as JSON.")]
-BoardCount = Annotated[
-    int, typer.Option("--boards", min=1, max=MOST_BOARDS, help="How many boards are sampled.")
-]
-Seed = Annotated[int, typer.Option("--seed", min=0, help="Which random numbers are drawn.")]
-NewFile = Annotated[
-    str | None, typer.Option("--write", metavar="FILE", help="A new stage file with the values frozen.")
-]
-Resistances = Annotated[
-    list[str], typer.Argument(metavar="VALUE...", help='Such as 4k7, "130 ohm", 4K7J, 01C or "red red gold".')
-]
-SeriesName = Annotated[
-    str | None,
-    typer.Option("--series", help="A preferred series, E3 to E192, or one of --tables; else E24."),
-]
-PartsFile = Annotated[
-    str | None, typer.Option("--parts", metavar="FILE", help="A new CSV file: the parts list to order from.")
-]
-Tables = Annotated[
-    str | None, typer.Option("--tables", metavar="DIR", help="A folder of series tables of your own.")
-]
-StockList = Annotated[
-    str | None, typer.Option("--stock", metavar="FILE", help="A stock list (CSV) to choose from.")
-]
-Kept = Annotated[
-    list[str] | None,
-    typer.Option("--keep", metavar="NAME=VALUE", help="A value for this run, as in RC=3k3 (repeatable)."),
-]
-Coldest = Annotated[str | None, typer.Option("--from", metavar="T", help='The coldest, as "-40 degC".')]
-Hottest = Annotated[str | None, typer.Option("--to", metavar="T", help='The hottest, as "85 degC".')]
-Points = Annotated[int | None, typer.Option("--points", help="How many temperatures; else 11 or more.")]
 Arguments = ParamSpec("Arguments")
 
 
@@ -99,6 +92,11 @@ def _status(work: Callable[[], int]) -> int:
         return BAD_INPUT
     except KeyboardInterrupt:
         return INTERRUPTED
+    except RuntimeError as error:
+        # Where a class is being made, Python 3.11 makes a RuntimeError of an interruption.
+        if isinstance(error.__cause__, KeyboardInterrupt):
+            return INTERRUPTED
+        raise
 
 
 def _complain(text: str) -> None:
@@ -230,27 +228,35 @@ def corners(
 def spread(
     stage: StageFile,
     json: AsJson = False,
-    boards: BoardCount = BOARDS,
+    boards: ManyBoards = None,
     seed: Seed = 1,
+    sampling: Sampling = "plain",
+    until: Until = None,
+    save: DrawsFile = None,
+    cluster: Cluster = None,
     tables: Tables = None,
     stock: StockList = None,
     keep: Kept = None,
 ) -> int:
-    """Sample boards, each at every point of use: mean, deviation and quantiles of each quantity."""
-    from biasband.margins.holding import looked_into
-    from biasband.show import export, report
+    """Sample boards, each at every point of use: how far each quantity spreads, yields, and the causes."""
+    from biasband.show import report, spread_json
+    from biasband.show.draws_file import check_save, draws_file
     from biasband.show.output import bar
-    from biasband.signoff import study
+    from biasband.signoff import spreading
+    from biasband.signoff.options import boards_option
 
-    with bar(f"sampling {boards} boards") as progress:
-        read = _read(stage, tables, stock, keep)
-        drawn = study.spread(read, boards=boards, seed=seed, progress=progress)
-    _put(
-        json,
-        lambda: export.spread_json(drawn.design, drawn.boards),
-        lambda: report.spread_report(drawn.design, drawn.boards, looked_into(drawn.design.stage)),
-    )
-    return PASSED
+    most = boards_option(boards) or (BOARDS if until is None else spreading.MOST_UNTIL)
+    check_save(save, boards=most, cluster=cluster)
+    read = _read(stage, tables, stock, keep)
+    with nullcontext() if save is None else draws_file(save, boards=most) as draws:
+        found = spreading.spread(
+            read, boards=most, seed=seed, sampling=sampling, until=until, cluster=cluster,
+            keep=draws.keep if draws else None, watch=bar, notice=_complain,
+        )  # fmt: skip
+        if draws:
+            draws.settle(found.boards, partial=found.ending == "interrupted")
+    _put(json, lambda: spread_json.spread_json(found), lambda: report.spread_report(found))
+    return max(_ENDINGS[found.ending], BAD_INPUT if draws and draws.failed else PASSED)
 
 
 @command

@@ -7,6 +7,7 @@ import os
 import re
 import subprocess
 import sys
+import time
 from pathlib import Path
 
 import pytest
@@ -407,8 +408,9 @@ class Terminal:
 
 @pytest.mark.parametrize("paths", [[HIVE], [HIVE, FAILING]])
 def test_progress_goes_to_a_terminal_on_standard_error_only(monkeypatch, paths):
-    from biasband.show import output
+    from biasband.show import output, progress_bar
 
+    monkeypatch.setattr(progress_bar, "PATIENCE", 0.0)
     for name in ("NO_COLOR", "TTY_COMPATIBLE", "TTY_INTERACTIVE"):
         monkeypatch.delenv(name, raising=False)
     monkeypatch.setenv("TERM", "xterm-256color")
@@ -418,5 +420,8 @@ def test_progress_goes_to_a_terminal_on_standard_error_only(monkeypatch, paths):
     for path, progress in output.watched([str(path) for path in paths], doing="reviewing"):
         progress(0.5)
         seen.append(path)
+        deadline = time.monotonic() + 20.0
+        while f"reviewing {path}"[:30] not in terminal.text and time.monotonic() < deadline:
+            time.sleep(0.02)
     assert seen == list(map(str, paths))
     assert "reviewing" in terminal.text

@@ -13,19 +13,34 @@ from biasband.margins.holding import Holding, Nominal
 from biasband.margins.over_temperature import Failure, HeldLimit
 from biasband.margins.records import Evidence, Margin
 from biasband.margins.verdict import Verdict
+from biasband.signoff.beyond import Beyond
 from biasband.signoff.drifting import Drift, DriftStudy, LimitDrift
 from biasband.signoff.parts_list import CapacitorLine, PartLine
+from biasband.signoff.sampling_run import Run
 from biasband.signoff.snapping import Snapped, SnapStudy
-from biasband.signoff.study import CornerStudy, Review, SpreadStudy
+from biasband.signoff.spread_study import Held, SpreadStudy
+from biasband.signoff.study import CornerStudy, Review
 from biasband.values.capacitors import CapacitorChoice, CapacitorStep
 from biasband.values.choosing import Design, PartChoice
 from biasband.values.joint import Contender, Contest
 from biasband.values.pairing import Offer
 from biasband.variation.causes import Causes
 from biasband.variation.corners import Corners, Extreme, Range
+from biasband.variation.estimates import Estimate, Estimates, Figures
 from biasband.variation.finite_change import FiniteChange, Stability
+from biasband.variation.in_use import InUse
+from biasband.variation.intervals import Between
+from biasband.variation.job import Job
+from biasband.variation.monotone import Monotone
+from biasband.variation.outside import Farthest, Outside
+from biasband.variation.pick_freeze import Share, VarianceShares
+from biasband.variation.rare import Rare
 from biasband.variation.rss import Interval
 from biasband.variation.sampling import Boards, Spread
+from biasband.variation.streams import Block
+from biasband.variation.summary import Summary
+from biasband.variation.tally import Bound, Scale, Tally
+from biasband.variation.variance import VarianceCauses
 
 TEXT = (Path(__file__).parent.parent / "DEVELOPERS.md").read_text(encoding="utf-8")
 GLOSSARY = TEXT.split("## Glossary")[1].split("\n## ")[0]
@@ -36,7 +51,8 @@ RECORDS = (
     Boards, Causes, Contender, Contest, Corners, CornerStudy, Design, Evidence, Extreme, Holding, Interval,
     Margin, Nominal, NotMade, Offer, PartChoice, PartLine, Range, Review, Snapped, SnapStudy, Spread,
     SpreadStudy, Standing, Verdict, Drift, DriftStudy, Failure, FiniteChange, HeldLimit, LimitDrift,
-    Stability,
+    Stability, Between, Beyond, Block, Bound, Estimate, Estimates, Farthest, Figures, Held, InUse, Job,
+    Monotone, Outside, Rare, Run, Scale, Share, Summary, Tally, VarianceCauses, VarianceShares,
 )  # fmt: skip
 
 

@@ -14,9 +14,10 @@ import numpy as np
 from numpy.typing import NDArray
 
 from biasband.circuit.active import Bias, active_region
-from biasband.circuit.junction import flow_drift
-from biasband.circuit.network import Ports
-from biasband.circuit.newton import tangent
+from biasband.circuit.flow import flow, flow_drift
+from biasband.circuit.junction import Sheet
+from biasband.circuit.network import Impedances, Ports
+from biasband.circuit.newton import Tangent
 from biasband.circuit.scenarios import Array, Scenarios, Values
 from biasband.circuit.solution import Problem, Status, Trial, isothermal, merged
 from biasband.constants import HOTTEST_JUNCTION
@@ -51,22 +52,25 @@ _BISECTIONS = 32
 
 
 def power_slope(problem: Problem, temperature: Values, bias: Bias) -> Array:
-    """dP/dT_j [W/K] at a solved bias, resistors held: the circuit answers with both voltages.
+    """dP/dT_j [W/K] of a problem at a solved bias, resistors held: times R_θJA the thermal loop gain."""
+    at = flow(problem.laws(temperature), bias.V_BE, bias.V_BC)
+    here = Tangent.of(problem.ports, at)
+    return slope_of_power(problem.sheet, problem.ports, here, I_B=bias.I_B, I_C=bias.I_C)
 
-    From the port equations `J·dv + Z·∂i/∂T·dT = 0` and P = V_CE·I_C + V_BE·I_B. Times R_θJA it is
-    the thermal loop gain. Source: implicit differentiation of the model.
+
+def slope_of_power(sheet: Sheet, z: Impedances, here: Tangent, *, I_B: Array, I_C: Array) -> Array:
+    """dP/dT_j [W/K] at a tangent and its currents, resistors held: the circuit answers with both voltages.
+
+    From the port equations `J·dv + Z·∂i/∂T·dT = 0` and P = V_CE·I_C + V_BE·I_B.
+    Source: implicit differentiation of the model.
     """
-    ports, law = problem.ports, problem.laws(temperature)
-    V_BE, V_CE = bias.V_BE, bias.V_BE - bias.V_BC
-    here = tangent(ports, law, V_BE, bias.V_BC)
-    at, drift = here.flow, flow_drift(problem.sheet, law, here.flow, V_BE, bias.V_BC)
-    push_be, push_bc = here.solve(
-        ports.z11 * drift.base + ports.z12 * drift.collector,
-        ports.z21 * drift.base + ports.z22 * drift.collector,
-    )
-    power_be = at.collector + at.base + V_CE * at.collector_be + V_BE * at.base_be
-    power_bc = V_CE * at.collector_bc + V_BE * at.base_bc - at.collector
-    return V_CE * drift.collector + V_BE * drift.base - power_be * push_be - power_bc * push_bc
+    at, drift = here.flow, flow_drift(sheet, here.flow)
+    V_BE, V_CE = at.V_BE, at.V_BE - at.V_BC
+    push_be, push_bc = here.solve(*z.lost(drift.base, drift.collector))
+    power_be = I_C + I_B + V_CE * at.collector_be + V_BE * at.base_be
+    power_bc = V_CE * at.collector_bc + V_BE * at.base_bc - I_C
+    pushed = power_be * push_be + power_bc * push_bc
+    return np.asarray(V_CE * drift.collector + V_BE * drift.base - pushed)
 
 
 @dataclass(frozen=True)

@@ -1,13 +1,12 @@
-"""The transistor's laws: Ebers–Moll in transport form, Early effect, leakage, temperature.
+"""The transistor's laws: what its data sheet and a junction temperature make of I_S, β_F and I_CBO.
 
-Sources: Ebers & Moll, "Large-signal behavior of junction transistors", Proc. IRE 42 (1954);
-Gummel & Poon, "An integral charge control model of bipolar transistors", BSTJ 49 (1970), for the
-transport form and the Early factor; the temperature laws as the project's physics states them.
+Source: the temperature laws as the project's physics states them. The currents are in flow.py.
 """
 
 from __future__ import annotations
 
-from dataclasses import dataclass, field, replace
+from dataclasses import dataclass, field
+from functools import cached_property
 
 import numpy as np
 
@@ -23,7 +22,9 @@ from biasband.constants import (
 from biasband.stage import Transistor
 
 _VOLT_PER_KELVIN = BOLTZMANN / ELEMENTARY_CHARGE
-_LN_2 = float(np.log(2.0))
+
+LN_2 = float(np.log(2.0))
+"""Leakage doubles every so many kelvins: this much in its logarithm."""
 
 
 @dataclass(frozen=True)
@@ -70,6 +71,11 @@ class Laws:
     inverse_reverse_gain: float
     curve: GainScaling | None = field(default=None, kw_only=True)
 
+    @cached_property
+    def per_volt(self) -> Values:
+        """1/V_T [1/V]."""
+        return 1.0 / self.thermal_voltage
+
     def scaled(self, forward: Values, V_BC: Values) -> Scaled:
         """What the gain curve says, from I_S·e^{VBE/VT} [A] and V_BC [V]: at their current to the collector.
 
@@ -79,23 +85,6 @@ class Laws:
         if self.curve is None:
             return Scaled(1.0, 0.0, forward)
         return self.curve.at(forward * (1.0 - V_BC * self.inverse_early))
-
-
-@dataclass(frozen=True)
-class Flow:
-    """Terminal currents [A] and their slopes against V_BE and V_BC [S].
-
-    `forward` and `reverse` are I_S·e^{VBE/VT} and I_S·e^{VBC/VT} [A].
-    """
-
-    forward: Values
-    reverse: Values
-    base: Values
-    collector: Values
-    base_be: Values
-    base_bc: Values
-    collector_be: Values
-    collector_bc: Values
 
 
 def base_emitter_voltage(transistor: Transistor, at_25: Values, temperature: Values) -> Values:
@@ -111,7 +100,7 @@ def base_emitter_voltage(transistor: Transistor, at_25: Values, temperature: Val
     return BAND_GAP * (1.0 - ratio) + at_25 * ratio - curvature
 
 
-def _base_emitter_slope(transistor: Transistor, at_25: Values, temperature: Values) -> Values:
+def base_emitter_slope(transistor: Transistor, at_25: Values, temperature: Values) -> Values:
     """d vbe/dT [V/K] of the law above."""
     if transistor.base_emitter_drift is not None:
         return transistor.base_emitter_drift
@@ -141,7 +130,7 @@ def sheet(
 def laws(sheet: Sheet, temperature: Values) -> Laws:
     """The junction parameters at a junction temperature [K].
 
-    `I_S = I_test / early · exp(−vbe/V_T)`, `β_F = β_F25 · (T/T0)^(g·T0)`,
+    `I_S = (I_test / early) / exp(vbe/V_T)`, `β_F = β_F25 · (T/T0)^(g·T0)`,
     `I_CBO = I_CBO25 · 2^((T − T0)/D)`. Without a gain curve valid near the test current: the gain does
     not fall at low or high current.
     """
@@ -149,98 +138,16 @@ def laws(sheet: Sheet, temperature: Values) -> Laws:
     V_T = _VOLT_PER_KELVIN * temperature
     vbe = base_emitter_voltage(transistor, sheet.base_emitter_voltage, temperature)
     exponent = transistor.gain_drift * REFERENCE_TEMPERATURE
-    folds = _LN_2 * (temperature - REFERENCE_TEMPERATURE) / transistor.leakage_doubling
+    folds = (temperature - REFERENCE_TEMPERATURE) * (LN_2 / transistor.leakage_doubling)
     return Laws(
         temperature=temperature,
         reference_voltage=vbe,
         reference_current=sheet.reference_current,
         thermal_voltage=V_T,
-        saturation_current=sheet.reference_current * np.exp(-vbe / V_T),
+        saturation_current=sheet.reference_current / np.exp(vbe / V_T),
         forward_gain=sheet.forward_gain * np.exp(exponent * np.log(temperature / REFERENCE_TEMPERATURE)),
         leakage=sheet.leakage * np.exp(folds),
         inverse_early=0.0 if transistor.early_voltage is None else 1.0 / transistor.early_voltage,
         inverse_reverse_gain=1.0 / transistor.reverse_gain,
         curve=sheet.curve,
-    )
-
-
-def flow(law: Laws, V_BE: Values, V_BC: Values) -> Flow:
-    """Terminal currents [A] and their slopes at the junction voltages [V].
-
-        I_C = I_S·(e^{VBE/VT} − e^{VBC/VT})·(1 − VBC/V_A) − (I_S/β_R)·(e^{VBC/VT} − 1) + I_CBO
-        I_B = (I_S/β_F)·(e^{VBE/VT} − 1) + (I_S/β_R)·(e^{VBC/VT} − 1) − I_CBO
-
-    With a gain curve, β_F·c(I) takes the place of β_F, I = I_S·e^{VBE/VT}·(1 − VBC/V_A).
-    Source: Ebers & Moll 1954; Gummel & Poon 1970 (see the module).
-    """
-    per_volt = 1.0 / law.thermal_voltage
-    I_S = law.saturation_current
-    forward = I_S * np.exp(V_BE * per_volt)
-    reverse = I_S * np.exp(V_BC * per_volt)
-    transport = forward - reverse
-    early = 1.0 - V_BC * law.inverse_early
-    reverse_base = (reverse - I_S) * law.inverse_reverse_gain
-    g_reverse = reverse * per_volt
-    g_base = g_reverse * law.inverse_reverse_gain
-    at = Flow(
-        forward=forward,
-        reverse=reverse,
-        base=(forward - I_S) / law.forward_gain + reverse_base - law.leakage,
-        collector=transport * early - reverse_base + law.leakage,
-        base_be=forward * per_volt / law.forward_gain,
-        base_bc=g_base,
-        collector_be=forward * per_volt * early,
-        collector_bc=-g_reverse * early - transport * law.inverse_early - g_base,
-    )
-    return at if law.curve is None else _bent(law, at, V_BC)
-
-
-def _bent(law: Laws, at: Flow, V_BC: Values) -> Flow:
-    """The flow with the gain curve in it: only the base current's forward part knows it.
-
-    d ln I is dV_BE/V_T, and −F/V_A·dV_BC/I; d ln c is the curve's slope times that.
-    """
-    scaled, per_volt = law.scaled(at.forward, V_BC), 1.0 / law.thermal_voltage
-    plain = (at.forward - law.saturation_current) / law.forward_gain
-    extra, bend = 1.0 / scaled.factor - 1.0, plain * scaled.slope / scaled.factor
-    return replace(
-        at,
-        base=at.base + plain * extra,
-        base_be=at.base_be * (1.0 + extra) - bend * per_volt,
-        base_bc=at.base_bc + bend * law.inverse_early * at.forward / scaled.current,
-    )
-
-
-@dataclass(frozen=True)
-class FlowDrift:
-    """How the terminal currents move with the junction temperature at fixed voltages [A/K]."""
-
-    base: Values
-    collector: Values
-
-
-def flow_drift(sheet: Sheet, law: Laws, at: Flow, V_BE: Values, V_BC: Values) -> FlowDrift:
-    """∂I_B/∂T and ∂I_C/∂T [A/K] at fixed junction voltages, `at` the flow there.
-
-    From d ln I_S/dT = (vbe/T − dvbe/dT)/V_T, d ln β_F/dT = g·T0/T and d ln I_CBO/dT = ln 2/D. The gain
-    curve's current rises as the forward one does.
-    """
-    transistor, T = sheet.transistor, law.temperature
-    I_S, vbe_slope = law.saturation_current, _base_emitter_slope(transistor, sheet.base_emitter_voltage, T)
-    I_S_slope = (law.reference_voltage / T - vbe_slope) / law.thermal_voltage
-    gain_slope = transistor.gain_drift * REFERENCE_TEMPERATURE / T
-    thermal = 1.0 / (law.thermal_voltage * T)
-    forward_T = at.forward * (I_S_slope - V_BE * thermal)
-    reverse_T = at.reverse * (I_S_slope - V_BC * thermal)
-    reverse_base_T = (reverse_T - I_S * I_S_slope) * law.inverse_reverse_gain
-    leakage_T = law.leakage * (_LN_2 / transistor.leakage_doubling)
-    base_T = (forward_T - I_S * I_S_slope - (at.forward - I_S) * gain_slope) / law.forward_gain
-    if law.curve is not None:
-        scaled = law.scaled(at.forward, V_BC)
-        bend = scaled.slope * (at.forward - I_S) * (I_S_slope - V_BE * thermal)
-        base_T = (base_T - bend / law.forward_gain) / scaled.factor
-    early = 1.0 - V_BC * law.inverse_early
-    return FlowDrift(
-        base=base_T + reverse_base_T - leakage_T,
-        collector=(forward_T - reverse_T) * early - reverse_base_T + leakage_T,
     )

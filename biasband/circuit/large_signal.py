@@ -6,20 +6,19 @@ against the source's EMF follows point by point from the full equations, and its
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
 from biasband.circuit.active import Bias
-from biasband.circuit.network import Ports, condense
+from biasband.circuit.network import Network, Ports, Rails, condense
 from biasband.circuit.reading import Reading
 from biasband.circuit.scenarios import Array, Values
-from biasband.circuit.signal import voltage_gain
 from biasband.circuit.solution import Problem, isothermal
 from biasband.circuit.topology import Node, Wire, Wiring
-from biasband.stage import Transistor
+from biasband.stage import Signal, Transistor
 
 _PHASES, _HARMONICS = 16, 9
 """Points of half a period, and the highest harmonic that they are asked for."""
@@ -30,8 +29,11 @@ _WIDENINGS, _WIDER, _CHORDS = 24, 1.1, 5
 _SHY = 0.02
 """A swing missed by no more than this share is reached: V_CE(sat) is the sheet's limit, no sharp corner."""
 
-_STIFF, STIFF = "stiff source", 1e-3
+_STIFF = 1e-3
 """[Ω] A source without a resistance: some nanovolts are lost in so much."""
+
+_SOURCE, _LOAD = "source", "load"
+"""The names under which source and load stand among the resistances."""
 
 _STEPS, _LEAST_START, _MOST_START = 6, 1e-6, 3.0
 """Newton steps at each point, and where they start from, as a share of the current at rest."""
@@ -45,35 +47,32 @@ class LargeSignal:
     """N scenarios of a stage with its capacitors charged: rails [V] and wiring for a moving source."""
 
     reading: Reading
-    wiring: Wiring
+    network: Network
     rails: Mapping[Node, Values]
     rest: Array
 
     @classmethod
     def of(cls, reading: Reading) -> LargeSignal:
         """The stage at rest at its quiet point, in the transistor's frame."""
-        volts, wiring = reading.quiet_volts, reading.coupled.wiring
+        volts, output = reading.quiet_volts, reading.wiring.output
         charged = {
             Node.SOURCE: volts[Node.BASE],
-            Node.LOAD: volts[wiring.output],
+            Node.LOAD: volts[output],
             Node.BYPASS: _bypass_voltage(reading),
         }
         rails = {**reading.quiet_rails, **charged}
-        return cls(reading, _charged(reading), rails, np.asarray(volts[wiring.output]))
+        return cls(reading, _charged(reading), rails, np.asarray(volts[output]))
 
     def moved(self, emf: Values) -> Array:
         """How far [V] the output moves while the source's EMF is off its rest by `emf` [V], (N,)."""
-        ports = self._ports(emf)
-        bias = self._solved(ports)
-        output = ports.voltage(self.wiring.output, bias.I_B, bias.I_C)
-        return np.where(bias.solved, output - self.rest, np.nan)
+        output, bias = self.reading.wiring.output, self.bias(emf)
+        currents = {Node.BASE: bias.I_B, Node.COLLECTOR: bias.I_C, Node.EMITTER: bias.I_B + bias.I_C}
+        volts = self.network.loaded(output, self.network.open(output, self._rails(emf)), currents)
+        return np.where(bias.solved, volts - self.rest, np.nan)
 
     def bias(self, emf: Values) -> Bias:
         """Junction voltages and terminal currents while the source's EMF is off its rest [V]."""
-        return self._solved(self._ports(emf))
-
-    def _solved(self, ports: Ports) -> Bias:
-        reading = self.reading
+        reading, ports = self.reading, self.network.ports(self._rails(emf))
         assert isinstance(reading.stage.transistor, Transistor)
         problem = Problem.of(ports, reading.stage.transistor, reading.scenarios)
         with np.errstate(all="ignore"):
@@ -81,40 +80,37 @@ class LargeSignal:
 
     def _most(self, ports: Ports) -> Array:
         """The most [A] that the forward current can be: nothing of the drive lost in the network."""
-        law = self.reading.law
+        law = self.reading.quiet_flow.law
         with np.errstate(over="ignore"):
             folds = (ports.open_be - law.reference_voltage) / law.thermal_voltage
             most = law.reference_current * np.exp(folds)
         rest = self.reading.quiet.collector_current
         return np.asarray(np.clip(most, _LEAST_START * rest, _MOST_START * rest))
 
-    def _ports(self, emf: Values) -> Ports:
-        rails = {**self.rails, Node.SOURCE: self.rails[Node.SOURCE] + emf}
-        return condense(self.wiring, {_STIFF: STIFF, **self.reading.coupled.resistances}, rails)
+    def _rails(self, emf: Values) -> Rails:
+        return {**self.rails, Node.SOURCE: self.rails[Node.SOURCE] + emf}
 
 
-def _charged(reading: Reading) -> Wiring:
-    """The signal's wiring, load and bypassed emitter at the far ends of their capacitors."""
-    coupled, resting = reading.coupled.wiring, reading.wiring
-    bypassed = reading.stage.signal is not None and reading.stage.signal.bypassed
-    wires = []
-    for wire in coupled.wires:
-        other = Node.LOAD if wire not in resting.wires and wire.other is Node.GROUND else wire.other
-        if bypassed and wire.node is Node.EMITTER and other is not Node.LOAD:
-            other = Node.BYPASS
-        wires.append(Wire(wire.parts, wire.node, other))
-    ties = dict(coupled.ties)
-    if ties.pop(Node.BASE, None) is Node.SOURCE:
-        wires.append(Wire((_STIFF,), Node.BASE, Node.SOURCE))
-    if Node.EMITTER in ties and Node.EMITTER not in resting.ties:
-        ties[Node.EMITTER] = Node.BYPASS
-    return Wiring(tuple(wires), ties, coupled.output)
+def _charged(reading: Reading) -> Network:
+    """The signal's network: source, load and a bypassed emitter end at their capacitors' far ends."""
+    asked, shorted = reading.stage.signal or Signal(), reading.shorted_wiring
+    ohms = {**reading.scenarios.resistances, _SOURCE: asked.source_resistance or _STIFF}
+    wires = [
+        Wire(wire.parts, wire.node, Node.BYPASS) if asked.bypassed and wire.node is Node.EMITTER else wire
+        for wire in shorted.wires
+    ]
+    wires.append(Wire((_SOURCE,), Node.BASE, Node.SOURCE))
+    if asked.load is not None:
+        ohms[_LOAD] = asked.load
+        wires.append(Wire((_LOAD,), shorted.output, Node.LOAD))
+    tied_anew = shorted.ties.keys() - reading.wiring.ties.keys()
+    ties = {**shorted.ties, **dict.fromkeys(tied_anew, Node.BYPASS)}
+    return condense(Wiring(tuple(wires), ties, shorted.output), ohms)
 
 
 def _bypass_voltage(reading: Reading) -> Values:
     """Where the bypass capacitor holds its end of the emitter resistor: below the part not bypassed."""
-    current = reading.quiet.base_current + reading.quiet.collector_current
-    return reading.quiet_volts[Node.EMITTER] - reading.unbypassed * current
+    return reading.quiet_volts[Node.EMITTER] - reading.unbypassed * reading.quiet.emitter_current
 
 
 def distortion(reading: Reading, swing: Values) -> Array:
@@ -134,12 +130,20 @@ def distortion(reading: Reading, swing: Values) -> Array:
     large, wanted = LargeSignal.of(reading), np.broadcast_to(np.asarray(swing, dtype=float), count)
     drive = _drive(large, wanted)
     phase = (np.arange(_PHASES) + 0.5) * np.pi / _PHASES
-    moved = np.stack([large.moved(drive.emf * np.cos(angle)) for angle in phase])
-    harmonics = [np.tensordot(np.cos(n * phase), moved, axes=1) for n in range(1, _HARMONICS + 1)]
+    moved = [large.moved(drive.emf * np.cos(angle)) for angle in phase]
+    harmonics = [_weighted(np.cos(n * phase), moved) for n in range(1, _HARMONICS + 1)]
     with np.errstate(all="ignore"):
         ratio = np.sqrt(sum(harmonic**2 for harmonic in harmonics[1:])) / np.abs(harmonics[0])
     solved = ~np.isnan(wanted) & np.isfinite(large.rest)
     return np.where(solved, np.where(drive.reaches, ratio, CANNOT), np.nan)
+
+
+def _weighted(weights: Array, moved: Sequence[Array]) -> Array:
+    """Σ weight·moved, in this order: a matrix product's order, and so its bytes, depend on how many N are."""
+    total = np.zeros_like(moved[0])
+    for weight, each in zip(weights, moved, strict=True):
+        total += weight * each
+    return total
 
 
 @dataclass(frozen=True)
@@ -156,7 +160,7 @@ def _drive(large: LargeSignal, swing: Array) -> _Drive:
     def reached(emf: Array) -> Array:
         return np.asarray(0.5 * np.abs(large.moved(emf) - large.moved(-emf)))
 
-    gain = np.abs(np.asarray(voltage_gain(large.reading.coupled, large.reading.law, large.reading.quiet)))
+    gain = np.abs(large.reading.coupled.voltage_gain)
     low, high = np.zeros_like(swing), swing / gain
     least, most = np.zeros_like(swing), reached(high)
     climbing = np.ones(swing.shape, dtype=bool)

@@ -8,15 +8,16 @@ the place of resistances.
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 from typing import cast
 
 import numpy as np
 from numpy.typing import NDArray
 
-from biasband.circuit import signal
+from biasband.circuit.network import condense, total
 from biasband.circuit.reading import Reading
 from biasband.circuit.scenarios import Array, Values
+from biasband.circuit.signal import Coupled, Linear
 from biasband.circuit.topology import Node, Wire, Wiring
 from biasband.coupling import BYPASS, INPUT, OUTPUT, Signal
 
@@ -29,6 +30,9 @@ _OCTAVE, _OCTAVES = np.log(2.0), 70
 _STEPS, _CLOSE = 80, 1e-12
 """Steps within the interval at most, and the level or the interval that is none any more."""
 
+_SOURCE, _LOAD = "source", "load"
+"""The names under which source and load stand among the resistances."""
+
 Level = Callable[[Array], Array]
 """How far the gain, in its logarithm, is above the corner's, at the logarithm of a frequency; (N,) each."""
 
@@ -40,24 +44,36 @@ def seen_resistances(reading: Reading) -> Mapping[str, Values]:
     Source: short-circuit time constants; Gray & Meyer, "Analysis and Design of Analog Integrated
     Circuits" (memory).
     """
-    asked, coupled, law, point = _asked(reading), reading.coupled, reading.law, reading.quiet
-    seen = {INPUT: asked.source_resistance + signal.input_resistance(coupled, law, point)}
+    asked, coupled = _asked(reading), reading.coupled
+    seen = {INPUT: asked.source_resistance + coupled.input_resistance}
     if asked.load is not None:
-        seen[OUTPUT] = asked.load + signal.output_resistance(coupled, law, point)
+        seen[OUTPUT] = asked.load + coupled.output_resistance
     if asked.bypassed:
         seen[BYPASS] = _across_bypass(reading, asked)
     return seen
 
 
 def _across_bypass(reading: Reading, asked: Signal) -> Values:
-    """RE or RE2, in parallel with the emitter and whatever of its resistor is not bypassed."""
-    ohms = reading.scenarios.resistances
-    *before, across = _emitter_wire(reading.wiring).parts
-    plain = signal.couple(reading.wiring, replace(asked, bypassed=False), ohms)
-    driven = plain.with_quiet_source().tied_to_source(Node.EMITTER, without=across)
-    emitter = signal.driving_point(driven, reading.law, reading.quiet, Node.EMITTER)
-    path = sum((ohms[part] for part in before), start=emitter)
-    return 1.0 / (1.0 / path + 1.0 / ohms[across])
+    """RE or RE2 with the emitter and whatever of its resistor is not bypassed, source and load connected.
+
+    With the share s of the resistor that is bypassed, the rest of it, and the emitter's node unbypassed:
+    `s²·r_node + s·rest`.
+    """
+    ohms = {**reading.scenarios.resistances, _SOURCE: asked.source_resistance}
+    wires, ties = [*reading.wiring.wires], dict(reading.wiring.ties)
+    if asked.load is not None:
+        ohms[_LOAD] = asked.load
+        wires.append(Wire((_LOAD,), reading.wiring.output, Node.GROUND))
+    if asked.source_resistance > 0.0:
+        wires.append(Wire((_SOURCE,), Node.BASE, Node.GROUND))
+    else:
+        ties[Node.BASE] = Node.GROUND
+    network = condense(Wiring(tuple(wires), ties, reading.wiring.output), ohms)
+    node = Linear.of(network, reading.quiet_flow).injected(Node.EMITTER)[Node.EMITTER]
+    resistor = _emitter_wire(reading.wiring)
+    across = ohms[resistor.parts[-1]]
+    share, rest = across / total(resistor, ohms), total(resistor, ohms) - across
+    return share * share * node + share * rest
 
 
 def _asked(reading: Reading) -> Signal:
@@ -71,21 +87,18 @@ def _emitter_wire(wiring: Wiring) -> Wire:
 def gain_at(reading: Reading, frequency: Values) -> NDArray[np.complex128]:
     """From the source's EMF to the load, or to the output without one, at a frequency [Hz]; shape (N,)."""
     s, asked = 2j * np.pi * np.asarray(frequency), _asked(reading)
-    ohms, farads = reading.scenarios.resistances, reading.scenarios.capacitances
-    changed = {signal.SOURCE: asked.source_resistance + 1.0 / (s * farads[INPUT])}
-    wires = [*reading.wiring.wires, Wire((signal.SOURCE,), Node.BASE, Node.SOURCE)]
-    share: NDArray[np.complex128] | float = 1.0
+    farads = reading.scenarios.capacitances
+    # Neither the network nor the two-port minds that these resistances are complex.
+    source = cast(Values, asked.source_resistance + 1.0 / (s * farads[INPUT]))
+    load, share, stage = None, cast(Values, 1.0), reading.linear
     if asked.load is not None:
-        changed[signal.LOAD] = asked.load + 1.0 / (s * farads[OUTPUT])
-        wires.append(Wire((signal.LOAD,), reading.wiring.output, Node.GROUND))
-        share = asked.load / changed[signal.LOAD]
+        load = cast(Values, asked.load + 1.0 / (s * farads[OUTPUT]))
+        share = asked.load / load
     if asked.bypassed:
-        across = _emitter_wire(reading.wiring).parts[-1]
-        changed[across] = 1.0 / (1.0 / ohms[across] + s * farads[BYPASS])
-    # The nodal equations do not mind that these numbers are complex.
-    impedances = {**ohms, **cast(Mapping[str, Values], changed)}
-    coupled = signal.Coupled(Wiring(tuple(wires), reading.wiring.ties, reading.wiring.output), impedances)
-    gain = signal.voltage_gain(coupled, reading.law, reading.quiet)
+        ohms, across = reading.scenarios.resistances, _emitter_wire(reading.wiring).parts[-1]
+        beside = cast(Values, 1.0 / (1.0 / ohms[across] + s * farads[BYPASS]))
+        stage = Linear.of(condense(reading.wiring, {**ohms, across: beside}), reading.quiet_flow)
+    gain = Coupled.of(stage, reading.wiring.output, source=source, load=load).voltage_gain
     return np.asarray(share * gain, dtype=np.complex128)
 
 
@@ -101,7 +114,7 @@ def low_corner_frequency(reading: Reading) -> Array:
     if not reading.scenarios.capacitances:
         return np.full(reading.point.status.shape, np.nan)
     with np.errstate(all="ignore"):
-        midband = signal.voltage_gain(reading.coupled, reading.law, reading.quiet)
+        midband = reading.coupled.voltage_gain
         corner = np.log(np.abs(midband)) - _HALF_POWER
 
         def level(log_frequency: Array) -> Array:

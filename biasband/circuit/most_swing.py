@@ -5,7 +5,6 @@ from __future__ import annotations
 import numpy as np
 
 from biasband.circuit.network import total
-from biasband.circuit.quantities import output_conductance
 from biasband.circuit.reading import Reading
 from biasband.circuit.scenarios import Array
 from biasband.circuit.topology import Node
@@ -23,7 +22,7 @@ def most_swing(reading: Reading) -> Array:
     Source: the load line, as in any text on electronic circuits ("common practice").
     """
     ohms = reading.scenarios.resistances
-    r_ac = 1.0 / output_conductance(reading)
+    r_ac = 1.0 / reading.output_conductance
     beside = 0.0 if reading.wiring.output is Node.EMITTER else reading.unbypassed
     in_line = ((Node.COLLECTOR, Node.COLLECTOR_RAIL), (Node.EMITTER, Node.EMITTER_RAIL))
     R_dc = sum((total(w, ohms) for w in reading.wiring.wires if (w.node, w.other) in in_line), start=0.0)

@@ -8,9 +8,11 @@ the collector rail is always the higher one and the laws of the NPN transistor h
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, fields
+from functools import cached_property
 
 from biasband.circuit.scenarios import Rows, Scenarios, Values, rows_of
+from biasband.circuit.structure import is_zero, minus, plus, times
 from biasband.circuit.topology import TERMINALS, Node, Wire, Wiring
 from biasband.stage import Polarity
 
@@ -19,31 +21,32 @@ Rails = Mapping[Node, Values]
 
 
 @dataclass(frozen=True)
-class Ports:
-    """A linear network seen from the junctions: `v = open − Z·i`, v = (V_BE, V_BC), i = (I_B, I_C).
+class Impedances:
+    """What the junctions lose in a network: `Z·i`, i = (I_B, I_C); [Ω], shape (N,) or numbers."""
 
-    `open_be`, `open_bc` [V] and `z11` … `z22` [Ω] have shape (N,) or are numbers. `node_open` [V]
-    and `node_z` [Ω] give each terminal's own voltage, `node_open − node_z[0]·I_B − node_z[1]·I_C`.
-    """
-
-    open_be: Values
-    open_bc: Values
     z11: Values
     z12: Values
     z21: Values
     z22: Values
-    node_open: Mapping[Node, Values]
-    node_z: Mapping[Node, tuple[Values, Values]]
+
+    def lost(self, base: Values, collector: Values) -> tuple[Values, Values]:
+        """Z·(base, collector): by how much (V_BE, V_BC) [V] fall where the transistor draws these [A]."""
+        return (
+            plus(times(self.z11, base), times(self.z12, collector)),
+            plus(times(self.z21, base), times(self.z22, collector)),
+        )
+
+
+@dataclass(frozen=True)
+class Ports(Impedances):
+    """A linear network seen from the junctions: `v = open − Z·i`, v = (V_BE, V_BC); open voltages [V]."""
+
+    open_be: Values
+    open_bc: Values
 
     def part(self, rows: Rows) -> Ports:
         """The network of the scenarios at `rows`."""
-        plain = (rows_of(getattr(self, name), rows) for name in _PLAIN_PORTS)
-        open_be, open_bc, z11, z12, z21, z22 = plain
-        return Ports(
-            open_be, open_bc, z11, z12, z21, z22,
-            node_open={node: rows_of(volts, rows) for node, volts in self.node_open.items()},
-            node_z={node: (rows_of(b, rows), rows_of(c, rows)) for node, (b, c) in self.node_z.items()},
-        )  # fmt: skip
+        return Ports(**{each.name: rows_of(getattr(self, each.name), rows) for each in fields(Ports)})
 
     def currents(self, V_BE: Values, V_BC: Values) -> tuple[Values, Values]:
         """(I_B, I_C) [A] that the network drives with both junction voltages [V] held: Z⁻¹·(open − v)."""
@@ -54,13 +57,62 @@ class Ports:
             (self.z11 * over_bc - self.z21 * over_be) / determinant,
         )
 
-    def voltage(self, node: Node, base_current: Values, collector_current: Values) -> Values:
-        """Voltage [V] of a terminal while the transistor draws these currents [A]."""
-        z_base, z_collector = self.node_z[node]
-        return self.node_open[node] - z_base * base_current - z_collector * collector_current
 
+@dataclass(frozen=True)
+class Network:
+    """A wired network seen from the transistor's terminals, every other node eliminated.
 
-_PLAIN_PORTS = ("open_be", "open_bc", "z11", "z12", "z21", "z22")
+    `ohms[a][b]` [Ω]: how far terminal a rises per ampere into terminal b; nothing where it is missing.
+    `feeds[a][r]` [S]: what joins terminal a to rail r; a terminal that has a rail's voltage while the
+    transistor draws nothing stands in `held` instead.
+    """
+
+    ohms: Mapping[Node, Mapping[Node, Values]]
+    feeds: Mapping[Node, Mapping[Node, Values]]
+    held: Mapping[Node, Node]
+
+    @cached_property
+    def impedances(self) -> Impedances:
+        """What the junctions see, V_BE above and V_BC below: I_B and I_C are put into the emitter again."""
+        return Impedances(
+            self._fall(Node.EMITTER, Node.BASE), self._fall(Node.EMITTER, Node.COLLECTOR),
+            self._fall(Node.COLLECTOR, Node.BASE), self._fall(Node.COLLECTOR, Node.COLLECTOR),
+        )  # fmt: skip
+
+    def _fall(self, other: Node, drawn: Node) -> Values:
+        """By how much base to `other` [V] falls per ampere drawn from a terminal and put into the emitter."""
+
+        def ohms(node: Node, into: Node) -> Values:
+            return self.ohms[node].get(into, 0.0)
+
+        falls = plus(ohms(Node.BASE, drawn), ohms(other, Node.EMITTER))
+        return minus(falls, plus(ohms(Node.BASE, Node.EMITTER), ohms(other, drawn)))
+
+    def ports(self, rails: Rails) -> Ports:
+        """What the junctions see at these voltages of the rails."""
+        z = self.impedances
+        base, collector, emitter = (self.open(node, rails) for node in TERMINALS)
+        return Ports(z.z11, z.z12, z.z21, z.z22, minus(base, emitter), minus(base, collector))
+
+    def open(self, node: Node, rails: Rails) -> Values:
+        """Voltage [V] of a terminal while the transistor draws nothing; a rail not named is at 0 V."""
+        if node in self.held:
+            return rails.get(self.held[node], 0.0)
+        volts: Values = 0.0
+        for other, ohms in self.ohms[node].items():
+            driven: Values = 0.0
+            for rail, siemens in self.feeds[other].items():
+                driven = plus(driven, times(siemens, rails.get(rail, 0.0)))
+            volts = plus(volts, times(driven, ohms))
+        return volts
+
+    def loaded(self, node: Node, open_voltage: Values, currents: Mapping[Node, Values]) -> Values:
+        """Voltage [V] of a terminal while I_B and I_C [A] are drawn and I_E is put in, from its open one."""
+        volts = open_voltage
+        for other, ohms in self.ohms[node].items():
+            change = times(ohms, currents[other])
+            volts = plus(volts, change) if other is Node.EMITTER else minus(volts, change)
+        return volts
 
 
 def sign(polarity: Polarity) -> float:
@@ -83,109 +135,85 @@ def supply_excitation(polarity: Polarity) -> Rails:
     return {**still, moving: sign(polarity)}
 
 
-def condense(wiring: Wiring, resistances: Mapping[str, Values], rail_voltages: Rails) -> Ports:
+def condense(wiring: Wiring, resistances: Mapping[str, Values]) -> Network:
     """Eliminate the nodes of a wired network.
 
-    Nodal analysis, G·v = J − i, solved for three right-hand sides by elimination without pivoting
-    (G is a diagonally dominant M-matrix). Entries that are structurally zero cost nothing.
+    Nodal analysis, G·v = J + i, inverted by elimination without pivoting (G is a diagonally dominant
+    M-matrix). Entries that are structurally zero cost nothing, nor does a terminal that is tied to a
+    rail or that one wire alone joins to it.
     Source: nodal analysis and elimination as in any text on circuit theory ("common practice").
     """
-    solved: dict[Node, list[Values]] = {}
-    known = dict(rail_voltages)
-    for node, rail in wiring.ties.items():
-        known[node] = rail_voltages[rail]
-        solved[node] = [known[node], 0.0, 0.0]
+    ties = wiring.ties
+    ohms: dict[Node, Mapping[Node, Values]] = {node: {} for node in ties}
+    held = dict(ties)
     for node in TERMINALS:
-        lone = _lone_wire(wiring, node, known)
+        lone = _lone_wire(wiring, node)
         if lone is not None:
-            ohms = total(lone, resistances)
-            solved[node] = [known[lone.other], *(_product(share, ohms) for share in _drawn(node))]
-    free = [node for node in TERMINALS if node not in solved]
+            ohms[node] = {node: total(lone, resistances)}
+            held[node] = ties.get(lone.other, lone.other)
+    free = [node for node in TERMINALS if node not in held]
+    feeds: dict[Node, dict[Node, Values]] = {node: {} for node in free}
     matrix: dict[tuple[Node, Node], Values] = {(row, column): 0.0 for row in free for column in free}
-    currents: dict[Node, Values] = dict.fromkeys(free, 0.0)
     for wire in wiring.wires:
-        _stamp(wire, resistances, known, matrix, currents)
-    columns = [[currents[node], *_drawn(node)] for node in free]
-    _eliminate([[matrix[row, column] for column in free] for row in free], columns)
-    return _ports({**solved, **dict(zip(free, columns, strict=True))})
+        _stamp(wire, resistances, ties, matrix, feeds)
+    inverse = _inverse([[matrix[row, column] for column in free] for row in free])
+    ohms |= {node: dict(zip(free, row, strict=True)) for node, row in zip(free, inverse, strict=True)}
+    return Network(ohms, feeds, held)
 
 
-def _lone_wire(wiring: Wiring, node: Node, known: Mapping[Node, Values]) -> Wire | None:
+def _lone_wire(wiring: Wiring, node: Node) -> Wire | None:
     """The wire of a terminal that one wire joins to a known voltage: nothing to eliminate."""
     wires = [wire for wire in wiring.wires if node in (wire.node, wire.other)]
-    return wires[0] if len(wires) == 1 and node not in known and wires[0].other in known else None
+    known = node not in wiring.ties and len(wires) == 1 and _is_known(wires[0].other, wiring.ties)
+    return wires[0] if known else None
 
 
-def _drawn(node: Node) -> tuple[float, float]:
-    """What the transistor draws from a node per ampere of I_B and of I_C (I_E = I_B + I_C flows in)."""
-    return {Node.BASE: (1.0, 0.0), Node.COLLECTOR: (0.0, 1.0), Node.EMITTER: (-1.0, -1.0)}[node]
+def _is_known(node: Node, ties: Mapping[Node, Node]) -> bool:
+    """Whether a node's voltage is that of a rail."""
+    return node in ties or node not in TERMINALS
 
 
 def _stamp(
     wire: Wire,
     resistances: Mapping[str, Values],
-    known: Mapping[Node, Values],
+    ties: Mapping[Node, Node],
     matrix: dict[tuple[Node, Node], Values],
-    currents: dict[Node, Values],
+    feeds: dict[Node, dict[Node, Values]],
 ) -> None:
     """Add one wire's conductance to the nodal equations."""
-    if wire.node not in currents and wire.other not in currents:
+    if wire.node not in feeds and wire.other not in feeds:
         return
     conductance = 1.0 / total(wire, resistances)
     for here, there in ((wire.node, wire.other), (wire.other, wire.node)):
-        if here not in currents:
+        if here not in feeds:
             continue
-        matrix[here, here] = matrix[here, here] + conductance
-        if there in currents:
-            matrix[here, there] = matrix[here, there] - conductance
-        elif not _is_zero(known[there]):
-            currents[here] = currents[here] + conductance * known[there]
+        matrix[here, here] = plus(matrix[here, here], conductance)
+        if there in feeds:
+            matrix[here, there] = minus(matrix[here, there], conductance)
+        else:
+            rail = ties.get(there, there)
+            feeds[here][rail] = plus(feeds[here].get(rail, 0.0), conductance)
 
 
-def _eliminate(matrix: list[list[Values]], columns: list[list[Values]]) -> None:
-    """Gauss–Jordan in place: afterwards `columns` holds the solution."""
+def _inverse(matrix: list[list[Values]]) -> list[list[Values]]:
+    """Gauss–Jordan: the columns that begin as the unit matrix end as the inverse."""
     size = len(matrix)
+    columns: list[list[Values]] = [[float(row == column) for column in range(size)] for row in range(size)]
     for pivot in range(size):
         inverse = 1.0 / matrix[pivot][pivot]
-        others = [row for row in range(size) if row != pivot and not _is_zero(matrix[row][pivot])]
+        others = [row for row in range(size) if row != pivot and not is_zero(matrix[row][pivot])]
         if others:
-            matrix[pivot] = [_product(entry, inverse) for entry in matrix[pivot]]
-        columns[pivot][:] = [_product(entry, inverse) for entry in columns[pivot]]
+            matrix[pivot] = [times(entry, inverse) for entry in matrix[pivot]]
+        columns[pivot] = [times(entry, inverse) for entry in columns[pivot]]
         for row in others:
             factor = matrix[row][pivot]
             matrix[row] = _less(matrix[row], factor, matrix[pivot])
-            columns[row][:] = _less(columns[row], factor, columns[pivot])
+            columns[row] = _less(columns[row], factor, columns[pivot])
+    return columns
 
 
 def _less(row: list[Values], factor: Values, pivot_row: list[Values]) -> list[Values]:
-    pairs = zip(row, pivot_row, strict=True)
-    return [entry if _is_zero(other) else entry - _product(other, factor) for entry, other in pairs]
-
-
-def _product(entry: Values, factor: Values) -> Values:
-    if _is_zero(entry) or _is_one(factor):
-        return entry
-    return factor if _is_one(entry) else entry * factor
-
-
-def _is_zero(entry: Values) -> bool:
-    """A structural zero, not an array that happens to hold zeros."""
-    return isinstance(entry, float) and entry == 0.0
-
-
-def _is_one(entry: Values) -> bool:
-    return isinstance(entry, float) and entry == 1.0
-
-
-def _ports(nodes: Mapping[Node, list[Values]]) -> Ports:
-    base, collector, emitter = (nodes[node] for node in TERMINALS)
-    open_be, z11, z12 = _less(base, 1.0, emitter)
-    open_bc, z21, z22 = _less(base, 1.0, collector)
-    return Ports(
-        open_be, open_bc, z11, z12, z21, z22,
-        node_open={node: values[0] for node, values in nodes.items()},
-        node_z={node: (values[1], values[2]) for node, values in nodes.items()},
-    )  # fmt: skip
+    return [minus(entry, times(other, factor)) for entry, other in zip(row, pivot_row, strict=True)]
 
 
 def total(wire: Wire, resistances: Mapping[str, Values]) -> Values:

@@ -3,14 +3,17 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import cached_property
 
 import numpy as np
 
 from biasband.circuit.active import RESIDUAL, Bias
+from biasband.circuit.flow import Flow, flow
 from biasband.circuit.gain_curve import GainScaling
-from biasband.circuit.junction import Flow, Laws, flow
-from biasband.circuit.network import Ports
+from biasband.circuit.junction import Laws
+from biasband.circuit.network import Impedances, Ports
 from biasband.circuit.scenarios import Array, Values
+from biasband.circuit.structure import minus, times
 
 _KNEE = 4.0
 """A junction conducts from this many V_T below its voltage at the test current."""
@@ -24,43 +27,51 @@ _SATURATED_START = 0.1
 
 @dataclass(frozen=True)
 class Tangent:
-    """The port equations linearised at (V_BE, V_BC): residuals [V], Jacobian and its determinant."""
+    """The junctions and a network linearised at a flow: the Jacobian J = 1 + Z·Y of `v + Z·i(v)`."""
 
-    law: Laws
     flow: Flow
-    f1: Values
-    f2: Values
     j11: Values
     j12: Values
     j21: Values
     j22: Values
-    determinant: Values
+
+    @classmethod
+    def of(cls, z: Impedances, at: Flow) -> Tangent:
+        """The tangent of the junctions in a network at their flow."""
+        j11, j21 = z.lost(at.base_be, at.collector_be)
+        j12, j22 = z.lost(at.base_bc, at.collector_bc)
+        return cls(at, 1.0 + j11, j12, j21, 1.0 + j22)
+
+    @cached_property
+    def _over_determinant(self) -> tuple[Values, Values, Values, Values]:
+        determinant = minus(self.j11 * self.j22, times(self.j12, self.j21))
+        j12 = times(self.j12, 1.0 / determinant)
+        return self.j11 / determinant, j12, self.j21 / determinant, self.j22 / determinant
+
+    def solve(self, g1: Values, g2: Values) -> tuple[Values, Values]:
+        """The voltages (x1, x2) with J·x = g."""
+        j11, j12, j21, j22 = self._over_determinant
+        return minus(times(j22, g1), times(j12, g2)), minus(times(j11, g2), times(j21, g1))
+
+
+@dataclass(frozen=True)
+class _Residual:
+    """By how much [V] the port equations `v − open + Z·i(v) = 0` do not hold."""
+
+    be: Array
+    bc: Array
+
+    @classmethod
+    def of(cls, ports: Ports, at: Flow) -> _Residual:
+        """The residual at a flow."""
+        lost_be, lost_bc = ports.lost(at.base, at.collector)
+        be, bc = at.V_BE - ports.open_be + lost_be, at.V_BC - ports.open_bc + lost_bc
+        return cls(np.asarray(be), np.asarray(bc))
 
     @property
-    def residual(self) -> Array:
-        """The larger of the two residuals [V]."""
-        return np.asarray(np.maximum(np.abs(self.f1), np.abs(self.f2)))
-
-    def solve(self, g1: Values, g2: Values) -> tuple[Array, Array]:
-        """The voltages (x1, x2) with J·x = g."""
-        x1 = (self.j22 * g1 - self.j12 * g2) / self.determinant
-        x2 = (self.j11 * g2 - self.j21 * g1) / self.determinant
-        return np.asarray(x1), np.asarray(x2)
-
-
-def tangent(ports: Ports, law: Laws, V_BE: Values, V_BC: Values) -> Tangent:
-    """Linearise `v − open + Z·i(v) = 0` at the junction voltages [V]."""
-    at = flow(law, V_BE, V_BC)
-    j11 = 1.0 + ports.z11 * at.base_be + ports.z12 * at.collector_be
-    j12 = ports.z11 * at.base_bc + ports.z12 * at.collector_bc
-    j21 = ports.z21 * at.base_be + ports.z22 * at.collector_be
-    j22 = 1.0 + ports.z21 * at.base_bc + ports.z22 * at.collector_bc
-    return Tangent(
-        law, at,
-        f1=V_BE - ports.open_be + ports.z11 * at.base + ports.z12 * at.collector,
-        f2=V_BC - ports.open_bc + ports.z21 * at.base + ports.z22 * at.collector,
-        j11=j11, j12=j12, j21=j21, j22=j22, determinant=j11 * j22 - j12 * j21,
-    )  # fmt: skip
+    def larger(self) -> Array:
+        """The larger of the two [V]."""
+        return np.asarray(np.maximum(np.abs(self.be), np.abs(self.bc)))
 
 
 def start(ports: Ports, law: Laws) -> tuple[Array, Array]:
@@ -107,20 +118,21 @@ def newton(ports: Ports, law: Laws, V_BE: Array, V_BC: Array, *, steps: int) -> 
 
     Who is solved moves no more, so that the neighbours in a chunk change nothing.
     """
-    here = tangent(ports, law, V_BE, V_BC)
+    at = flow(law, V_BE, V_BC)
+    miss = _Residual.of(ports, at)
     for _ in range(steps):
-        moves = here.residual >= RESIDUAL  # what is no number any more stays so
+        moves = miss.larger >= RESIDUAL  # what is no number any more stays so
         if not moves.any():
             break
-        d_be, d_bc = here.solve(here.f1, here.f2)
+        d_be, d_bc = Tangent.of(ports, at).solve(miss.be, miss.bc)
         if law.curve is not None:
             share = _up_to_kink(law, law.curve, V_BE, V_BC, V_BE - d_be, V_BC - d_bc)
             d_be, d_bc = share * d_be, share * d_bc
         V_BE = np.where(moves, _moved(V_BE, -d_be, law), V_BE)
         V_BC = np.where(moves, _moved(V_BC, -d_bc, law), V_BC)
-        here = tangent(ports, law, V_BE, V_BC)
-    I_B, I_C = np.asarray(here.flow.base), np.asarray(here.flow.collector)
-    return Bias(V_BE, V_BC, I_B, I_C, here.residual < RESIDUAL)
+        at = flow(law, V_BE, V_BC)
+        miss = _Residual.of(ports, at)
+    return Bias(V_BE, V_BC, np.asarray(at.base), np.asarray(at.collector), miss.larger < RESIDUAL)
 
 
 def _up_to_kink(
@@ -135,7 +147,7 @@ def _up_to_kink(
     return curve.up_to_kink(before, after)
 
 
-def _moved(voltage: Array, step: Array, law: Laws) -> Array:
+def _moved(voltage: Array, step: Values, law: Laws) -> Array:
     """A junction voltage after a Newton step, kept from shooting up its exponential.
 
     Above the knee a rise of dV becomes V_T·ln(1 + dV/V_T): the step that Newton's method would take

@@ -9,20 +9,23 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 from enum import IntEnum
+from functools import cached_property
 
 import numpy as np
 from numpy.typing import NDArray
 
 from biasband.circuit import heat, ideal
-from biasband.circuit.active import RESIDUAL, Bias
+from biasband.circuit.active import RESIDUAL
 from biasband.circuit.network import condense, rails
-from biasband.circuit.scenarios import Array, Scenarios, Values, chunks
-from biasband.circuit.solution import Problem, Status, Trial
+from biasband.circuit.scenarios import Array, Scenarios, chunks
+from biasband.circuit.solution import Status, Trial
 from biasband.circuit.topology import Wiring
 from biasband.stage import AnyTransistor, IdealTransistor, Polarity
 
 CHUNK = 24576
 """Scenarios solved in one go: some twenty arrays of 192 KiB, which stay in the cache (measured)."""
+
+_RUNAWAY, _UNSOLVED = np.int8(Status.RUNAWAY), np.int8(Status.UNSOLVED)
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -40,12 +43,17 @@ class OperatingPoint:
     junction_temperature: Array
     status: NDArray[np.int8]
 
-    @property
+    @cached_property
     def collector_emitter(self) -> Array:
         """V_CE [V]."""
         return self.base_emitter - self.base_collector
 
-    @property
+    @cached_property
+    def emitter_current(self) -> Array:
+        """I_E = I_B + I_C [A]."""
+        return self.base_current + self.collector_current
+
+    @cached_property
     def power(self) -> Array:
         """V_CE·I_C + V_BE·I_B [W]."""
         return self.collector_emitter * self.collector_current + self.base_emitter * self.base_current
@@ -71,8 +79,8 @@ def regions(point: OperatingPoint, *, saturation_voltage: float, cut_off_current
     region[point.collector_current < cut_off_current] = Region.CUT_OFF
     with np.errstate(invalid="ignore"):
         region[point.collector_emitter <= saturation_voltage + RESIDUAL] = Region.SATURATED
-    region[point.status == Status.RUNAWAY] = Region.RUNAWAY
-    region[point.status == Status.UNSOLVED] = Region.UNSOLVED
+    region[point.status == _RUNAWAY] = Region.RUNAWAY
+    region[point.status == _UNSOLVED] = Region.UNSOLVED
     return region
 
 
@@ -110,34 +118,8 @@ def solve(
     )
 
 
-def thermal_loop_gain(
-    wiring: Wiring,
-    transistor: AnyTransistor,
-    polarity: Polarity,
-    scenarios: Scenarios,
-    point: OperatingPoint,
-) -> Values:
-    """The thermal loop gain G = R_θJA·dP/dT_j at N solved points, resistors held; a plain number.
-
-    A small disturbance of the junction comes back G times: below one it dies out. 0 without a thermal
-    resistance; NaN where not solved, and for an ideal transistor, whose laws know no temperature.
-    Worked case: a 40 V divider that has warmed up to 50.3 °C has G = 0.047 (physics: "Transistor").
-    """
-    if isinstance(transistor, IdealTransistor):
-        return np.nan
-    solved = point.status == Status.SOLVED
-    if not transistor.thermal_resistance:
-        return np.where(solved, 0.0, np.nan)
-    ports = condense(wiring, scenarios.resistances, rails(polarity, scenarios))
-    problem = Problem.of(ports, transistor, scenarios)
-    bias = Bias(
-        point.base_emitter, point.base_collector, point.base_current, point.collector_current, solved
-    )
-    return transistor.thermal_resistance * heat.power_slope(problem, point.junction_temperature, bias)
-
-
 def _solve_chunk(wiring: Wiring, transistor: AnyTransistor, polarity: Polarity, part: Scenarios) -> Trial:
-    ports = condense(wiring, part.resistances, rails(polarity, part))
+    ports = condense(wiring, part.resistances).ports(rails(polarity, part))
     if isinstance(transistor, IdealTransistor):
         return ideal.solve(ports, transistor, part)
     with np.errstate(all="ignore"):

@@ -14,13 +14,15 @@ from functools import cached_property
 import numpy as np
 from numpy.typing import NDArray
 
-from biasband.circuit import signal
-from biasband.circuit.junction import Laws, laws, sheet
-from biasband.circuit.network import condense, rails, sign, total
+from biasband.circuit.flow import Flow, flow
+from biasband.circuit.junction import Laws, Sheet, laws, sheet
+from biasband.circuit.network import Network, condense, rails, supply_excitation, total
 from biasband.circuit.operating_point import OperatingPoint, regions, solve
 from biasband.circuit.scenarios import Array, Scenarios, Values
+from biasband.circuit.signal import Coupled, Linear, bypassed
+from biasband.circuit.structure import minus, plus, times
 from biasband.circuit.topology import TOPOLOGIES, Node, Wire, Wiring, wire
-from biasband.stage import IdealTransistor, Stage
+from biasband.stage import IdealTransistor, Signal, Stage, Transistor
 
 CUT_OFF_SHARE = 0.01
 """A stage is cut off below this share of its target (else nominal) collector current."""
@@ -42,30 +44,70 @@ class Reading:
     quiet: OperatingPoint
 
     @cached_property
-    def coupled(self) -> signal.Coupled:
-        """The stage as the signal sees it."""
-        return signal.couple(self.wiring, self.stage.signal, self.scenarios.resistances)
+    def flow(self) -> Flow:
+        """The junctions' flow at the point; NaN for an ideal transistor, which has no laws."""
+        return self._flow(self.point)
+
+    @cached_property
+    def quiet_flow(self) -> Flow:
+        """The junctions' flow at the quiet point."""
+        return self.flow if self.quiet is self.point else self._flow(self.quiet)
+
+    def _flow(self, point: OperatingPoint) -> Flow:
+        if isinstance(self.stage.transistor, IdealTransistor):
+            law = Laws(*(np.nan for each in fields(Laws) if not each.kw_only))
+        else:
+            law = laws(self.sheet, point.junction_temperature)
+        return flow(law, point.base_emitter, point.base_collector)
+
+    @cached_property
+    def sheet(self) -> Sheet:
+        """The figures at 25 °C of a transistor that has a data sheet."""
+        assert isinstance(self.stage.transistor, Transistor)
+        return sheet(
+            self.stage.transistor,
+            gain=self.scenarios.gain,
+            base_emitter_voltage=self.scenarios.base_emitter_voltage,
+            leakage=self.scenarios.leakage,
+        )
+
+    @cached_property
+    def network(self) -> Network:
+        """The bias network, capacitors open."""
+        return condense(self.wiring, self.scenarios.resistances)
+
+    @cached_property
+    def linear(self) -> Linear:
+        """The stage as a linear circuit at the quiet point, capacitors open."""
+        return Linear.of(self.network, self.quiet_flow)
+
+    @cached_property
+    def shorted_wiring(self) -> Wiring:
+        """The wiring with the bypass capacitor, if there is one, a short."""
+        return bypassed(self.wiring) if self._signal.bypassed else self.wiring
+
+    @cached_property
+    def shorted(self) -> Linear:
+        """The stage as a linear circuit at the quiet point, the bypass capacitor short."""
+        if not self._signal.bypassed:
+            return self.linear
+        return Linear.of(condense(self.shorted_wiring, self.scenarios.resistances), self.quiet_flow)
+
+    @cached_property
+    def coupled(self) -> Coupled:
+        """The stage between source and load, capacitors short; without [signal] base driven, no load."""
+        source, load = self._signal.source_resistance, self._signal.load
+        return Coupled.of(self.shorted, self.wiring.output, source=source, load=load)
+
+    @property
+    def _signal(self) -> Signal:
+        return self.stage.signal or Signal()
 
     @cached_property
     def unbypassed(self) -> Values:
         """The emitter resistance [Ω] that the signal sees."""
-        coupled = self.coupled
-        wires = [w for w in coupled.wiring.wires if w.node is Node.EMITTER and w.other is Node.EMITTER_RAIL]
-        return sum((total(wire, coupled.resistances) for wire in wires), start=0.0)
-
-    @cached_property
-    def law(self) -> Laws:
-        """The junction laws at the quiet point's junction temperature; NaN for an ideal transistor."""
-        transistor, scenarios = self.stage.transistor, self.scenarios
-        if isinstance(transistor, IdealTransistor):
-            return Laws(*(np.nan for each in fields(Laws) if not each.kw_only))
-        figures = sheet(
-            transistor,
-            gain=scenarios.gain,
-            base_emitter_voltage=scenarios.base_emitter_voltage,
-            leakage=scenarios.leakage,
-        )
-        return laws(figures, self.quiet.junction_temperature)
+        wires = [wire for wire in self.shorted_wiring.wires if wire.node is Node.EMITTER]
+        return sum((total(wire, self.scenarios.resistances) for wire in wires), start=0.0)
 
     @cached_property
     def rails(self) -> Mapping[Node, Values]:
@@ -81,13 +123,19 @@ class Reading:
     @cached_property
     def feedthrough_open(self) -> Values:
         """Output over supply with capacitors open."""
-        open_wiring = signal.Coupled(self.wiring, self.scenarios.resistances)
-        return signal.feedthrough(open_wiring, self.law, self.quiet, self.stage.polarity)
+        return self.real(self._supply_open[self.wiring.output])
 
     @cached_property
     def feedthrough_short(self) -> Values:
         """Output over supply with capacitors short, the source connected by its resistance."""
-        return signal.feedthrough(self.coupled, self.law, self.quiet, self.stage.polarity)
+        moved = self._supply_open
+        if self.shorted is not self.linear:
+            moved = self.shorted.driven(supply_excitation(self.stage.polarity))
+        return self.real(self.coupled.feedthrough(moved, self.wiring.output))
+
+    @cached_property
+    def _supply_open(self) -> Mapping[Node, Values]:
+        return self.linear.driven(supply_excitation(self.stage.polarity))
 
     @cached_property
     def output_per_ripple(self) -> Values:
@@ -109,7 +157,7 @@ class Reading:
 
     def real(self, frame_voltage: Values) -> Values:
         """A node voltage [V] to the stage's ground from one in the transistor's frame."""
-        return sign(self.stage.polarity) * frame_voltage
+        return frame_voltage if self.stage.polarity == "npn" else -frame_voltage
 
     @cached_property
     def volts(self) -> Mapping[Node, Values]:
@@ -122,9 +170,14 @@ class Reading:
         return self.volts if self.quiet is self.point else self._volts(self.quiet, self.quiet_rails)
 
     def _volts(self, point: OperatingPoint, rail_voltages: Mapping[Node, Values]) -> Mapping[Node, Values]:
-        ports = condense(self.wiring, self.scenarios.resistances, rail_voltages)
-        emitter = ports.voltage(Node.EMITTER, point.base_current, point.collector_current)
-        collector, base = emitter + point.collector_emitter, emitter + point.base_emitter
+        currents = {
+            Node.BASE: point.base_current,
+            Node.COLLECTOR: point.collector_current,
+            Node.EMITTER: point.emitter_current,
+        }
+        open_voltage = self.network.open(Node.EMITTER, rail_voltages)
+        emitter = self.network.loaded(Node.EMITTER, open_voltage, currents)
+        collector, base = plus(emitter, point.collector_emitter), plus(emitter, point.base_emitter)
         terminals = {Node.BASE: base, Node.COLLECTOR: collector, Node.EMITTER: emitter}
         tied = {node: rail_voltages[rail] for node, rail in self.wiring.ties.items()}
         return {**rail_voltages, **terminals, **tied}
@@ -133,10 +186,39 @@ class Reading:
         """The wire that a resistor is part of."""
         return next(wire for wire in self.wiring.wires if resistor in wire.parts)
 
-    def wire_current(self, wire: Wire) -> Array:
-        """The current [A] from a wire's first node to its other."""
-        across = np.asarray(self.volts[wire.node] - self.volts[wire.other])
-        return across / total(wire, self.scenarios.resistances)
+    @cached_property
+    def wire_currents(self) -> Mapping[Wire, Array]:
+        """The current [A] from each wire's first node to its other."""
+        volts, ohms = self.volts, self.scenarios.resistances
+        return {
+            wire: np.asarray(minus(volts[wire.node], volts[wire.other]) / total(wire, ohms))
+            for wire in self.wiring.wires
+        }
+
+    @cached_property
+    def output_conductance(self) -> Values:
+        """Everything that loads the output at signal frequency [S]: its wires and the load."""
+        ohms, output, load = self.scenarios.resistances, self.wiring.output, self._signal.load
+        wires = [wire for wire in self.wiring.wires if output in (wire.node, wire.other)]
+        return sum((1.0 / total(wire, ohms) for wire in wires), start=0.0 if load is None else 1.0 / load)
+
+    @cached_property
+    def into_cut_off(self) -> Values:
+        """Peak [V] the output can move while the transistor turns off, never beyond its rail."""
+        point, volts = self.quiet, self.quiet_volts
+        if self.wiring.output is Node.EMITTER:
+            swing = point.emitter_current / self.output_conductance
+            return np.minimum(swing, minus(volts[Node.EMITTER], volts[Node.EMITTER_RAIL]))
+        swing = point.collector_current / self.output_conductance
+        return np.minimum(swing, volts[Node.COLLECTOR_RAIL] - volts[Node.COLLECTOR])
+
+    @cached_property
+    def into_saturation(self) -> Values:
+        """Peak [V] the output can move until V_CE(sat) is reached: room·r_ac/(r_ac + r_e)."""
+        room = self.quiet.collector_emitter - self.stage.saturation_voltage
+        if self.wiring.output is Node.EMITTER:
+            return room
+        return room / plus(1.0, times(self.unbypassed, self.output_conductance))
 
     def regions(self, cut_off_current: float) -> NDArray[np.int8]:
         """The region of each scenario, shape (N,); cut off below the current [A] given."""

@@ -4,7 +4,6 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
-from biasband.circuit.network import condense
 from biasband.circuit.reading import Reading
 from biasband.circuit.scenarios import Values
 
@@ -40,8 +39,8 @@ def stability_factors(reading: Reading, *, leakage: Values = 0.0) -> StabilityFa
     Source: Boylestad & Nashelsky, Electronic Devices and Circuit Theory, "Bias stabilization" (memory);
     Bell, Electronic Devices and Circuits, ex. 5-17.
     """
-    ports = condense(reading.wiring, reading.scenarios.resistances, reading.quiet_rails)
+    z = reading.network.impedances
     driven = reading.quiet.base_current + leakage
     beta = (reading.quiet.collector_current - leakage) / driven
-    D = ports.z11 + beta * ports.z12
-    return StabilityFactors(beta, (beta + 1.0) * ports.z11 / D, -beta / D, ports.z11 * driven / D)
+    D = z.z11 + beta * z.z12
+    return StabilityFactors(beta, (beta + 1.0) * z.z11 / D, -beta / D, z.z11 * driven / D)

@@ -56,6 +56,17 @@ class HeldLimit:
         return ends.low.value - self.bound if self.lower else self.bound - ends.high.value
 
 
+def required_limits(
+    requirements: Sequence[Requirement], vocabulary: Mapping[str, Quantity], nominal: Mapping[str, float]
+) -> tuple[HeldLimit, ...]:
+    """Every limit of the requirements, whatever they are judged by."""
+    return tuple(
+        _required(requirement, side, limit, vocabulary[requirement.quantity], nominal)
+        for requirement in requirements
+        for side, limit in limits_of(requirement)
+    )
+
+
 def held_limits(
     requirements: Sequence[Requirement],
     standing: Standing,
@@ -63,12 +74,7 @@ def held_limits(
     nominal: Mapping[str, float],
 ) -> tuple[HeldLimit, ...]:
     """Every limit of the requirements, whatever they are judged by, and every standing check made."""
-    required = (
-        _required(requirement, side, limit, vocabulary[requirement.quantity], nominal)
-        for requirement in requirements
-        for side, limit in limits_of(requirement)
-    )
-    return (*required, *_checked(standing))
+    return (*required_limits(requirements, vocabulary, nominal), *_checked(standing))
 
 
 def _required(

@@ -1,4 +1,4 @@
-"""The tables of one analysis in depth: design, corners, spread."""
+"""The tables of one analysis in depth: design and corners."""
 
 from __future__ import annotations
 
@@ -7,11 +7,10 @@ from collections.abc import Mapping
 from biasband.circuit.quantities import Quantity
 from biasband.quantity import Kind
 from biasband.show.prose import formula, places
-from biasband.show.table import REGION_WORDS, Column, Row, Table, code, computed, difference, figure, percent
+from biasband.show.table import REGION_WORDS, Column, Row, Table, code, computed, figure, percent
 from biasband.values.choosing import Design, PartChoice
 from biasband.values.ideal import Step
 from biasband.variation.corners import Corners, Range
-from biasband.variation.sampling import QUANTILES, Boards, Sample
 
 DESIGN_COLUMNS = (
     Column("part", "left"),
@@ -24,13 +23,6 @@ DESIGN_COLUMNS = (
 )
 
 CORNER_COLUMNS = (Column("quantity", "left"), Column("lowest"), Column("highest"), Column("found at", "left"))
-
-SPREAD_COLUMNS = (
-    Column("quantity", "left"),
-    Column("mean", spare=1),
-    Column("sd", spare=2),
-    *(Column(f"{100 * share:g} %") for share in QUANTILES),
-)
 
 
 def design_table(design: Design) -> Table:
@@ -82,26 +74,3 @@ def _corner_row(found: Range, quantity: Quantity) -> Row:
         ),
         (f"lowest: {places(found.low)}", f"highest: {places(found.high)}"),
     )
-
-
-def spread_tables(boards: Boards, words: Mapping[str, Quantity]) -> tuple[Table, ...]:
-    """Mean, deviation and quantiles at nominal use, and of each board's lowest and highest in use."""
-    titles = {
-        "nominal_use": "At nominal use",
-        "lowest_in_use": "Each board's lowest in use",
-        "highest_in_use": "Each board's highest in use",
-    }
-    return tuple(
-        Table(
-            title,
-            SPREAD_COLUMNS,
-            tuple(_spread_row(getattr(boards.spread[name], place), word) for name, word in words.items()),
-        )
-        for place, title in titles.items()
-    )
-
-
-def _spread_row(sample: Sample, quantity: Quantity) -> Row:
-    quantiles = (computed(sample.quantile(share), quantity.kind) for share in QUANTILES)
-    mean, sd = computed(sample.mean, quantity.kind), difference(sample.sd, quantity.kind)
-    return Row((quantity.name, mean, sd, *quantiles))

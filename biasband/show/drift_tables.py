@@ -7,9 +7,10 @@ from collections.abc import Iterator
 from typing import Literal
 
 from biasband.circuit.operating_point import Region
-from biasband.margins.over_temperature import Failure, HeldLimit
+from biasband.margins.over_temperature import Failure
 from biasband.quantity import Kind
 from biasband.show.pictures import legend, off_axis
+from biasband.show.prose import limit_on, limit_text
 from biasband.show.table import (
     NOT_KNOWN,
     REGION_WORDS,
@@ -129,17 +130,8 @@ def failure_table(study: DriftStudy) -> Table:
 
 
 def _failure_row(each: LimitDrift) -> Row:
-    cells = (_limit_on(each.limit), _limit(each.limit), _failure(each.colder), _failure(each.hotter))
+    cells = (limit_on(each.limit), limit_text(each.limit), _failure(each.colder), _failure(each.hotter))
     return Row(cells, (), "" if _holds(each) else "fail")
-
-
-def _limit_on(limit: HeldLimit) -> str:
-    return f"check {limit.quantity}" if limit.standing else f"{limit.id} {limit.quantity}"
-
-
-def _limit(limit: HeldLimit) -> str:
-    sign = "≥" if limit.side == "at_least" else "≤"
-    return "" if limit.standing else f"{sign} {figure(limit.limit, limit.kind)}"
 
 
 def _failure(failure: Failure) -> str:
@@ -202,7 +194,7 @@ def _first(study: DriftStudy, way: Literal["colder", "hotter"]) -> str:
     if not failing:
         return f"going {way}: nothing, {'down' if way == 'colder' else 'up'} to {last}"
     each, end = min(failing, key=lambda found: _distance(study, found[1]))
-    limit = f"{_limit_on(each.limit)} {_limit(each.limit)}".rstrip()
+    limit = f"{limit_on(each.limit)} {limit_text(each.limit)}".rstrip()
     return f"going {way}: {limit}, {_failure(end)}"
 
 

@@ -11,6 +11,7 @@ from typing import Any
 from biasband.circuit.operating_point import Region
 from biasband.constants import VERSION
 from biasband.margins.records import Margin
+from biasband.show.beyond_json import beyond_json
 from biasband.show.capacitors_json import capacitors_json
 from biasband.show.parts_json import markings_json, parts_json
 from biasband.show.summary import Attempt
@@ -35,15 +36,15 @@ def as_text(result: Json | list[Json]) -> str:
     return json.dumps(result, indent=2, allow_nan=False) + "\n"
 
 
-def _finite(result: Json) -> Json:
+def finite(result: Json) -> Json:
     """The same with null for every number that JSON does not have."""
     return {key: _finite_value(value) for key, value in result.items()}
 
 
 def _finite_value(value: Any) -> Any:
     if isinstance(value, dict):
-        return _finite(value)
-    if isinstance(value, list):
+        return finite(value)
+    if isinstance(value, list | tuple):
         return [_finite_value(each) for each in value]
     return None if isinstance(value, float) and not math.isfinite(value) else value
 
@@ -53,7 +54,7 @@ def review_json(review: Review) -> Json:
     boards, words = review.evidence.boards, review.looked_into
     evidence, standing = review.evidence, review.standing
     result = {
-        **_origin(review.stage),
+        **origin(review.stage),
         "seed": boards.seed,
         "boards": boards.boards,
         "boards_per_batch": boards.boards_per_batch,
@@ -66,17 +67,19 @@ def review_json(review: Review) -> Json:
         "corners": _ranges(evidence.corners, words),
         "rss": {name: {"low": evidence.rss[name].low, "high": evidence.rss[name].high} for name in words},
         "spread": _spread(boards),
-        "causes": {name: _causes(evidence.causes[name]) for name in words},
+        "causes": {name: causes_json(evidence.causes[name]) for name in words},
         "margins": [_margin(row) for row in review.rows],
         "checks": {
             "made": [check.name for check in standing.made],
             "not_made": [{"check": each.check, "missing": each.missing} for each in standing.not_made],
         },
+        "beyond": [beyond_json(each) for each in review.beyond],
+        "outside": [asdict(each) for each in evidence.outside],
         "warnings": list(review.warnings),
         "verdict": review.verdict.outcome,
         "because": list(review.verdict.because),
     }
-    return _finite(result)
+    return finite(result)
 
 
 def summary_json(attempts: Sequence[Attempt]) -> list[Json]:
@@ -93,9 +96,9 @@ def _problem(path: str, problem: str) -> Json:
 
 def design_json(design: Design) -> Json:
     """A design as plain data: the parts of `review_json`, without what only a review knows."""
-    return _finite(
+    return finite(
         {
-            **_origin(design.stage),
+            **origin(design.stage),
             "parts": parts_json(design, {}),
             "capacitors": capacitors_json(design),
             "choice": _choice(design.contest),
@@ -107,7 +110,7 @@ def design_json(design: Design) -> Json:
 def snap_json(study: SnapStudy) -> list[Json]:
     """Snapped values as plain data [Ω]."""
     return [
-        _finite(
+        finite(
             {
                 "asked": row.asked,
                 "series": row.snap.series,
@@ -155,30 +158,14 @@ def _contender(contender: Contender, names: Sequence[str]) -> Json:
 
 def corners_json(design: Design, corners: Corners, words: Iterable[str]) -> Json:
     """The corners of a designed stage as plain data."""
-    return _finite(
+    return finite(
         {
-            **_origin(design.stage),
+            **origin(design.stage),
             "parts": parts_json(design, {}),
             "capacitors": capacitors_json(design),
             "corners": _ranges(corners, words),
             "count": corners.count,
-            "regions": _regions(corners.regions),
-            "warnings": list(design.warnings),
-        }
-    )
-
-
-def spread_json(design: Design, boards: Boards) -> Json:
-    """The sampled boards of a designed stage as plain data."""
-    return _finite(
-        {
-            **_origin(design.stage),
-            "seed": boards.seed,
-            "boards": boards.boards,
-            "boards_per_batch": boards.boards_per_batch,
-            "parts": parts_json(design, {}),
-            "capacitors": capacitors_json(design),
-            "spread": _spread(boards),
+            "regions": regions_json(corners.regions),
             "warnings": list(design.warnings),
         }
     )
@@ -187,9 +174,9 @@ def spread_json(design: Design, boards: Boards) -> Json:
 def drift_json(study: DriftStudy) -> Json:
     """A stage over ambient temperature as plain data: columns of the sweep, what fails where, stability."""
     slopes = ("slope", "relative_slope", "mean_slope", "relative_mean_slope")
-    return _finite(
+    return finite(
         {
-            **_origin(study.design.stage),
+            **origin(study.design.stage),
             "parts": parts_json(study.design, {}),
             "capacitors": capacitors_json(study.design),
             "temperatures": study.temperatures.tolist(),
@@ -203,7 +190,7 @@ def drift_json(study: DriftStudy) -> Json:
             },
             "regions": {
                 "nominal": [REGION_WORDS[region] for region in study.regions],
-                "corners": [_regions(found.regions) for found in study.corners],
+                "corners": [regions_json(found.regions) for found in study.corners],
             },
             "start": study.start,
             "limits": [_limit_drift(each) for each in study.limits],
@@ -234,7 +221,8 @@ def _limit_drift(each: LimitDrift) -> Json:
     }
 
 
-def _origin(stage: Stage) -> Json:
+def origin(stage: Stage) -> Json:
+    """Which stage this is, the files that were read, and the program."""
     head = ("title", "document", "revision", "topology", "polarity")
     return {
         "stage": {name: getattr(stage, name) for name in head},
@@ -261,7 +249,7 @@ def _spread(boards: Boards) -> Json:
         name: {place: _sample(getattr(found, place)) for place in SPREAD_PLACES}
         for name, found in boards.spread.items()
     }
-    return {**quantities, "regions": _regions(boards.regions)}
+    return {**quantities, "regions": regions_json(boards.regions)}
 
 
 def _sample(sample: Sample) -> Json:
@@ -269,11 +257,13 @@ def _sample(sample: Sample) -> Json:
     return {"mean": sample.mean, "sd": sample.sd, **quantiles}
 
 
-def _regions(regions: Mapping[Region, int]) -> Json:
+def regions_json(regions: Mapping[Region, int]) -> Json:
+    """How many scenarios stand in each region, by its name in tables."""
     return {REGION_WORDS[region]: count for region, count in regions.items()}
 
 
-def _causes(causes: Causes) -> Json:
+def causes_json(causes: Causes) -> Json:
+    """Shares of the worst case by contributor, of both sides."""
     return {"low": dict(causes.low), "high": dict(causes.high)}
 
 

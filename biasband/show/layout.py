@@ -13,9 +13,10 @@ from dataclasses import replace
 from rich.cells import cell_len, chop_cells
 from rich.text import Text
 
+from biasband.show.histogram import drawn
 from biasband.show.pictures import pictured
 from biasband.show.spelling import Spelling
-from biasband.show.table import Column, Passage, Report, Row, Table, Tone
+from biasband.show.table import Column, Histogram, Passage, Report, Row, Table, Tone
 
 NARROWEST = 20
 """[cells] Narrower outputs get lines of this width all the same."""
@@ -36,7 +37,9 @@ def lines_of(report: Report, *, width: int, spelling: Spelling) -> list[Text]:
     return lines
 
 
-def _lines(block: Table | Passage, width: int, spelling: Spelling) -> list[Text]:
+def _lines(block: Table | Passage | Histogram, width: int, spelling: Spelling) -> list[Text]:
+    if isinstance(block, Histogram):
+        block = drawn(block, width, spelling)
     if isinstance(block, Passage):
         return list(_passage(block, width, spelling))
     table = _spelled(block, spelling)

@@ -37,21 +37,19 @@ def complain(text: str) -> None:
 
 
 @contextmanager
-def bar(doing: str) -> Iterator[Progress]:
-    """Show on standard error, if that is a terminal, how far something is; told the share that is done."""
+def bar(doing: str, boards: int = 0) -> Iterator[Progress]:
+    """Show on standard error, if that is a terminal, how far something is; told the share that is done.
+
+    Work that is done at once shows none. Of `boards` it shows how many are done in a second.
+    """
     if not sys.stderr.isatty():
         yield lambda done: None
         return
-    from rich.console import Console
-    from rich.progress import BarColumn, TextColumn, TimeRemainingColumn
-    from rich.progress import Progress as Bar
-    from rich.text import Text
+    from biasband.show.progress_bar import late_bar
 
     spelling = Spelling(sys.stderr.encoding or "ascii")
-    columns = (TextColumn("{task.description}"), BarColumn(), TimeRemainingColumn())
-    with Bar(*columns, console=Console(stderr=True), transient=True) as shown:
-        task = shown.add_task(Text(spelling(doing)).markup, total=1.0)
-        yield lambda done: shown.update(task, completed=done)
+    with late_bar(spelling(doing), boards) as progress:
+        yield progress
 
 
 def watched(paths: Sequence[str], *, doing: str) -> Iterator[tuple[str, Progress]]:

@@ -7,7 +7,7 @@ lines where limits are, and crosses where the band has passed one.
 from __future__ import annotations
 
 import math
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from dataclasses import replace
 
 from biasband.quantity import Kind
@@ -33,26 +33,27 @@ def pictured(table: Table, room: int, spelling: Spelling) -> Table:
     picture = table.picture
     if picture is None or room < NARROWEST:
         return replace(table, picture=None)
-    axis = _axis(picture)
-    heading = _heading(axis, room, picture.kind, spelling)
-    if heading is None:
+    axis = axis_of(picture)
+    ends = heading(axis, room, picture.kind, spelling)
+    if ends is None:
         return replace(table, picture=None)
-    strips = (spelling(_strip(strip, picture.bounds, axis, room)) for strip in picture.strips)
+    strips = (spelling(strip_signs(strip, picture.bounds, axis, room)) for strip in picture.strips)
     rows = (replace(row, cells=(*row.cells, s)) for row, s in zip(table.rows, strips, strict=True))
-    columns = (*table.columns, Column(heading, "left", toned=True))
+    columns = (*table.columns, Column(ends, "left", toned=True))
     return replace(table, columns=columns, rows=tuple(rows), picture=None)
 
 
 def off_axis(picture: Picture) -> tuple[Bound, ...]:
     """The limits that are too far from the bands to be drawn."""
-    axis = _axis(picture)
+    axis = axis_of(picture)
     return () if axis is None else tuple(b for b in picture.bounds if not axis[0] <= b.value <= axis[1])
 
 
-_Axis = tuple[float, float]
+Axis = tuple[float, float]
+"""The values [SI] in the middle of the first and of the last cell."""
 
 
-def _axis(picture: Picture) -> _Axis | None:
+def axis_of(picture: Picture) -> Axis | None:
     """From the lowest to the highest of the bands, and of the limits that are near; None without values."""
     values = [v for s in picture.strips for v in (s.low, s.nominal, s.high) if math.isfinite(v)]
     if not values:
@@ -65,7 +66,7 @@ def _axis(picture: Picture) -> _Axis | None:
     return low - slack, high + slack
 
 
-def _heading(axis: _Axis | None, room: int, kind: Kind, spelling: Spelling) -> str | None:
+def heading(axis: Axis | None, room: int, kind: Kind, spelling: Spelling) -> str | None:
     """The ends of the axis, one at either side; None where they do not fit."""
     if axis is None:
         return None
@@ -74,13 +75,19 @@ def _heading(axis: _Axis | None, room: int, kind: Kind, spelling: Spelling) -> s
     return f"{low}{' ' * gap}{high}" if gap > 0 else None
 
 
-def _strip(strip: Strip, bounds: tuple[Bound, ...], axis: _Axis | None, room: int) -> str:
+def cell_of(value: float, axis: Axis, room: int) -> int:
+    """The cell of `room` that a value is in; beyond the axis the first or the last."""
+    share = (value - axis[0]) / (axis[1] - axis[0])
+    return min(max(round(share * (room - 1)), 0), room - 1)
+
+
+def strip_signs(strip: Strip, bounds: Sequence[Bound], axis: Axis | None, room: int) -> str:
+    """A strip in `room` cells: its band and nominal value, the limits, and what is beyond them."""
     if axis is None:
         return ""
 
     def cell(value: float) -> int:
-        share = (value - axis[0]) / (axis[1] - axis[0])
-        return min(max(round(share * (room - 1)), 0), room - 1)
+        return cell_of(value, axis, room)
 
     signs = [" "] * room
     banded = math.isfinite(strip.low) and math.isfinite(strip.high)

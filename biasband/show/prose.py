@@ -8,9 +8,10 @@ from collections.abc import Mapping
 from biasband.circuit.topology import EMITTER_PARTS, Node
 from biasband.constants import VERSION
 from biasband.coupling import BYPASS, INPUT, OUTPUT
+from biasband.margins.over_temperature import HeldLimit
 from biasband.margins.records import Margin
 from biasband.quantity import Kind
-from biasband.show.table import figure, whole_percent, yield_percent
+from biasband.show.table import figure, percent, whole_percent, yield_percent
 from biasband.signoff.study import Review
 from biasband.stage import Stage, Transistor
 from biasband.values.ideal import Step
@@ -24,13 +25,16 @@ from biasband.variation.contributors import (
     TEMPERATURE,
 )
 from biasband.variation.corners import Extreme
-from biasband.variation.intervals import yield_bound
+from biasband.variation.intervals import yield_bound, yield_interval
 from biasband.variation.sampling import Boards
 
 MATTERS = 0.05
 """A contributor with a smaller share of the way to the worst is not named."""
 
 MOST_NAMED = 4
+
+RSS_HOLDS = 0.9973
+"""The share within ±3σ of a normal distribution: what RSS would hold, were its assumption true."""
 
 GROUND = "0"
 """The symbol of the node that all voltages are counted from."""
@@ -82,6 +86,17 @@ def main_places(extreme: Extreme, causes: Mapping[str, float], *, most: int = MO
 
 def _main_causes(causes: Mapping[str, float]) -> list[str]:
     return [name for name, share in causes.items() if share > MATTERS]
+
+
+def limit_on(limit: HeldLimit) -> str:
+    """What a limit is on: its id and quantity, or that it is a check."""
+    return f"check {limit.quantity}" if limit.standing else f"{limit.id} {limit.quantity}"
+
+
+def limit_text(limit: HeldLimit) -> str:
+    """A limit as it was required; empty for a check."""
+    sign = "≥" if limit.side == "at_least" else "≤"
+    return "" if limit.standing else f"{sign} {figure(limit.limit, limit.kind)}"
 
 
 def worst(row: Margin) -> str:
@@ -139,20 +154,43 @@ def joint_yield(review: Review) -> str:
 
 
 def rss_assumption(review: Review) -> str:
-    """What RSS assumes, and how many sampled boards its intervals hold."""
+    """What RSS assumes, how many sampled boards its intervals hold, and whether that contradicts it."""
     names = dict.fromkeys(row.quantity for row in review.rows if not row.standing)
-    shares = ", ".join(f"{name} {_inside(review, name)}" for name in names)
-    return (
-        "RSS takes contributors as independent and their limits as 3σ; "
-        f"boards measured inside its interval at every point of use: {shares}."
+    boards, batch = review.evidence.boards.boards, review.evidence.boards.boards_per_batch
+    inside = {name: _inside(review, name) for name in names}
+    return rss_words(
+        inside, {name: rss_most(share, boards, boards_per_batch=batch) for name, share in inside.items()}
     )
 
 
-def _inside(review: Review, name: str) -> str:
+def rss_words(inside: Mapping[str, float], most: Mapping[str, float]) -> str:
+    """The same by quantity: the share inside, and the most that it can be for all boards (NaN: not known)."""
+    shares = ", ".join(f"{name} {yield_percent(share)}" for name, share in inside.items())
+    against = [f"{name} {yield_percent(share, up=True)}" for name, share in most.items() if share < RSS_HOLDS]
+    said = (
+        "RSS takes contributors as independent and their limits as 3σ; "
+        f"boards measured inside its interval at every point of use: {shares}."
+    )
+    if not against:
+        return said
+    return (
+        f"{said} RSS is contradicted: by its assumption {percent(RSS_HOLDS, digits=4)} would be inside, but "
+        f"it is at most (95 % confidence) {', '.join(against)}."
+    )
+
+
+def rss_most(share: float, boards: int, *, boards_per_batch: int) -> float:
+    """The upper end of the two-sided 95 % interval of a share of boards; NaN for one that is not known."""
+    if math.isnan(share):
+        return share
+    return yield_interval(round(share * boards), boards, boards_per_batch=boards_per_batch).high
+
+
+def _inside(review: Review, name: str) -> float:
     interval = review.evidence.rss[name]
     if math.isnan(interval.low) or math.isnan(interval.high):
-        return "n/a"
-    return yield_percent(review.spread[name].inside(interval.low, interval.high))
+        return math.nan
+    return review.spread[name].inside(interval.low, interval.high)
 
 
 def formula(step: Step, stage: Stage) -> str:

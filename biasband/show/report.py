@@ -7,8 +7,10 @@ from collections.abc import Mapping, Sequence
 from biasband.circuit.quantities import Quantity
 from biasband.constants import VERSION
 from biasband.parts.derating import in_words
-from biasband.show.analysis_tables import corners_table, design_table, spread_tables
+from biasband.show.analysis_tables import corners_table, design_table
+from biasband.show.beyond_words import beyond_words
 from biasband.show.capacitor_tables import capacitor_parts, capacitor_values
+from biasband.show.cause_tables import cause_tables
 from biasband.show.cautions import CAUTIONS
 from biasband.show.choice_table import choice_table
 from biasband.show.drift_tables import drift_table, failure_table, first_to_fail, swept
@@ -16,18 +18,22 @@ from biasband.show.parts_table import parts_table
 from biasband.show.prose import frozen_or_chosen, head, joint_yield, rss_assumption, sampled
 from biasband.show.regions import region_sentences
 from biasband.show.review_tables import margin_table, nominal_table, summary_table
+from biasband.show.sampled_words import alarms, sampled_how
 from biasband.show.snap_tables import offer_table, snap_tables
+from biasband.show.spread_pictures import histograms
+from biasband.show.spread_tables import estimate_tables
 from biasband.show.stability_table import stability_table
 from biasband.show.summary import Attempt
 from biasband.show.surroundings import surroundings
 from biasband.show.table import OUTCOME_TONES, Passage, Report
+from biasband.show.yield_table import rss_passage, yield_table
 from biasband.signoff.drifting import DriftStudy
 from biasband.signoff.parts_list import parts_list
 from biasband.signoff.snapping import SnapStudy
+from biasband.signoff.spread_study import SpreadStudy
 from biasband.signoff.study import Review
 from biasband.values.choosing import Design
 from biasband.variation.corners import Corners
-from biasband.variation.sampling import Boards
 
 _CAUTIONS = Passage("Cautions", CAUTIONS)
 
@@ -84,12 +90,19 @@ def corners_report(design: Design, corners: Corners, words: Mapping[str, Quantit
     )
 
 
-def spread_report(design: Design, boards: Boards, words: Mapping[str, Quantity]) -> Report:
+def spread_report(study: SpreadStudy) -> Report:
     """The sampled boards of a stage in depth."""
     return (
-        _header(design, sampled(boards)),
-        *spread_tables(boards, words),
-        *_warnings(design.warnings),
+        *alarms(study),
+        _header(study.design),
+        sampled_how(study),
+        *yield_table(study),
+        *histograms(study),
+        *estimate_tables(study),
+        *cause_tables(study),
+        *beyond_words(study.beyond, corners=study.corners.count, boards=study.boards),
+        *rss_passage(study),
+        *_warnings(study.warnings),
         _CAUTIONS,
     )
 
@@ -122,7 +135,11 @@ def _compared(design: Design) -> Report:
 def _statistics(review: Review) -> Report:
     if not review.stage.requirements:
         return ()
-    return (Passage("", (joint_yield(review), rss_assumption(review))),)
+    evidence = review.evidence
+    return (
+        Passage("", (joint_yield(review), rss_assumption(review))),
+        *beyond_words(review.beyond, corners=evidence.corners.count, boards=evidence.boards.boards),
+    )
 
 
 def _warnings(warnings: tuple[str, ...]) -> Report:

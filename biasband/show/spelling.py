@@ -4,14 +4,14 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
-OWN_SIGNS = "Ωµπ±°−≥≤→…βσ─│●×∥"
+OWN_SIGNS = "Ωµπ±°−≥≤→…βσ─│●×█▄∥"
 """The signs that our own texts use; an output that lacks one of them gets none of them."""
 
 _IN_ASCII = str.maketrans(
     {
         "Ω": "ohm", "\u2126": "ohm", "µ": "u", "\u03bc": "u", "±": "+/-", "°": "deg", "−": "-", "–": "-",
         "≥": ">=", "≤": "<=", "→": "->", "…": "...", "σ": " sigma", "Σ": "sum", "×": "x", "─": "-",
-        "∥": "||", "│": "|", "●": "o", "π": "pi", "β": "beta",
+        "∥": "||", "│": "|", "●": "o", "█": "#", "▄": ":", "π": "pi", "β": "beta",
     }
 )  # fmt: skip
 

@@ -9,13 +9,14 @@ from __future__ import annotations
 import math
 from collections.abc import Mapping
 from dataclasses import dataclass
-from decimal import ROUND_DOWN, Decimal
+from decimal import ROUND_DOWN, ROUND_UP, Decimal
 from typing import Literal
 
 from biasband.circuit.operating_point import Region
 from biasband.errors import UsageError
 from biasband.parts.letter_code import letter_code
 from biasband.quantity import Kind, format_quantity
+from biasband.variation.summary import Summary
 
 Align = Literal["left", "right"]
 Tone = Literal["", "pass", "fail", "doubt"]
@@ -96,6 +97,32 @@ class Table:
 
 
 @dataclass(frozen=True)
+class Panel:
+    """A histogram of boards at one place of use, and the strip that stands under it.
+
+    `beyond` of the boards have passed `bound`.
+    """
+
+    label: str
+    found: Summary
+    strip: Strip
+    bound: Bound | None = None
+    beyond: int = 0
+
+
+@dataclass(frozen=True)
+class Histogram:
+    """Histograms of a quantity on one axis, with named strips below them and the limits through all."""
+
+    title: str
+    kind: Kind
+    panels: tuple[Panel, ...]
+    strips: Mapping[str, Strip]
+    bounds: tuple[Bound, ...] = ()
+    notes: tuple[str, ...] = ()
+
+
+@dataclass(frozen=True)
 class Passage:
     """Sentences under a title (or none), with a tone."""
 
@@ -104,7 +131,7 @@ class Passage:
     tone: Tone = ""
 
 
-Report = tuple[Table | Passage, ...]
+Report = tuple[Table | Passage | Histogram, ...]
 """What a reader reads, top to bottom, whatever it is laid out on."""
 
 
@@ -133,13 +160,14 @@ def whole_percent(share: float) -> str:
     return f"{100.0 * share:.0f} %" if math.isfinite(share) else NOT_KNOWN
 
 
-def yield_percent(share: float) -> str:
-    """Write a yield in %, rounded down, so that only all boards read as "100 %"."""
+def yield_percent(share: float, *, up: bool = False) -> str:
+    """Write a yield in %, rounded down, so that only all boards read as "100 %"; an upper end rounded up."""
     if math.isnan(share):
         return NOT_KNOWN
     if share == 1.0:
         return "100 %"
-    return f"{(100 * Decimal(repr(share))).quantize(_YIELD_STEP, rounding=ROUND_DOWN)} %"
+    rounding = ROUND_UP if up else ROUND_DOWN
+    return f"{(100 * Decimal(repr(share))).quantize(_YIELD_STEP, rounding=rounding)} %"
 
 
 def code(ohms: float) -> str:

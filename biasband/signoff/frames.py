@@ -7,7 +7,8 @@ from typing import TYPE_CHECKING
 
 from biasband.margins.records import Margin
 from biasband.variation.corners import Corners
-from biasband.variation.sampling import QUANTILES, Spread
+from biasband.variation.estimates import Estimate, Estimates
+from biasband.variation.in_use import PLACES
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -46,21 +47,29 @@ def corner_frame(corners: Corners) -> pd.DataFrame:
     ).T.rename_axis("quantity")
 
 
-def spread_frame(spread: Mapping[str, Spread]) -> pd.DataFrame:
-    """The spread table: a row per quantity and place (nominal use, lowest, highest in use)."""
+def estimates_frame(estimates: Mapping[str, Estimates]) -> pd.DataFrame:
+    """The spread table of a run: a row per quantity and place, every figure followed by its 95 % interval."""
     import pandas as pd
 
-    places = ("nominal_use", "lowest_in_use", "highest_in_use")
     rows = {
         (name, place): {
-            "mean": sample.mean,
-            "sd": sample.sd,
-            **{f"p{100 * share:g}": sample.quantile(share) for share in QUANTILES},
+            **_with_interval("mean", found.mean),
+            "sd": found.sd,
+            **{
+                key: value
+                for share, quantile in found.quantiles.items()
+                for key, value in _with_interval(f"p{100 * share:g}", quantile).items()
+            },
         }
-        for name, found in spread.items()
-        for place, sample in ((place, getattr(found, place)) for place in places)
+        for name, each in estimates.items()
+        for place, found in ((place, getattr(each, place)) for place in PLACES)
     }
     return pd.DataFrame.from_dict(rows, orient="index").rename_axis(["quantity", "place"])
+
+
+def _with_interval(name: str, estimate: Estimate) -> dict[str, float]:
+    interval = estimate.interval
+    return {name: estimate.value, f"{name}_low": interval.low, f"{name}_high": interval.high}
 
 
 def drift_frame(temperatures: Array, drifts: Mapping[str, Drift]) -> pd.DataFrame:

@@ -2,10 +2,15 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Sequence
+from decimal import Decimal
 
 from biasband.errors import QuantityError, UsageError
 from biasband.quantity import Kind, parse
+
+MOST_COUNTED = 10**18
+"""Boards are numbered in 63 bits."""
 
 
 def tolerance_option(text: str | None) -> float | None:
@@ -23,6 +28,24 @@ def tolerance_option(text: str | None) -> float | None:
         hint = f' (did you mean "{text.strip()} %"?)' if 1.0 <= share < 100.0 and "%" not in text else ""
         raise UsageError(f"--tolerance: not from 0 to below 100 %; read {text!r}{hint}")
     return share
+
+
+def boards_option(text: str | None) -> int | None:
+    """Read the text behind --boards, such as "100000", "1e6", "10^6" or "2^20"; None where there is none.
+
+    Raises UsageError where it is no whole number from 1 to `MOST_COUNTED`.
+    """
+    if text is None:
+        return None
+    boards = Decimal(0)
+    if found := re.fullmatch(r"([0-9]{1,19})\^([0-9]{1,2})", text.strip()):
+        boards = Decimal(int(found[1]) ** int(found[2]))
+    elif re.fullmatch(r"[0-9]{1,19}(\.[0-9]{1,19})?([eE]\+?[0-9]{1,2})?", text.strip()):
+        boards = Decimal(text.strip())
+    if not 1 <= boards <= MOST_COUNTED or boards % 1:
+        allowed = "a whole number from 1 to 10^18, as in 100000, 1e6 or 2^20"
+        raise UsageError(f"--boards: {allowed}; read {text!r}")
+    return int(boards)
 
 
 def keep_option(texts: Sequence[str] | None) -> dict[str, str]:

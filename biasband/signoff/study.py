@@ -14,11 +14,13 @@ from biasband.constants import BOARDS, MOST_BOARDS
 from biasband.errors import UsageError
 from biasband.files.series_files import load_series
 from biasband.margins.checks import Standing
-from biasband.margins.holding import Nominal, hold, looked_into, nominal, words
+from biasband.margins.holding import Nominal, hold, looked_into, nominal, points_met, words
+from biasband.margins.over_temperature import required_limits
 from biasband.margins.records import Evidence, Margin
 from biasband.margins.requirements import joint_yield
 from biasband.margins.verdict import Verdict, judge
 from biasband.parts.series import Snap, nearest
+from biasband.signoff.beyond import Beyond, beyond
 from biasband.signoff.intake import known_series
 from biasband.signoff.parts_list import PartLine, parts_list
 from biasband.signoff.warnings import warnings_of
@@ -28,7 +30,6 @@ from biasband.values.joint import Progress, silent
 from biasband.variation import corners as cornering
 from biasband.variation import sampling
 from biasband.variation.evaluation import cut_off_current
-from biasband.variation.points_of_use import points_of_use
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -55,6 +56,7 @@ class Review:
     verdict: Verdict
     warnings: tuple[str, ...]
     joint_yield: float
+    beyond: tuple[Beyond, ...]
 
     @property
     def quantities(self) -> Mapping[str, Quantity]:
@@ -100,21 +102,6 @@ class CornerStudy:
         return corner_frame(self.corners)
 
 
-@dataclass(frozen=True)
-class SpreadStudy:
-    """The sampled boards of a stage, and the design they were drawn for."""
-
-    design: Design
-    boards: sampling.Boards
-
-    @property
-    def table(self) -> pd.DataFrame:
-        """A row per quantity and place: mean, deviation and quantiles [SI]."""
-        from biasband.signoff.frames import spread_frame
-
-        return spread_frame(self.boards.spread)
-
-
 def design(stage: Stage, *, progress: Progress = silent) -> Design:
     """Design the resistors that have no value and choose from their series.
 
@@ -143,30 +130,17 @@ def corners(stage: Stage, *, progress: Progress = silent) -> CornerStudy:
     return CornerStudy(chosen, cornering.corners(stage, looked_into(stage), cut_off=cut_off_current(stage)))
 
 
-def spread(stage: Stage, *, boards: int = BOARDS, seed: int = 1, progress: Progress = silent) -> SpreadStudy:
-    """Sample boards of a stage, its missing values designed first, at every point of use.
-
-    The points of use are nominal use and the limits; a review adds those where its corner search
-    found an extreme inside. Raises UsageError for a number of boards or a seed that cannot be sampled
-    with, PhysicallyImpossible where the target cannot be met.
-    """
-    check_sampling(boards, seed)
-    chosen = design(stage, progress=lambda done: progress(CHOOSING * done))
-    stage, points, cut_off = chosen.stage, points_of_use(chosen.stage), cut_off_current(chosen.stage)
-    drawn = sampling.sample(stage, looked_into(stage), points, boards=boards, seed=seed, cut_off=cut_off)
-    return SpreadStudy(chosen, drawn)
-
-
-def check_sampling(boards: int, seed: int) -> None:
+def check_sampling(boards: int, seed: int, *, most: int | None = MOST_BOARDS) -> None:
     """Refuse numbers of boards and seeds that cannot be sampled with.
 
-    Raises UsageError for anything but a whole number of boards from 1 to 2^22 and a seed from 0.
+    Raises UsageError for anything but a whole number of boards from 1 to `most` and a seed from 0.
     """
     for name, number in (("boards", boards), ("seed", seed)):
         if not isinstance(number, int) or isinstance(number, bool):
             raise UsageError(f"{name}: a whole number; read {number!r}")
-    if not 1 <= boards <= MOST_BOARDS:
-        raise UsageError(f"boards: from 1 to {MOST_BOARDS}; read {boards}")
+    if boards < 1 or (most is not None and boards > most):
+        allowed = "from 1" if most is None else f"from 1 to {most}"
+        raise UsageError(f"boards: {allowed}; read {boards}")
     if seed < 0:
         raise UsageError(f"seed: a whole number from 0; read {seed}")
 
@@ -192,4 +166,16 @@ def review(stage: Stage, *, boards: int = BOARDS, seed: int = 1, progress: Progr
         verdict=judge(stage, middle.region, held.rows, held.standing, held.evidence),
         warnings=warnings_of(chosen, middle.values, held.evidence),
         joint_yield=joint_yield(stage.requirements, words(stage), held.evidence),
+        beyond=_beyond(stage, held.evidence, seed),
+    )
+
+
+def _beyond(stage: Stage, evidence: Evidence, seed: int) -> tuple[Beyond, ...]:
+    """What the corners and the drawn boards leave open."""
+    limits = required_limits(stage.requirements, words(stage), evidence.nominal)
+    spread = evidence.boards.spread
+    failures = [spread[limit.measure.name].failures(limit.bound, lower=limit.lower) for limit in limits]
+    points = points_met(stage, evidence.corners, looked_into(stage))
+    return beyond(
+        stage, limits, evidence.corners, points, failures, seed=seed, cut_off=cut_off_current(stage)
     )

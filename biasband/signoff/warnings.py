@@ -14,6 +14,7 @@ from biasband.quantity import Kind, format_quantity
 from biasband.stage import Stage, Transistor
 from biasband.values.choosing import Design
 from biasband.variation.contributors import NEGATIVE, SUPPLY, realise
+from biasband.variation.corners import Corners
 from biasband.variation.outside import Outside
 
 DECADE = 10.0
@@ -30,9 +31,29 @@ def warnings_of(design: Design, nominal: Mapping[str, float], evidence: Evidence
         *design.warnings,
         *_regions(evidence),
         *outside_words(stage, evidence.outside),
+        *_beyond_curve(stage, nominal, evidence.corners),
+        *stage_warnings(stage, nominal),
+    )
+
+
+def spread_warnings(
+    design: Design, nominal: Mapping[str, float], corners: Corners, outside: Sequence[Outside]
+) -> tuple[str, ...]:
+    """Every warning of a stage whose boards were sampled."""
+    stage = design.stage
+    return (
+        *design.warnings,
+        *outside_words(stage, outside),
+        *_beyond_curve(stage, nominal, corners),
+        *stage_warnings(stage, nominal),
+    )
+
+
+def stage_warnings(stage: Stage, nominal: Mapping[str, float]) -> tuple[str, ...]:
+    """What a reader must know of a stage before any analysis of it."""
+    return (
         *_assumed(stage),
         *_far_from_test(stage, nominal),
-        *_beyond_curve(stage, nominal, evidence),
         *_too_much_swing(stage),
         *_lonely(stage),
         *_dangers(stage),
@@ -98,7 +119,7 @@ def _too_much_swing(stage: Stage) -> Iterator[str]:
             )
 
 
-def _beyond_curve(stage: Stage, nominal: Mapping[str, float], evidence: Evidence) -> Iterator[str]:
+def _beyond_curve(stage: Stage, nominal: Mapping[str, float], corners: Corners) -> Iterator[str]:
     """Where the gain curve says nothing, h_FE is held, which is a guess."""
     transistor = stage.transistor
     if not isinstance(transistor, Transistor) or transistor.gain_curve is None:
@@ -107,7 +128,7 @@ def _beyond_curve(stage: Stage, nominal: Mapping[str, float], evidence: Evidence
     curve = f"beyond the gain curve ({_amperes(low)} to {_amperes(high)}), where h_FE is held"
     if not low <= transistor.test_current <= high:
         yield f"the test current, {_amperes(transistor.test_current)}, is {curve}"
-    current, range_ = nominal["collector_current"], evidence.corners.ranges["collector_current"]
+    current, range_ = nominal["collector_current"], corners.ranges["collector_current"]
     if current < low or current > high:
         yield f"the stage runs at {_amperes(current)}, {curve}"
     elif range_.low.value < low or range_.high.value > high:

@@ -197,7 +197,7 @@ def _made_off(resistor: Resistor, x: Coordinates, limit: Values) -> Values:
 
 def _tempco_term(name: str, tempco: float, x: Coordinates, rise: Values) -> Values:
     drawn = x.get(f"{name}.tempco")
-    return tempco * (x.get(name, 0.0) * np.abs(rise) if drawn is None else drawn * rise)
+    return tempco * np.abs(rise) * x.get(name, 0.0) if drawn is None else tempco * rise * drawn
 
 
 def _capacitance(capacitor: Capacitor, x: Coordinates, rise: Values) -> Values:
@@ -219,5 +219,7 @@ def _between(limits: Limits, x: Values, *, logarithmic: bool = False) -> Values:
     x = np.asarray(x, dtype=float)
     low, middle, high = (np.log(v) if logarithmic else v for v in exact.values())
     inside = middle + x * np.where(x < 0.0, middle - low, high - middle)
-    value = np.exp(inside) if logarithmic else inside
-    return np.select([x == side for side in exact], list(exact.values()), value)
+    value = np.asarray(np.exp(inside) if logarithmic else inside)
+    for side, limit in exact.items():
+        value[x == side] = limit
+    return value

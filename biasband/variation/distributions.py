@@ -58,7 +58,9 @@ class Uniform(_Symmetric):
 
     def quantile(self, share: Array) -> Array:
         """`x = 2u − 1`."""
-        return 2.0 * share - 1.0
+        x = 2.0 * share
+        x -= 1.0
+        return x
 
 
 @dataclass(frozen=True)

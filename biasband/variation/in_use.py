@@ -48,7 +48,7 @@ def _gather(values: dict[str, Array], outcome: Outcome) -> None:
     for name, low in outcome.low.items():
         high = outcome.high[name]
         if name not in values:
-            values[name] = np.stack([low, low, high])
+            values[name] = np.array([low, low, high])
         else:
             _, lowest, highest = values[name]
             np.minimum(lowest, low, out=lowest)

@@ -2,20 +2,20 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Mapping
+from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass
 
 from biasband.circuit.quantities import vocabulary
-from biasband.circuit.scenarios import Array
 from biasband.stage import Stage
 from biasband.variation.contributors import RIPPLE, Coordinates, use_axes
+from biasband.variation.counting import Counter, Moment
 from biasband.variation.distributions import PLAIN, UNIFORM
 from biasband.variation.draws import coordinates_from, numbers
 from biasband.variation.evaluation import Measures, evaluate
 from biasband.variation.in_use import InUse, in_use
 from biasband.variation.points_of_use import PointOfUse
 from biasband.variation.streams import Block, Source, uniform
-from biasband.variation.tally import Bound, Scale, Tally, tally
+from biasband.variation.tally import Bound, Scale, Tally
 
 
 @dataclass(frozen=True)
@@ -41,23 +41,27 @@ class Job:
         words = vocabulary(names, with_capacitors=bool(self.stage.capacitors))
         return {name: words[name] for name in self.scales}
 
-    def work(self, task: int) -> Tally:
-        """Tally the boards of one task."""
-        return merged(each.tally for each in self.solved(task))
+    def work(self, task: int, *, keep: Callable[[SolvedBlock], None] | None = None) -> Tally:
+        """Tally the boards of one task; `keep` is handed every block of them, in order."""
+        counter = Counter(self.scales, self.bounds)
+        for block in self.solved(task):
+            counter.add(block.found, first_board=block.first, moment=block.moment)
+            if keep is not None:
+                keep(block)
+            del block  # so that the next is solved in its memory
+        return counter.tally()
 
     def solved(self, task: int) -> Iterator[SolvedBlock]:
-        """Draw, solve and count the boards of one task, block by block."""
+        """Draw and solve the boards of one task, block by block."""
         measures, taken = self.measures, numbers(self.stage)
-        for block in self.source.blocks(taken, task):
-            drawn = coordinates_from(self.stage, block.uniforms)
-            found = in_use(self.stage, drawn, measures, self.points, cut_off=self.cut_off)
-            moment = self._moment(block, drawn, measures)
-            counted = tally(found, self.scales, first_board=block.first, bounds=self.bounds, moment=moment)
-            yield SolvedBlock(block.first, drawn, found, counted)
+        return (self._solved(block, measures) for block in self.source.blocks(taken, task))
 
-    def _moment(
-        self, block: Block, drawn: Coordinates, measures: Measures
-    ) -> Mapping[str, tuple[Array, Array]]:
+    def _solved(self, block: Block, measures: Measures) -> SolvedBlock:
+        drawn = coordinates_from(self.stage, block.uniforms)
+        found = in_use(self.stage, drawn, measures, self.points, cut_off=self.cut_off)
+        return SolvedBlock(block.first, drawn, found, self._moment(block, drawn, measures))
+
+    def _moment(self, block: Block, drawn: Coordinates, measures: Measures) -> Moment:
         """Lowest and highest of each bounded measure where each board is at a random moment in use."""
         wanted = {bound.measure: measures[bound.measure] for bound in self.bounds}
         if not wanted:
@@ -70,12 +74,12 @@ class Job:
 
 @dataclass(frozen=True)
 class SolvedBlock:
-    """Some boards in a row, numbered from `first`: coordinates by draw, values in use, and their tally."""
+    """Some boards in a row, numbered from `first`: coordinates by draw, values in use and at a moment."""
 
     first: int
     drawn: Coordinates
     found: InUse
-    tally: Tally
+    moment: Moment
 
 
 def merged(tallies: Iterator[Tally]) -> Tally:

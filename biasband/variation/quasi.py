@@ -9,11 +9,14 @@ from __future__ import annotations
 
 from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
+from typing import TYPE_CHECKING
 
 import numpy as np
 
+from biasband.circuit.scenarios import Array, chunks
 from biasband.circuit.topology import EMITTER_PARTS, TOPOLOGIES
 from biasband.coupling import BYPASS, INPUT, OUTPUT
+from biasband.errors import UsageError
 from biasband.stage import Stage
 from biasband.variation.contributors import (
     BASE_EMITTER,
@@ -26,8 +29,17 @@ from biasband.variation.contributors import (
 )
 from biasband.variation.streams import BLOCK, Block, Number
 
+if TYPE_CHECKING:
+    from scipy.stats import qmc
+
 SCRAMBLINGS = 16
 """Independent scramblings of the same points: enough for a Student-t interval."""
+
+MOST = SCRAMBLINGS * 2**30
+"""Boards: scipy's points have 30 bits."""
+
+STRETCH = 2**18
+"""Boards of one task; going forward to where it starts takes a few per cent of its work at most."""
 
 _RESISTORS = sorted({*EMITTER_PARTS, *(name for each in TOPOLOGIES.values() for name in each.resistors)})
 
@@ -52,7 +64,7 @@ def rounded_up(boards: int) -> int:
 
 @dataclass(frozen=True)
 class Scrambled:
-    """Quasi-random boards, a power of two in each of `SCRAMBLINGS` tasks.
+    """Quasi-random boards, a power of two in each of `SCRAMBLINGS`, which are divided into stretches.
 
     `aliases` gives the seats of numbers that are named after a group. Every board is a batch of its own:
     a batch in common changes no mean and no quantile of single boards.
@@ -64,26 +76,55 @@ class Scrambled:
 
     @classmethod
     def of(cls, stage: Stage, *, boards: int, seed: int) -> Scrambled:
-        """Quasi-random boards of a stage, at least so many."""
+        """Quasi-random boards of a stage, at least so many.
+
+        Raises UsageError for more than there are points.
+        """
+        if boards > MOST:
+            raise UsageError(f"boards: from 1 to {MOST} quasi-random ones; read {boards} (plain: any number)")
         first = {r.group: r.name for r in reversed(stage.resistors) if r.group is not None}
         shared = {batch_axis(group): f"batch of {name}" for group, name in first.items()}
         warmed = {f"{group_axis(group)}.tempco": f"group of {name}" for group, name in first.items()}
         return cls(rounded_up(boards), seed, {**shared, **warmed})
 
     @property
+    def each(self) -> int:
+        """Boards of one scrambling."""
+        return self.boards // SCRAMBLINGS
+
+    @property
     def tasks(self) -> int:
-        """A task for each scrambling."""
-        return SCRAMBLINGS
+        """A task for each stretch of each scrambling."""
+        return SCRAMBLINGS * -(-self.each // STRETCH)
+
+    def group(self, task: int) -> int:
+        """The scrambling that a task belongs to."""
+        return task * SCRAMBLINGS // self.tasks
 
     def blocks(self, numbers: Sequence[Number], task: int) -> Iterator[Block]:
-        """The boards of one scrambling."""
+        """The boards of one stretch."""
+        stretch = min(STRETCH, self.each)
+        points = self._points_from(task * stretch)
+        for rows in chunks(stretch, BLOCK):
+            drawn = points.random(rows.stop - rows.start)
+            yield Block(task * stretch + rows.start, self._seated(numbers, drawn))
+
+    def board(self, numbers: Sequence[Number], board: int) -> Mapping[str, Array]:
+        """The uniform numbers of one board, (1,) each."""
+        return self._seated(numbers, self._points_from(board).random(1))
+
+    def _points_from(self, board: int) -> qmc.Sobol:
+        """The points of a board's scrambling, that board's being the next."""
         from scipy.stats import qmc
 
-        random = np.random.default_rng(np.random.SeedSequence([self.seed, task]))
+        scrambling, place = divmod(board, self.each)
+        random = np.random.default_rng(np.random.SeedSequence([self.seed, scrambling]))
         points = qmc.Sobol(len(_SEATS), scramble=True, seed=random)
+        if place:  # scipy cannot go forward by nothing
+            points.fast_forward(place)
+        return points
+
+    def _seated(self, numbers: Sequence[Number], points: Array) -> Mapping[str, Array]:
+        """Points of all dimensions as the numbers that are wanted."""
         seats = {number.name: _SEATS.index(self.aliases.get(number.name, number.name)) for number in numbers}
-        each = self.boards // SCRAMBLINGS
-        for start in range(0, each, BLOCK):
-            drawn = points.random(min(BLOCK, each - start))
-            uniforms = {name: np.ascontiguousarray(drawn[:, seat]) for name, seat in seats.items()}
-            yield Block(task * each + start, uniforms)
+        return {name: np.ascontiguousarray(points[:, seat]) for name, seat in seats.items()}

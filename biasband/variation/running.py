@@ -6,7 +6,7 @@ An executor is anything with the interface of `concurrent.futures.Executor`: thr
 from __future__ import annotations
 
 from collections import deque
-from collections.abc import Callable, Iterator
+from collections.abc import Callable, Generator
 from concurrent.futures import Executor, Future
 from typing import TypeVar
 
@@ -15,7 +15,7 @@ Result = TypeVar("Result")
 
 def in_order(
     work: Callable[[int], Result], tasks: int, *, executor: Executor | None = None, ahead: int = 1
-) -> Iterator[Result]:
+) -> Generator[Result, None, None]:
     """Do tasks 0, 1, 2 …; an executor has `ahead` of them in hand, and what is not wanted is taken back."""
     if executor is None:
         yield from map(work, range(tasks))
@@ -25,9 +25,16 @@ def in_order(
         for task in range(tasks):
             waiting.append(executor.submit(work, task))
             if len(waiting) >= ahead:
-                yield waiting.popleft().result()
+                yield _oldest(waiting)
         while waiting:
-            yield waiting.popleft().result()
+            yield _oldest(waiting)
     finally:
         for each in waiting:
             each.cancel()
+
+
+def _oldest(waiting: deque[Future[Result]]) -> Result:
+    """Wait for the oldest; it is among those taken back until it is there."""
+    result = waiting[0].result()
+    waiting.popleft()
+    return result

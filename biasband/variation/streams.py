@@ -9,9 +9,11 @@ from __future__ import annotations
 
 from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
+from functools import lru_cache
 from typing import Protocol
 
 import numpy as np
+from numpy.typing import NDArray
 
 from biasband.circuit.scenarios import Array, chunks
 
@@ -49,8 +51,14 @@ class Source(Protocol):
     def tasks(self) -> int:
         """How many tasks they are divided into."""
 
+    def group(self, task: int) -> int:
+        """Which tally a task belongs to, counted from 0: what is estimated from each group alone."""
+
     def blocks(self, numbers: Sequence[Number], task: int) -> Iterator[Block]:
         """The boards of a task, block by block."""
+
+    def board(self, numbers: Sequence[Number], board: int) -> Mapping[str, Array]:
+        """The uniform numbers of one board, (1,) each."""
 
 
 @dataclass(frozen=True)
@@ -66,13 +74,20 @@ class Plain:
         """Sequences of boards, the last of which may be a part of one."""
         return -(-self.boards // SEQUENCE)
 
+    def group(self, task: int) -> int:
+        """All boards are one group."""
+        return 0
+
     def blocks(self, numbers: Sequence[Number], task: int) -> Iterator[Block]:
         """The boards of one sequence."""
         start = task * SEQUENCE
         for rows in chunks(min(SEQUENCE, self.boards - start), BLOCK):
             boards = slice(start + rows.start, start + rows.stop)
-            drawn = plain(numbers, boards, seed=self.seed, batch_size=self.batch_size)
-            yield Block(boards.start, drawn)
+            yield Block(boards.start, plain(numbers, boards, seed=self.seed, batch_size=self.batch_size))
+
+    def board(self, numbers: Sequence[Number], board: int) -> Mapping[str, Array]:
+        """The uniform numbers of one board, (1,) each."""
+        return plain(numbers, slice(board, board + 1), seed=self.seed, batch_size=self.batch_size)
 
 
 def plain(numbers: Sequence[Number], rows: slice, *, seed: int, batch_size: int = 1) -> dict[str, Array]:
@@ -92,9 +107,14 @@ def _by_batch(name: str, rows: slice, seed: int, size: int) -> Array:
     return np.asarray(drawn[batches - batches[0]])
 
 
+@lru_cache(maxsize=2**10)
+def _key(name: str, seed: int) -> NDArray[np.unsignedinteger]:
+    """The key of a stream, which takes longer to make than its first thousand numbers."""
+    return np.random.SeedSequence([seed, *name.encode()]).generate_state(2, np.uint64)
+
+
 def uniform(name: str, rows: slice, seed: int) -> Array:
     """Numbers of one stream, in [0, 1); the counter gives four doubles a step."""
-    stream = np.random.Philox(np.random.SeedSequence([seed, *name.encode()]))
-    stream.advance(rows.start // 4)
-    skip = rows.start % 4
+    step, skip = divmod(rows.start, 4)
+    stream = np.random.Philox(key=_key(name, seed), counter=step)
     return np.asarray(np.random.Generator(stream).random(rows.stop - rows.start + skip)[skip:])

@@ -11,7 +11,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from biasband.circuit.scenarios import Array
-from biasband.variation.tally import BINS, STEPS, Scale, Tally
+from biasband.variation.tally import Scale, Tally
 
 NAN = float("nan")
 
@@ -28,9 +28,9 @@ class Within:
 class Summary:
     """What N boards showed of one measure at one place of use [SI].
 
-    Quantiles are known to a bin of the tally (`scale.bin_width`); mean and deviation to a step, 1/2^20 of
-    the distance of the corner limits. NaN where no board solved, or where the corners have no limits to count
-    between.
+    Quantiles between the corner limits are known to a bin of the tally (`scale.bin_width`), beyond them to
+    the farthest board; mean and deviation to a step (`scale.step`). NaN where no board solved, or where the
+    corners have no limits to count between: then no more is known than the extremes.
     """
 
     scale: Scale
@@ -46,8 +46,7 @@ class Summary:
         """The mean over solved boards."""
         if self._single is not None:
             return self._single
-        step = self.scale.half / STEPS
-        return self.scale.centre + step * float(Fraction(self.total, self.solved))
+        return self.scale.centre + self.scale.step * float(Fraction(self.total, self.solved))
 
     @property
     def sd(self) -> float:
@@ -57,24 +56,38 @@ class Summary:
         if self._single is not None:
             return 0.0 * self._single
         squares = Fraction(self.solved * self.squares - self.total**2, self.solved * (self.solved - 1))
-        return self.scale.half / STEPS * sqrt(squares)
+        return self.scale.step * sqrt(squares)
 
     def quantile(self, share: float) -> float:
-        """The value that this share of solved boards does not exceed, interpolated linearly in its bin."""
+        """The value that this share of solved boards does not exceed, interpolated between two boards."""
         if self._single is not None:
             return self._single
-        place = share * (self.solved - 1) + 0.5
-        counted = self._counted
-        bin_ = min(int(np.searchsorted(counted, place, side="right")), BINS + 1)
-        before = int(counted[bin_ - 1]) if bin_ else 0
-        low, high = self._ends(bin_)
-        return low + (high - low) * (place - before) / float(self.bins[bin_])
+        place = share * (self.solved - 1)
+        below = min(int(place), self.solved - 2)
+        low, high = self._about(below + 1), self._about(below + 2)
+        return low + (place - below) * (high - low)
 
     def at_rank(self, rank: int) -> Within:
         """Where the board of this rank lies, the lowest being 1: between the ends of its bin."""
-        if self._single is not None:
-            return Within(self._single, self._single)
-        return Within(*self._ends(int(np.searchsorted(self._counted, rank, side="left"))))
+        if rank == 1:
+            return Within(self.lowest, self.lowest)
+        if rank == self.solved:
+            return Within(self.highest, self.highest)
+        if not (self.solved and self.scale.half):
+            return Within(self.lowest, self.highest)
+        bin_ = self._bin(rank)
+        low, high = self._edges[bin_] - self._rounding, self._edges[bin_ + 1] + self._rounding
+        return Within(max(float(low), self.lowest), min(float(high), self.highest))
+
+    def _about(self, rank: int) -> float:
+        """Where the board of this rank is thought: those of a bin lie evenly between its ends."""
+        within, bin_ = self.at_rank(rank), self._bin(rank)
+        in_bin = int(self.bins[bin_])
+        before = int(self._counted[bin_]) - in_bin
+        return within.low + (within.high - within.low) * (rank - 0.5 - before) / in_bin
+
+    def _bin(self, rank: int) -> int:
+        return int(np.searchsorted(self._counted, rank, side="left"))
 
     @property
     def _single(self) -> float | None:
@@ -83,18 +96,19 @@ class Summary:
             return self.lowest
         return None if self.solved and self.scale.half else NAN
 
+    @property
+    def _rounding(self) -> float:
+        """By how much rounding may put a value into the bin beside its own."""
+        return 4.0 * float(np.spacing(self.scale.largest))
+
     @cached_property
     def _counted(self) -> NDArray[np.int64]:
         return np.cumsum(self.bins)
 
     @cached_property
     def _edges(self) -> Array:
-        """The edges of all bins, those beyond the limits included; no board lies outside the extremes."""
-        edges = np.concatenate([[-np.inf], self.scale.edges(), [np.inf]])
-        return np.asarray(np.clip(edges, self.lowest, self.highest), dtype=np.float64)
-
-    def _ends(self, bin_: int) -> tuple[float, float]:
-        return float(self._edges[bin_]), float(self._edges[bin_ + 1])
+        """The edges of all bins, those beyond the limits included."""
+        return np.concatenate([[-np.inf], self.scale.edges(), [np.inf]])
 
 
 def summary(tally: Tally, scale: Scale, measure: int, place: int) -> Summary:

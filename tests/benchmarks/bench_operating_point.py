@@ -67,37 +67,45 @@ def exponential_pass() -> None:
         np.exp(values)
 
 
-def collector_current_alone(scenarios: Scenarios, row: int) -> float:
-    """Collector current [A] of one board, as one would write it first: the divider's three nodes by scipy."""
+def collector_current_alone(scenarios: Scenarios, row: int, *, heat: float) -> float:
+    """Collector current [A] of one board, as one would write it first: three nodes and T_j by scipy.
+
+    `heat` is the thermal resistance [K/W].
+    """
     one = scenarios.part(np.array([row]))
     R1, R2, RC, RE = (float(np.ravel(one.resistances[name])[0]) for name in ("R1", "R2", "RC", "RE"))
     h_FE, vbe_25, leakage = (
         float(np.ravel(values)[0]) for values in (one.gain, one.base_emitter_voltage, one.leakage)
     )
-    T, T0, V_CC = float(np.ravel(one.temperature)[0]), 298.15, float(np.ravel(one.supply + one.ripple)[0])
-    V_T, early = 1.380649e-23 / 1.602176634e-19 * T, 1.0 + (6.0 - vbe_25) / 70.0
-    I_S = 1.5e-3 / early * exp(-(vbe_25 - 2e-3 * (T - T0)) / V_T)
-    beta, I_CBO = h_FE / early * (T / T0) ** (5e-3 * T0), leakage * 2.0 ** ((T - T0) / 10.0)
+    T_a, T0, V_CC = float(np.ravel(one.temperature)[0]), 298.15, float(np.ravel(one.supply + one.ripple)[0])
+    early = 1.0 + (6.0 - vbe_25) / 70.0
 
-    def currents(V_BE: float, V_BC: float) -> tuple[float, float]:
+    def currents(V_BE: float, V_BC: float, T: float) -> tuple[float, float]:
+        V_T = 1.380649e-23 / 1.602176634e-19 * T
+        I_S = 1.5e-3 / early * exp(-(vbe_25 - 2e-3 * (T - T0)) / V_T)
+        beta, I_CBO = h_FE / early * (T / T0) ** (5e-3 * T0), leakage * 2.0 ** ((T - T0) / 10.0)
         forward, reverse = exp(min(V_BE / V_T, 60.0)), exp(min(V_BC / V_T, 60.0))
         back = I_S / 4.0 * (reverse - 1.0)
         I_C = I_S * (forward - reverse) * (1.0 - V_BC / 70.0) - back + I_CBO
         return I_S / beta * (forward - 1.0) + back - I_CBO, I_C
 
-    def residual(V: Vector) -> Vector:
-        V_B, V_C, V_E = V.tolist()
-        I_B, I_C = currents(V_B - V_E, V_B - V_C)
+    def residual(unknown: Vector) -> Vector:
+        V_B, V_C, V_E, T = unknown.tolist()
+        I_B, I_C = currents(V_B - V_E, V_B - V_C, T)
         base = (V_CC - V_B) / R1 - V_B / R2 - I_B
-        return np.array([base * R2, V_CC - V_C - I_C * RC, V_E - (I_B + I_C) * RE])
+        power = (V_C - V_E) * I_C + (V_B - V_E) * I_B
+        return np.array(
+            [base * R2, V_CC - V_C - I_C * RC, V_E - (I_B + I_C) * RE, T - T_a - heat * power]
+        )
 
-    V_B, V_C, V_E = optimize.root(residual, np.array([1.4, 5.0, 0.8]), tol=1e-10).x.tolist()
-    return currents(V_B - V_E, V_B - V_C)[1]
+    found = optimize.root(residual, np.array([1.4, 5.0, 0.8, T_a]), tol=1e-10).x.tolist()
+    V_B, V_C, V_E, T = found
+    return currents(V_B - V_E, V_B - V_C, T)[1]
 
 
-def scalar_loop(scenarios: Scenarios) -> Vector:
+def scalar_loop(scenarios: Scenarios, *, heat: float) -> Vector:
     """Collector currents [A], one board after the other."""
-    return np.array([collector_current_alone(scenarios, row) for row in range(len(scenarios))])
+    return np.array([collector_current_alone(scenarios, row, heat=heat) for row in range(len(scenarios))])
 
 
 def peak_memory(transistor: Transistor, scenarios: Scenarios) -> float:
@@ -126,12 +134,15 @@ def main() -> None:
         print(f"{name}: {passes:.0f} passes of np.exp (goal: at most {goal}), "
               f"peak memory beyond inputs and result {megabytes:.1f} MiB")  # fmt: skip
     few = boards(SCALAR_BOARDS)
-    loop = shortest(lambda: scalar_loop(few), repeats=3) / SCALAR_BOARDS
-    own = seconds["cool"] / BOARDS
-    same = np.abs(scalar_loop(few) / solve(WIRING, COOL, "npn", few).collector_current - 1.0).max()
-    print(
-        f"against a loop of scipy.optimize.root: {loop / own:.0f} times faster (currents agree to {same:.0e})"
-    )
+    for name, transistor in (("cool", COOL), ("warm", WARM)):
+        heat = transistor.thermal_resistance or 0.0
+        loop = shortest(lambda heat=heat: scalar_loop(few, heat=heat), repeats=3) / SCALAR_BOARDS  # type: ignore[misc]
+        own = solve(WIRING, transistor, "npn", few).collector_current
+        same = np.abs(scalar_loop(few, heat=heat) / own - 1.0).max()
+        print(
+            f"{name}, against a loop of scipy.optimize.root on the same equations: "
+            f"{loop / seconds[name] * BOARDS:.0f} times the throughput (currents agree to {same:.0e})"
+        )
 
 
 if __name__ == "__main__":

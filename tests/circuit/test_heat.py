@@ -122,7 +122,7 @@ def test_power_slope_is_the_finite_difference_of_the_scalar_twin(case: Case) -> 
     expected = (solver.at(T + h).power - solver.at(T - h).power) / (2.0 * h)
     assert isinstance(case.transistor, Transistor)
     part = together([case])
-    ports = condense(case.wiring, part.resistances, rails(case.polarity, part))
+    ports = condense(case.wiring, part.resistances).ports(rails(case.polarity, part))
     problem = Problem.of(ports, case.transistor, part)
     slope = power_slope(problem, problem.ambient, patient(problem, problem.ambient))[0]
     # A central difference over 0.02 K: curvature (1e-6 of the slope's scale) and rounding of the power.

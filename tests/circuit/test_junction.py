@@ -9,7 +9,8 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from biasband.circuit.junction import Laws, Sheet, base_emitter_voltage, flow, flow_drift, laws, sheet
+from biasband.circuit.flow import flow, flow_drift
+from biasband.circuit.junction import Laws, Sheet, base_emitter_voltage, laws, sheet
 from biasband.circuit.scenarios import Values
 from biasband.stage import Transistor
 from circuit.stages import Case, real, transistors
@@ -107,7 +108,7 @@ def test_drift_of_the_currents_is_the_complex_step_derivative(
 ) -> None:
     law, h = law_of(transistor, temperature, leakage=30e-9), 1e-30
     at = flow(law, V_BE, V_BC)
-    drift = flow_drift(sheet_of(transistor, leakage=30e-9), law, at, V_BE, V_BC)
+    drift = flow_drift(sheet_of(transistor, leakage=30e-9), at)
     moved = flow(law_of(transistor, temperature + 1j * h, leakage=30e-9), V_BE, V_BC)  # type: ignore[arg-type]
     # Rounding alone, of terms that move by up to some 20 % per kelvin.
     scale = float(1e-12 * (at.forward + at.reverse))

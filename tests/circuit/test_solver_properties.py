@@ -220,7 +220,7 @@ def test_unsolved_scenario_of_an_ideal_transistor_is_told_too(fault: dict[str, f
 def test_quick_path_is_the_patient_one(case: Case) -> None:
     assert isinstance(case.transistor, Transistor)
     part = together([case])
-    ports = condense(case.wiring, part.resistances, rails(case.polarity, part))
+    ports = condense(case.wiring, part.resistances).ports(rails(case.polarity, part))
     problem = Problem.of(ports, case.transistor, part)
     with np.errstate(all="ignore"):  # as `solve` does around every chunk
         quick, slow = isothermal(problem, problem.ambient), patient(problem, problem.ambient)

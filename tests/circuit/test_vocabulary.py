@@ -14,7 +14,7 @@ from biasband.circuit.reading import read
 from biasband.circuit.solution import Status
 from biasband.quantity import Kind
 from biasband.stage import Signal
-from circuit.stages import Case, cases, ideal, real, value
+from circuit.stages import Case, cases, ideal, real, together, value
 
 DIVIDER = Case(
     topology="divider",
@@ -188,3 +188,21 @@ def test_numbers_and_arrays_read_alike() -> None:
     scenarios = replace(DIVIDER.scenarios, supply=9.0, ripple=0.0, leakage=0.0)
     reading = read(DIVIDER.stage, scenarios)
     assert value(reading, "supply_current") == pytest.approx(DIVIDER.value("supply_current"), rel=1e-15)
+
+
+@pytest.mark.parametrize("case", [DIVIDER, COUPLED, FOLLOWER, replace(COUPLED, polarity="pnp", ripple=0.05)])
+def test_neighbours_change_no_byte_of_any_quantity(case: Case) -> None:
+    # A neighbour may be saturated, cut off or beyond solving: nothing is decided for all scenarios at once.
+    warm = replace(case, transistor=real(early_voltage=70.0, thermal_resistance=280.0))
+    name = next(iter(case.resistances))
+    boards = [
+        replace(warm, resistances={**case.resistances, name: ohms}, supply=volts)
+        for ohms in (1.0, 20e3, 47e3, 68e3, 100e3, 10e6)
+        for volts in (0.2, 9.0, 40.0)
+    ]
+    together_read = read(warm.stage, together(boards))
+    for row, quantity in vocabulary(tuple(case.resistances)).items():
+        whole = np.broadcast_to(np.asarray(quantity.read(together_read)), len(boards))
+        for number in range(0, len(boards), 4):
+            alone = np.ravel(quantity.read(read(warm.stage, together(boards[number : number + 1]))))[0]
+            assert np.array_equal(alone, whole[number], equal_nan=True), (row, number)

@@ -13,17 +13,19 @@ import pytest
 
 from biasband.quantity import Kind, parse
 from biasband.show.capacitor_tables import capacitor_parts, capacitor_values, formula
-from biasband.show.export import as_text, corners_json, design_json, drift_json, review_json, spread_json
+from biasband.show.export import as_text, corners_json, design_json, drift_json, review_json
 from biasband.show.layout import lines_of
 from biasband.show.parts_csv import parts_csv
 from biasband.show.prose import place
 from biasband.show.report import design_report, review_report
 from biasband.show.spelling import Spelling
+from biasband.show.spread_json import spread_json
 from biasband.show.surroundings import surroundings
 from biasband.signoff.drifting import drift
 from biasband.signoff.intake import read_stage
 from biasband.signoff.parts_list import capacitors_list, exact_values, parts_list
-from biasband.signoff.study import Review, corners, design, review, spread
+from biasband.signoff.spreading import spread
+from biasband.signoff.study import Review, corners, design, review
 from biasband.stage import Capacitor, Requirement, Stage
 from biasband.values.capacitors import CapacitorStep
 from biasband.variation.corners import Extreme
@@ -177,10 +179,10 @@ def test_every_analysis_as_json_has_them():
     words = found.corners.ranges
     results = [
         design_json(found.design), corners_json(found.design, found.corners, words),
-        spread_json(drawn.design, drawn.boards), drift_json(swept),
+        spread_json(drawn), drift_json(swept),
     ]  # fmt: skip
     assert [list(parsed(result)["capacitors"]) for result in results] == [NAMES] * 4
-    assert LOW not in words and LOW not in drawn.boards.spread  # nothing requires it
+    assert LOW not in words and LOW not in drawn.estimates  # nothing requires it
     asked = corners(hive(required=True)).corners.ranges
     assert asked[LOW].high.value == made(required=True).evidence.corners.ranges[LOW].high.value
     assert parsed(review_json(reviewed(HIVE)))["capacitors"] == {}

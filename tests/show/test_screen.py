@@ -11,7 +11,7 @@ from rich.cells import cell_len
 
 from biasband.show.cautions import CAUTIONS
 from biasband.show.layout import lines_of
-from biasband.show.report import corners_report, design_report, review_report, snap_report, spread_report
+from biasband.show.report import corners_report, design_report, review_report, snap_report
 from biasband.show.screen import show
 from biasband.show.spelling import Spelling
 from biasband.show.table import Table
@@ -26,7 +26,6 @@ def reports(name):
         review_report(review),
         design_report(review.design),
         corners_report(review.design, evidence.corners, words),
-        spread_report(review.design, evidence.boards, words),
         snap_report(snap_texts(["5k", "472"], pair=True)),
     )
 
@@ -107,7 +106,7 @@ def test_warnings_stand_before_the_verdict():
 
 
 def test_every_report_on_a_stage_ends_with_the_cautions():
-    for report in reports(HIVE)[:4]:
+    for report in reports(HIVE)[:3]:
         text = " ".join(line.plain for line in lines_of(report, width=400, spelling=Spelling()))
         assert all(caution in text for caution in CAUTIONS)
     assert any("60 V" in caution and "mains" in caution for caution in CAUTIONS)

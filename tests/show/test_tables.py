@@ -7,7 +7,7 @@ import pytest
 
 from biasband.circuit.operating_point import Region
 from biasband.quantity import Kind, parse
-from biasband.show.analysis_tables import corners_table, design_table, spread_tables
+from biasband.show.analysis_tables import corners_table, design_table
 from biasband.show.parts_table import parts_table
 from biasband.show.review_tables import margin_table, nominal_table, summary_table
 from biasband.show.summary import Attempt
@@ -164,20 +164,6 @@ def test_corners_table_holds_the_extremes():
             assert read_back(text, quantity.kind) == pytest.approx(extreme.value, rel=FOUR_DIGITS, abs=slack)
     count = review.evidence.corners.count
     assert table.title == f"{count} corners: {count} active"
-
-
-def test_spread_tables_hold_the_quantiles():
-    review = reviewed(HIVE)
-    tables = spread_tables(review.evidence.boards, review.looked_into)
-    assert [table.title for table in tables] == [
-        "At nominal use", "Each board's lowest in use", "Each board's highest in use",
-    ]  # fmt: skip
-    sample = review.spread["collector_voltage"].lowest_in_use
-    mean, sd, low, median, high = tables[1].rows[0].cells[1:]
-    shown = [parse(text, Kind.VOLTAGE) for text in (mean, low, median, high)]
-    wanted = [sample.mean, sample.quantile(0.00135), sample.quantile(0.5), sample.quantile(0.99865)]
-    assert shown == pytest.approx(wanted, rel=FOUR_DIGITS)
-    assert parse(sd, Kind.VOLTAGE) == pytest.approx(sample.sd, rel=THREE_DIGITS)
 
 
 def test_design_table_shows_hand_refined_and_chosen():

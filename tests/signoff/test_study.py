@@ -14,7 +14,7 @@ import biasband as bb
 from biasband.circuit.operating_point import Region
 from biasband.errors import PhysicallyImpossible, UsageError
 from biasband.files.stage_file import read_stage
-from biasband.signoff.frames import corner_frame, spread_frame
+from biasband.signoff.frames import corner_frame
 from biasband.signoff.study import Review, review
 from biasband.stage import Limits, Stage, Supply
 
@@ -111,22 +111,17 @@ def test_margin_frame_holds_the_rows_in_order(result):
     assert {"id", "limit", "side", "judged_by", "nominal", "corners", "rss", "margin_share"} <= set(frame)
 
 
-def test_corner_and_spread_frames_are_indexed_by_quantity(result):
-    corners, spread = corner_frame(result.evidence.corners), spread_frame(result.spread)
+def test_corner_frame_is_indexed_by_quantity(result):
+    corners = corner_frame(result.evidence.corners)
     found = result.evidence.corners.ranges["collector_voltage"]
     assert corners.loc["collector_voltage", "low"] == found.low.value
     assert corners.loc["collector_voltage", "low_at.gain"] == found.low.at["gain"]
-    nominal_use = result.spread["collector_voltage"].nominal_use
-    assert spread.loc[("collector_voltage", "nominal_use"), "p50"] == nominal_use.quantile(0.5)
-    assert spread.loc[("collector_voltage", "nominal_use"), "sd"] == nominal_use.sd
 
 
 def test_analyses_can_be_asked_for_alone(hive, result):
     assert bb.design(hive) == result.design
     found = bb.corners(hive).corners.ranges["collector_voltage"]
     assert found == result.evidence.corners.ranges["collector_voltage"]
-    drawn = bb.spread(hive, boards=64, seed=7).boards.spread["collector_voltage"].nominal_use.values
-    assert np.array_equal(drawn, result.spread["collector_voltage"].nominal_use.values[:64])
 
 
 def test_snap_finds_the_neighbours():
