@@ -18,17 +18,17 @@ import pytest
 from typer.testing import CliRunner
 
 from biasband import cli
+from biasband.boards import quasi
+from biasband.boards.draws import coordinates
+from biasband.boards.in_use import PLACES
+from biasband.boards.job import Job
+from biasband.boards.sampling import sample
+from biasband.boards.streams import SEQUENCE
 from biasband.files.stage_file import read_stage
 from biasband.margins.holding import looked_into, points_met
 from biasband.signoff import study
-from biasband.variation import quasi
 from biasband.variation.corners import corners
-from biasband.variation.draws import coordinates
 from biasband.variation.evaluation import cut_off_current
-from biasband.variation.in_use import PLACES
-from biasband.variation.job import Job
-from biasband.variation.sampling import sample
-from biasband.variation.streams import SEQUENCE
 
 ROOT = Path(__file__).parents[1]
 TEXT = Path(__file__).with_name("files").joinpath("hive_microphone.toml").read_text(encoding="utf-8")

@@ -8,6 +8,19 @@ from pathlib import Path
 
 import pytest
 
+from biasband.boards.estimates import Estimate, Estimates, Figures
+from biasband.boards.in_use import InUse
+from biasband.boards.intervals import Between
+from biasband.boards.job import Job
+from biasband.boards.monotone import Monotone
+from biasband.boards.outside import Farthest, Outside
+from biasband.boards.pick_freeze import Share, VarianceShares
+from biasband.boards.rare import Rare
+from biasband.boards.sampling import Boards, Spread
+from biasband.boards.streams import Block
+from biasband.boards.summary import Summary
+from biasband.boards.tally import Bound, Scale, Tally
+from biasband.boards.variance import VarianceCauses
 from biasband.margins.checks import NotMade, Standing
 from biasband.margins.holding import Holding, Nominal
 from biasband.margins.over_temperature import Failure, HeldLimit
@@ -26,21 +39,8 @@ from biasband.values.joint import Contender, Contest
 from biasband.values.pairing import Offer
 from biasband.variation.causes import Causes
 from biasband.variation.corners import Corners, Extreme, Range
-from biasband.variation.estimates import Estimate, Estimates, Figures
 from biasband.variation.finite_change import FiniteChange, Stability
-from biasband.variation.in_use import InUse
-from biasband.variation.intervals import Between
-from biasband.variation.job import Job
-from biasband.variation.monotone import Monotone
-from biasband.variation.outside import Farthest, Outside
-from biasband.variation.pick_freeze import Share, VarianceShares
-from biasband.variation.rare import Rare
 from biasband.variation.rss import Interval
-from biasband.variation.sampling import Boards, Spread
-from biasband.variation.streams import Block
-from biasband.variation.summary import Summary
-from biasband.variation.tally import Bound, Scale, Tally
-from biasband.variation.variance import VarianceCauses
 
 TEXT = (Path(__file__).parent.parent / "DEVELOPERS.md").read_text(encoding="utf-8")
 GLOSSARY = TEXT.split("## Glossary")[1].split("\n## ")[0]

@@ -7,6 +7,9 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
+from biasband.boards import sampling
+from biasband.boards.draws import coordinates
+from biasband.boards.outside import extended
 from biasband.circuit.operating_point import Region
 from biasband.circuit.quantities import Quantity, clips_first, vocabulary
 from biasband.circuit.reading import read
@@ -17,12 +20,9 @@ from biasband.stage import Stage
 from biasband.variation import causes as causing
 from biasband.variation import corners as cornering
 from biasband.variation import rss as summing
-from biasband.variation import sampling
 from biasband.variation.contributors import realise, use_axes
 from biasband.variation.corners import BOTH, Sides
-from biasband.variation.draws import coordinates
 from biasband.variation.evaluation import Measures, cut_off_current
-from biasband.variation.outside import extended
 from biasband.variation.points_of_use import PointOfUse, points_of_use
 
 _INTERIOR_DIGITS = 2

@@ -6,13 +6,13 @@ from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import Literal
 
+from biasband.boards.outside import Outside
+from biasband.boards.sampling import Boards
 from biasband.quantity import Kind
 from biasband.stage import Method
 from biasband.variation.causes import Causes
 from biasband.variation.corners import Corners, Extreme
-from biasband.variation.outside import Outside
 from biasband.variation.rss import Interval
-from biasband.variation.sampling import Boards
 
 Side = Literal["at_least", "at_most"]
 NAN = float("nan")

@@ -8,12 +8,12 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
+from biasband.boards.intervals import allowed_failures, yield_bound
+from biasband.boards.sampling import Boards
 from biasband.circuit.quantities import Quantity
 from biasband.margins.records import NAN, Evidence, Margin, Side, share
 from biasband.stage import Requirement
 from biasband.variation.corners import Extreme
-from biasband.variation.intervals import allowed_failures, yield_bound
-from biasband.variation.sampling import Boards
 
 
 def requirement_margins(

@@ -4,12 +4,12 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 
+from biasband.boards.monotone import Monotone
+from biasband.boards.rare import Rare
 from biasband.show.focus import limit_title
 from biasband.show.prose import contributor
-from biasband.show.table import Passage, Report
+from biasband.show.table import Passage, Report, percent
 from biasband.signoff.beyond import Beyond
-from biasband.variation.monotone import Monotone
-from biasband.variation.rare import Rare
 
 _DIGITS = 3
 
@@ -53,7 +53,7 @@ def _rare(found: Rare) -> str:
     draws = f"{found.effective_sample_size:.0f} effective failures of {found.draws} draws{unsolved}"
     if not found.resolved:
         return f"below {high} (95 %), too few for a figure: {how}, {draws}"
-    error = _ppm(found.standard_error)
+    error = percent(found.standard_error / found.probability)
     return f"{_ppm(found.probability)} ± {error} (95 %: {low} to {high}), {how}, {draws}"
 
 

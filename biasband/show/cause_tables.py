@@ -6,13 +6,13 @@ import math
 from collections.abc import Iterator, Mapping
 from dataclasses import replace
 
+from biasband.boards.pick_freeze import Share, VarianceShares
 from biasband.show.focus import Focus, focuses
 from biasband.show.prose import contributor
 from biasband.show.table import Column, Row, Table, whole_percent
 from biasband.signoff.spread_study import SpreadStudy
 from biasband.stage import Stage
 from biasband.variation.contributors import batch_axis, board_axes, group_axis, use_axes
-from biasband.variation.pick_freeze import Share, VarianceShares
 
 SMALL = 0.01
 """A contributor with less in either list is left out, and counted."""

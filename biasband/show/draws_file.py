@@ -14,6 +14,8 @@ from contextlib import contextmanager
 
 import numpy as np
 
+from biasband.boards.in_use import PLACES
+from biasband.boards.job import SolvedBlock
 from biasband.errors import UsageError
 from biasband.files.growing_file import GrowingFile
 from biasband.files.new_files import check_new
@@ -21,8 +23,6 @@ from biasband.show.draws_formats import FORMATS, ArrayRows, Columns
 from biasband.show.output import complain
 from biasband.stage import Stage
 from biasband.variation.contributors import realise
-from biasband.variation.in_use import PLACES
-from biasband.variation.job import SolvedBlock
 
 
 def check_save(path: str | None, *, boards: int, cluster: str | None) -> None:

@@ -8,6 +8,7 @@ from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import asdict
 from typing import Any
 
+from biasband.boards.sampling import QUANTILES, Boards, Sample
 from biasband.circuit.operating_point import Region
 from biasband.constants import VERSION
 from biasband.margins.records import Margin
@@ -24,7 +25,6 @@ from biasband.values.choosing import Design
 from biasband.values.joint import Contender, Contest
 from biasband.variation.causes import Causes
 from biasband.variation.corners import Corners
-from biasband.variation.sampling import QUANTILES, Boards, Sample
 
 Json = dict[str, Any]
 

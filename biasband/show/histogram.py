@@ -13,6 +13,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from biasband.boards.summary import NAN, Summary
 from biasband.circuit.scenarios import Array
 from biasband.show.pictures import (
     BAND,
@@ -28,7 +29,6 @@ from biasband.show.pictures import (
 )
 from biasband.show.spelling import Spelling
 from biasband.show.table import Bound, Column, Histogram, Panel, Passage, Picture, Row, Strip, Table, percent
-from biasband.variation.summary import NAN, Summary
 
 FULL, HALF, FEW = "█", "▄", "."
 HEIGHT = 6

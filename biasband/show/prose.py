@@ -5,6 +5,8 @@ from __future__ import annotations
 import math
 from collections.abc import Mapping
 
+from biasband.boards.intervals import yield_bound, yield_interval
+from biasband.boards.sampling import Boards
 from biasband.circuit.topology import EMITTER_PARTS, Node
 from biasband.constants import VERSION
 from biasband.coupling import BYPASS, INPUT, OUTPUT
@@ -25,8 +27,6 @@ from biasband.variation.contributors import (
     TEMPERATURE,
 )
 from biasband.variation.corners import Extreme
-from biasband.variation.intervals import yield_bound, yield_interval
-from biasband.variation.sampling import Boards
 
 MATTERS = 0.05
 """A contributor with a smaller share of the way to the worst is not named."""

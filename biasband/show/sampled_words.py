@@ -4,12 +4,12 @@ from __future__ import annotations
 
 from collections.abc import Iterator, Mapping
 
+from biasband.boards.quasi import SCRAMBLINGS
 from biasband.circuit.operating_point import Region
 from biasband.constants import VERSION
 from biasband.show.table import REGION_WORDS, Passage, Report, Tone
 from biasband.signoff.goals import DigitsGoal
 from biasband.signoff.spread_study import SpreadStudy
-from biasband.variation.quasi import SCRAMBLINGS
 
 _ALARMS = {
     Region.RUNAWAY: ("THERMAL RUNAWAY", "ran away thermally"),

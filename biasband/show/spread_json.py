@@ -4,6 +4,9 @@ from __future__ import annotations
 
 from dataclasses import asdict
 
+from biasband.boards.estimates import Estimate, Estimates, Figures
+from biasband.boards.in_use import PLACES
+from biasband.boards.variance import VarianceCauses
 from biasband.circuit.operating_point import Region
 from biasband.show.beyond_json import beyond_json, limit_json
 from biasband.show.capacitors_json import capacitors_json
@@ -11,9 +14,6 @@ from biasband.show.export import Json, causes_json, finite, origin, regions_json
 from biasband.show.parts_json import parts_json
 from biasband.show.yield_table import inside_rss
 from biasband.signoff.spread_study import Held, SpreadStudy
-from biasband.variation.estimates import Estimate, Estimates, Figures
-from biasband.variation.in_use import PLACES
-from biasband.variation.variance import VarianceCauses
 
 
 def spread_json(study: SpreadStudy) -> Json:

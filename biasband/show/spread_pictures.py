@@ -5,6 +5,8 @@ from __future__ import annotations
 from collections.abc import Iterator, Sequence
 from dataclasses import replace
 
+from biasband.boards.sampling import QUANTILES
+from biasband.boards.summary import NAN
 from biasband.margins.over_temperature import HeldLimit
 from biasband.show.focus import Focus, focuses
 from biasband.show.histogram import legend, picture_of
@@ -12,8 +14,6 @@ from biasband.show.pictures import off_axis
 from biasband.show.prose import limit_text
 from biasband.show.table import Bound, Histogram, Panel, Strip, figure
 from biasband.signoff.spread_study import SpreadStudy
-from biasband.variation.sampling import QUANTILES
-from biasband.variation.summary import NAN
 
 
 def histograms(study: SpreadStudy) -> tuple[Histogram, ...]:

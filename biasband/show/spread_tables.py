@@ -5,14 +5,14 @@ from __future__ import annotations
 import math
 from collections.abc import Iterator
 
+from biasband.boards.estimates import Estimate, Figures
+from biasband.boards.in_use import PLACES
+from biasband.boards.quasi import SCRAMBLINGS
+from biasband.boards.sampling import QUANTILES
+from biasband.boards.tally import BINS
 from biasband.quantity import Kind
 from biasband.show.table import NOT_KNOWN, Column, Row, Table, computed, difference
 from biasband.signoff.spread_study import SpreadStudy
-from biasband.variation.estimates import Estimate, Figures
-from biasband.variation.in_use import PLACES
-from biasband.variation.quasi import SCRAMBLINGS
-from biasband.variation.sampling import QUANTILES
-from biasband.variation.tally import BINS
 
 ESTIMATE_COLUMNS = (
     Column("quantity", "left"),

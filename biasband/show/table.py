@@ -12,11 +12,11 @@ from dataclasses import dataclass
 from decimal import ROUND_DOWN, ROUND_UP, Decimal
 from typing import Literal
 
+from biasband.boards.summary import Summary
 from biasband.circuit.operating_point import Region
 from biasband.errors import UsageError
 from biasband.parts.letter_code import letter_code
 from biasband.quantity import Kind, format_quantity
-from biasband.variation.summary import Summary
 
 Align = Literal["left", "right"]
 Tone = Literal["", "pass", "fail", "doubt"]

@@ -6,12 +6,12 @@ from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from typing import Literal
 
+from biasband.boards.monotone import Monotone, monotone
+from biasband.boards.rare import Rare, rare_failures
 from biasband.margins.over_temperature import HeldLimit
 from biasband.stage import Stage
 from biasband.variation.corners import Corners
-from biasband.variation.monotone import Monotone, monotone
 from biasband.variation.points_of_use import PointOfUse
-from biasband.variation.rare import Rare, rare_failures
 
 Standing = Literal["none", "none found", "seen", "rare", "not known"]
 """None: no board can fail. None found: neither corners nor located interior extremes fail, which proves

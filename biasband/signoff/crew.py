@@ -7,10 +7,10 @@ from concurrent.futures import Executor
 from contextlib import contextmanager
 from dataclasses import dataclass
 
+from biasband.boards.streams import SEQUENCE
 from biasband.errors import UsageError
 from biasband.signoff.cluster import scheduler_at
 from biasband.signoff.cores import cores, may_have_children, processes
-from biasband.variation.streams import SEQUENCE
 
 LARGE = 2**20
 """Boards from which a run takes all cores.

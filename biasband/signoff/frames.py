@@ -5,10 +5,10 @@ from __future__ import annotations
 from collections.abc import Mapping, Sequence
 from typing import TYPE_CHECKING
 
+from biasband.boards.estimates import Estimate, Estimates
+from biasband.boards.in_use import PLACES
 from biasband.margins.records import Margin
 from biasband.variation.corners import Corners
-from biasband.variation.estimates import Estimate, Estimates
-from biasband.variation.in_use import PLACES
 
 if TYPE_CHECKING:
     import pandas as pd

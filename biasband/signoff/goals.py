@@ -8,15 +8,15 @@ from typing import Protocol
 
 import numpy as np
 
+from biasband.boards.in_use import PLACES
+from biasband.boards.job import Job
+from biasband.boards.sampling import QUANTILES
+from biasband.boards.stopping import SequenceFigures, narrow, stable
+from biasband.boards.summary import summary
+from biasband.boards.tally import Tally
 from biasband.circuit.scenarios import Array
 from biasband.errors import QuantityError, UsageError
 from biasband.quantity import Kind, parse
-from biasband.variation.in_use import PLACES
-from biasband.variation.job import Job
-from biasband.variation.sampling import QUANTILES
-from biasband.variation.stopping import SequenceFigures, narrow, stable
-from biasband.variation.summary import summary
-from biasband.variation.tally import Tally
 
 FEWEST_SEQUENCES = 4
 """Two would do by the standard, but so few are steady by luck in one run of four (measured)."""

@@ -8,12 +8,12 @@ from dataclasses import dataclass
 from functools import partial
 from typing import Literal
 
+from biasband.boards.job import Job, SolvedBlock
+from biasband.boards.running import in_order
+from biasband.boards.tally import Tally
 from biasband.signoff.crew import Crew
 from biasband.signoff.goals import Goal
 from biasband.stage import Stage
-from biasband.variation.job import Job, SolvedBlock
-from biasband.variation.running import in_order
-from biasband.variation.tally import Tally
 
 Ending = Literal["complete", "good enough", "not good enough", "interrupted"]
 Keep = Callable[[Stage, SolvedBlock], None]

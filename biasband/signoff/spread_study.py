@@ -7,6 +7,15 @@ from dataclasses import dataclass
 from functools import cached_property
 from typing import TYPE_CHECKING, Literal
 
+from biasband.boards.estimates import Estimates
+from biasband.boards.in_use import PLACES
+from biasband.boards.intervals import NOWHERE, Between, yield_bound, yield_interval
+from biasband.boards.job import Job, merged
+from biasband.boards.outside import Outside
+from biasband.boards.streams import Plain
+from biasband.boards.summary import NAN, Summary, summary
+from biasband.boards.tally import Tally
+from biasband.boards.variance import VarianceCauses
 from biasband.margins.holding import nominal
 from biasband.margins.over_temperature import HeldLimit
 from biasband.signoff.beyond import Beyond
@@ -16,16 +25,7 @@ from biasband.signoff.warnings import spread_warnings
 from biasband.values.choosing import Design
 from biasband.variation.causes import Causes
 from biasband.variation.corners import Corners
-from biasband.variation.estimates import Estimates
-from biasband.variation.in_use import PLACES
-from biasband.variation.intervals import NOWHERE, Between, yield_bound, yield_interval
-from biasband.variation.job import Job, merged
-from biasband.variation.outside import Outside
 from biasband.variation.rss import Interval
-from biasband.variation.streams import Plain
-from biasband.variation.summary import NAN, Summary, summary
-from biasband.variation.tally import Tally
-from biasband.variation.variance import VarianceCauses
 
 if TYPE_CHECKING:
     import pandas as pd

@@ -8,6 +8,15 @@ from contextlib import AbstractContextManager, nullcontext
 from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
+from biasband.boards.draws import batch_size, coordinates_from, numbers
+from biasband.boards.estimates import from_plain, from_scramblings
+from biasband.boards.in_use import PLACES
+from biasband.boards.job import Job, merged
+from biasband.boards.outside import Extended, Farthest, extended
+from biasband.boards.quasi import Scrambled
+from biasband.boards.streams import Plain, Source
+from biasband.boards.tally import Bound, Scale, Tally
+from biasband.boards.variance import VarianceCauses, variance_causes
 from biasband.constants import BOARDS
 from biasband.errors import UsageError
 from biasband.margins.holding import looked_into, nominal, points_met, words
@@ -22,17 +31,8 @@ from biasband.stage import Stage
 from biasband.values.choosing import Design
 from biasband.variation.causes import causes
 from biasband.variation.corners import Corners, corners
-from biasband.variation.draws import batch_size, coordinates_from, numbers
-from biasband.variation.estimates import from_plain, from_scramblings
 from biasband.variation.evaluation import cut_off_current
-from biasband.variation.in_use import PLACES
-from biasband.variation.job import Job, merged
-from biasband.variation.outside import Extended, Farthest, extended
-from biasband.variation.quasi import Scrambled
 from biasband.variation.rss import Interval, rss
-from biasband.variation.streams import Plain, Source
-from biasband.variation.tally import Bound, Scale, Tally
-from biasband.variation.variance import VarianceCauses, variance_causes
 
 if TYPE_CHECKING:
     pass

@@ -9,6 +9,7 @@ from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
+from biasband.boards import sampling
 from biasband.circuit.quantities import Quantity
 from biasband.constants import BOARDS, MOST_BOARDS
 from biasband.errors import UsageError
@@ -28,7 +29,6 @@ from biasband.stage import Stage
 from biasband.values.choosing import Design, choose
 from biasband.values.joint import Progress, silent
 from biasband.variation import corners as cornering
-from biasband.variation import sampling
 from biasband.variation.evaluation import cut_off_current
 
 if TYPE_CHECKING:

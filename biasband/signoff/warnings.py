@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator, Mapping, Sequence
 
+from biasband.boards.outside import Outside
 from biasband.circuit.most_swing import most_swing
 from biasband.circuit.operating_point import Region
 from biasband.circuit.reading import read
@@ -15,7 +16,6 @@ from biasband.stage import Stage, Transistor
 from biasband.values.choosing import Design
 from biasband.variation.contributors import NEGATIVE, SUPPLY, realise
 from biasband.variation.corners import Corners
-from biasband.variation.outside import Outside
 
 DECADE = 10.0
 """Nominal currents this many times above or below the test current are far from it (common practice)."""

@@ -14,6 +14,8 @@ from math import inf
 
 import numpy as np
 
+from biasband.boards.draws import batch_size
+from biasband.boards.intervals import allowed_failures
 from biasband.circuit.operating_point import Region
 from biasband.circuit.scenarios import Array
 from biasband.constants import BOARDS
@@ -21,8 +23,6 @@ from biasband.margins.holding import Holding, hold_all, nominal, words
 from biasband.margins.records import NAN, Margin
 from biasband.stage import Stage, Target
 from biasband.values.bench import CURRENT, SWING, Bench, Indices, bench, hold_sets
-from biasband.variation.draws import batch_size
-from biasband.variation.intervals import allowed_failures
 
 FINALISTS = 3
 """How many sets are held against everything and shown side by side."""

@@ -1,1 +1,1 @@
-"""What varies: contributors and points of use, corners, RSS, sampled boards, causes."""
+"""What varies: contributors and points of use, corners, RSS, causes of the worst."""

@@ -13,6 +13,7 @@ from pathlib import Path
 from bench_operating_point import BOARDS, exponential_pass
 from clock import Task, shortest_each
 
+from biasband.boards.draws import coordinates
 from biasband.circuit.quantities import vocabulary
 from biasband.circuit.reading import read
 from biasband.circuit.scenarios import Scenarios
@@ -21,7 +22,6 @@ from biasband.margins.holding import looked_into
 from biasband.signoff import study
 from biasband.stage import Stage
 from biasband.variation.contributors import Coordinates, realise
-from biasband.variation.draws import coordinates
 from biasband.variation.evaluation import evaluate
 from biasband.variation.points_of_use import points_of_use
 

@@ -16,17 +16,17 @@ from pathlib import Path
 from bench_operating_point import BOARDS, exponential_pass
 from clock import Task, shortest_each
 
+from biasband.boards.job import Job, merged
+from biasband.boards.running import in_order
+from biasband.boards.streams import SEQUENCE, Plain
+from biasband.boards.tally import Scale, Tally
 from biasband.files.stage_file import read_stage
 from biasband.margins.holding import looked_into
 from biasband.signoff.study import design
 from biasband.stage import Stage
 from biasband.variation.corners import corners
 from biasband.variation.evaluation import cut_off_current
-from biasband.variation.job import Job, merged
 from biasband.variation.points_of_use import points_of_use
-from biasband.variation.running import in_order
-from biasband.variation.streams import SEQUENCE, Plain
-from biasband.variation.tally import Scale, Tally
 
 SAMPLE = Path(__file__).parent.parent.parent / "samples" / "hive_microphone.toml"
 SCENARIOS = 2**20

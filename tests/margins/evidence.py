@@ -8,13 +8,13 @@ from typing import Any
 
 import numpy as np
 
+from biasband.boards.sampling import Boards, Sample, Spread
 from biasband.circuit.operating_point import Region
 from biasband.margins.records import Evidence
 from biasband.stage import Requirement
 from biasband.variation.causes import Causes
 from biasband.variation.corners import Corners, Extreme, Range
 from biasband.variation.rss import Interval
-from biasband.variation.sampling import Boards, Sample, Spread
 
 QUANTITY = "collector_voltage"
 

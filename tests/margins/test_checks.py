@@ -7,6 +7,7 @@ from dataclasses import replace
 import pytest
 from variation.stages import ROOM, ideal, limits, stage, with_resistors
 
+from biasband.boards.sampling import sample
 from biasband.circuit.quantities import vocabulary
 from biasband.margins.checks import check_margins, standing_checks
 from biasband.margins.records import Evidence, Margin
@@ -16,7 +17,6 @@ from biasband.variation.causes import causes
 from biasband.variation.corners import corners
 from biasband.variation.points_of_use import points_of_use
 from biasband.variation.rss import rss
-from biasband.variation.sampling import sample
 
 HOT = 358.15  # 85 °C
 RATINGS = {

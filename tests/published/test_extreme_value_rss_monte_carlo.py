@@ -10,12 +10,12 @@ import numpy as np
 import pytest
 from variation.stages import ideal, stage
 
+from biasband.boards.sampling import QUANTILES, Sample, sample
 from biasband.circuit.quantities import vocabulary
 from biasband.stage import IdealTransistor, Limits, Resistor, Stage, Supply
 from biasband.variation.corners import corners
 from biasband.variation.points_of_use import points_of_use
 from biasband.variation.rss import rss
-from biasband.variation.sampling import QUANTILES, Sample, sample
 
 NAMES = ("collector_current", "collector_emitter_voltage")
 MEASURES = {name: vocabulary(("R1", "R2", "RC", "RE"))[name] for name in NAMES}

@@ -17,12 +17,12 @@ import numpy as np
 import pytest
 from variation.stages import ideal, stage, with_resistors
 
+from biasband.boards.draws import coordinates
+from biasband.boards.intervals import allowed_failures, yield_bound
+from biasband.boards.sampling import Sample
+from biasband.boards.streams import uniform
 from biasband.stage import Distribution
 from biasband.variation.distributions import UNIFORM
-from biasband.variation.draws import coordinates
-from biasband.variation.intervals import allowed_failures, yield_bound
-from biasband.variation.sampling import Sample
-from biasband.variation.streams import uniform
 
 DRAWS = 10**6
 LOW, HIGH = 0.025, 0.975

@@ -11,6 +11,10 @@ from hypothesis import given
 from hypothesis import strategies as st
 from rich.cells import cell_len
 
+from biasband.boards.counting import tally
+from biasband.boards.in_use import InUse
+from biasband.boards.summary import summary
+from biasband.boards.tally import Scale
 from biasband.circuit.operating_point import Region
 from biasband.quantity import Kind
 from biasband.show.histogram import BEYOND, FEW, FULL, HALF, HEIGHT, drawn, legend, over_cells
@@ -18,10 +22,6 @@ from biasband.show.layout import lines_of
 from biasband.show.pictures import LIMIT, NARROWEST
 from biasband.show.spelling import Spelling
 from biasband.show.table import Bound, Histogram, Panel, Passage, Strip, Table
-from biasband.variation.counting import tally
-from biasband.variation.in_use import InUse
-from biasband.variation.summary import summary
-from biasband.variation.tally import Scale
 
 NAN = math.nan
 NOTHING = Strip(NAN, NAN, NAN)

@@ -10,12 +10,12 @@ from typing import Any
 import numpy as np
 import pytest
 
+from biasband.boards.outside import Outside
 from biasband.circuit.operating_point import Region
 from biasband.show.export import as_text
 from biasband.show.spread_json import spread_json
 from biasband.signoff.goals import read_goal
 from biasband.signoff.spread_study import SpreadStudy
-from biasband.variation.outside import Outside
 from biasband.variation.rss import Interval
 from tests.show.reviews import BOARDS, FAILING, HIVE
 from tests.show.spreads import inverting, spread_of, unrequired

@@ -20,19 +20,19 @@ import dask
 import pytest
 from distributed import LocalCluster
 
+from biasband.boards.job import Job, merged
+from biasband.boards.running import in_order
+from biasband.boards.streams import Block, plain
+from biasband.boards.tally import Bound, Scale, Tally
 from biasband.errors import BiasbandError, UsageError
 from biasband.signoff import cluster
 from biasband.signoff import crew as crews
 from biasband.signoff.crew import LARGE, UNKNOWN, Crew, crew
 from biasband.variation.corners import corners
 from biasband.variation.evaluation import cut_off_current
-from biasband.variation.job import Job, merged
 from biasband.variation.points_of_use import points_of_use
-from biasband.variation.running import in_order
-from biasband.variation.streams import Block, plain
-from biasband.variation.tally import Bound, Scale, Tally
+from tests.boards.tallies import differences
 from tests.variation.stages import coupled, some
-from tests.variation.tallies import differences
 
 TASKS = 8
 MOST_SECONDS = 240

@@ -9,18 +9,18 @@ from pathlib import Path
 
 import numpy as np
 import pytest
+from boards.tallies import differences
 from variation.stages import coupled, ideal, limits, real, stage, with_resistor
-from variation.tallies import differences
 
 import biasband as bb
+from biasband.boards import streams
+from biasband.boards.job import Job
 from biasband.errors import UsageError
 from biasband.signoff import sampling_run, spreading
 from biasband.signoff.spread_study import SpreadStudy
 from biasband.signoff.study import Review, review
 from biasband.stage import Requirement, Stage
 from biasband.variation import corners as cornering
-from biasband.variation import streams
-from biasband.variation.job import Job
 
 SAMPLES = Path(__file__).parents[2] / "samples"
 BOARDS = 2048
@@ -190,7 +190,7 @@ def test_interrupted_run_gives_what_it_has(monkeypatch):
 
 
 def test_interrupted_scrambling_is_left_out(monkeypatch):
-    monkeypatch.setattr("biasband.variation.quasi.STRETCH", 16)
+    monkeypatch.setattr("biasband.boards.quasi.STRETCH", 16)
     done: list[float] = []
 
     def impatient(share: float) -> None:

@@ -11,6 +11,7 @@ from hypothesis import HealthCheck, assume, given, settings
 from hypothesis import strategies as st
 from variation.stages import coupled, ideal, limits, real, stage
 
+from biasband.boards.sampling import sample
 from biasband.circuit.low_corner import low_corner_frequency, seen_resistances
 from biasband.circuit.quantities import LOW_CORNER, vocabulary
 from biasband.circuit.reading import read
@@ -26,7 +27,6 @@ from biasband.variation.contributors import axes, realise
 from biasband.variation.corners import corners, vertices
 from biasband.variation.evaluation import cut_off_current
 from biasband.variation.points_of_use import points_of_use
-from biasband.variation.sampling import sample
 from values.test_ideal import target_stage
 
 SERIES = load_all()

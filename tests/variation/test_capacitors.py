@@ -9,11 +9,11 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
+from biasband.boards.draws import coordinates, draws
 from biasband.errors import UsageError
 from biasband.stage import Capacitor, Limits, Stage
 from biasband.variation.contributors import RIPPLE, TEMPERATURE, axes, board_axes, realise
 from biasband.variation.corners import values_at
-from biasband.variation.draws import coordinates, draws
 from variation.stages import ROOM, coupled
 
 NAMES = ("C_in", "C_out", "C_bypass")

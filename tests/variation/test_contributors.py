@@ -5,9 +5,9 @@ from __future__ import annotations
 import numpy as np
 import pytest
 
+from biasband.boards.draws import draws
 from biasband.stage import Limits, Stage, Supply
 from biasband.variation.contributors import axes, board_axes, realise, use_axes
-from biasband.variation.draws import draws
 from variation.stages import ROOM, ideal, limits, real, stage, with_resistor, with_resistors
 
 ROUNDING = 1e-12

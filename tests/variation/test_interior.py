@@ -8,12 +8,12 @@ import numpy as np
 import pytest
 from hypothesis import HealthCheck, given, settings
 
+from biasband.boards.sampling import coordinates
 from biasband.circuit.operating_point import Region
 from biasband.stage import Limits, Stage
 from biasband.variation.contributors import RIPPLE, use_axes
 from biasband.variation.corners import corners
 from biasband.variation.evaluation import cut_off_current, evaluate
-from biasband.variation.sampling import coordinates
 from variation.stages import ideal, limits, some, stage, varying_stages, with_resistor
 
 DRAWS = 400

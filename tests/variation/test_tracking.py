@@ -9,13 +9,13 @@ from pathlib import Path
 import numpy as np
 import pytest
 
+from biasband.boards.draws import coordinates
+from biasband.boards.sampling import Spread, sample
 from biasband.files.stage_file import read_stage
 from biasband.stage import Distribution, Stage
 from biasband.variation.contributors import realise
 from biasband.variation.corners import corners
-from biasband.variation.draws import coordinates
 from biasband.variation.points_of_use import points_of_use
-from biasband.variation.sampling import Spread, sample
 from variation.stages import some, with_resistor
 
 SAMPLE = Path(__file__).parents[2] / "samples" / "ice_warner.toml"

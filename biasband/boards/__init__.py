@@ -1,0 +1,1 @@
+"""Boards: drawn, solved in use, counted, and what they tell."""
