@@ -20,6 +20,9 @@ _EXACT = 2**53
 
 _EVERY_BIN = BINS + 2
 
+_BIN_BITS = STEPS_PER_BIN.bit_length() - 1
+"""Steps of a bin are a power of two."""
+
 _PLACE = np.arange(len(PLACES), dtype=np.int32)
 
 _FIRST_BIN = STEPS + STEPS_PER_BIN * (1 + _EVERY_BIN * _PLACE[:, np.newaxis])
@@ -135,5 +138,5 @@ def _binned(steps: Array) -> NDArray[np.int64]:
     """How many values of each row, (P, B), lie in each bin; in the first and the last what is beyond."""
     bins = steps.astype(np.int32)  # three times as fast as to 64 bits
     bins += _FIRST_BIN[: len(steps)]
-    bins >>= 8  # divided by the steps of a bin
+    bins >>= _BIN_BITS  # divided by the steps of a bin
     return np.bincount(bins.ravel(), minlength=len(steps) * _EVERY_BIN).reshape(len(steps), _EVERY_BIN)

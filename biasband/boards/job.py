@@ -10,7 +10,7 @@ from biasband.boards.draws import coordinates_from, numbers
 from biasband.boards.in_use import InUse, in_use
 from biasband.boards.streams import Block, Source, uniform
 from biasband.boards.tally import Bound, Scale, Tally
-from biasband.circuit.quantities import vocabulary
+from biasband.circuit.quantities import words
 from biasband.stage import Stage
 from biasband.variation.contributors import RIPPLE, Coordinates, use_axes
 from biasband.variation.distributions import PLAIN, UNIFORM
@@ -37,9 +37,8 @@ class Job:
     @property
     def measures(self) -> Measures:
         """The measures themselves, which do not travel."""
-        names = tuple(resistor.name for resistor in self.stage.resistors)
-        words = vocabulary(names, with_capacitors=bool(self.stage.capacitors))
-        return {name: words[name] for name in self.scales}
+        vocabulary = words(self.stage)
+        return {name: vocabulary[name] for name in self.scales}
 
     def work(self, task: int, *, keep: Callable[[SolvedBlock], None] | None = None) -> Tally:
         """Tally the boards of one task; `keep` is handed every block of them, in order."""

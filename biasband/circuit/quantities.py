@@ -194,6 +194,12 @@ def vocabulary(resistor_names: tuple[str, ...], *, with_capacitors: bool = False
     return {quantity.name: quantity for quantity in _rows(resistor_names, with_capacitors)}
 
 
+def words(stage: Stage) -> Mapping[str, Quantity]:
+    """The vocabulary of a stage."""
+    names = tuple(resistor.name for resistor in stage.resistors)
+    return vocabulary(names, with_capacitors=bool(stage.capacitors))
+
+
 def quantity_units(resistor_names: tuple[str, ...], *, with_capacitors: bool = False) -> Mapping[str, Kind]:
     """The kind of every quantity of a stage with these resistors."""
     rows = vocabulary(resistor_names, with_capacitors=with_capacitors)

@@ -11,7 +11,7 @@ from biasband.boards import sampling
 from biasband.boards.draws import coordinates
 from biasband.boards.outside import extended
 from biasband.circuit.operating_point import Region
-from biasband.circuit.quantities import Quantity, clips_first, vocabulary
+from biasband.circuit.quantities import Quantity, clips_first, words
 from biasband.circuit.reading import read
 from biasband.margins.checks import Standing, check_margins, standing_checks
 from biasband.margins.records import Evidence, Margin
@@ -45,12 +45,6 @@ class Holding:
     standing: Standing
     evidence: Evidence
     rows: tuple[Margin, ...]
-
-
-def words(stage: Stage) -> Mapping[str, Quantity]:
-    """The vocabulary of a stage."""
-    names = tuple(resistor.name for resistor in stage.resistors)
-    return vocabulary(names, with_capacitors=bool(stage.capacitors))
 
 
 def looked_into(stage: Stage) -> Mapping[str, Quantity]:

@@ -11,11 +11,10 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from biasband.circuit.operating_point import Region
-from biasband.circuit.quantities import Quantity
+from biasband.circuit.quantities import Quantity, words
 from biasband.circuit.reading import wiring_of
 from biasband.circuit.scenarios import Array
 from biasband.margins.checks import Standing, standing_checks
-from biasband.margins.holding import words
 from biasband.margins.over_temperature import (
     EXACT,
     Failure,

@@ -17,9 +17,10 @@ from biasband.boards.quasi import Scrambled
 from biasband.boards.streams import Plain, Source
 from biasband.boards.tally import Bound, Scale, Tally
 from biasband.boards.variance import VarianceCauses, variance_causes
+from biasband.circuit.quantities import words
 from biasband.constants import BOARDS
 from biasband.errors import UsageError
-from biasband.margins.holding import looked_into, nominal, points_met, words
+from biasband.margins.holding import looked_into, nominal, points_met
 from biasband.margins.over_temperature import HeldLimit, required_limits
 from biasband.signoff.beyond import Beyond, beyond
 from biasband.signoff.crew import crew

@@ -10,12 +10,12 @@ from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
 from biasband.boards import sampling
-from biasband.circuit.quantities import Quantity
+from biasband.circuit.quantities import Quantity, words
 from biasband.constants import BOARDS, MOST_BOARDS
 from biasband.errors import UsageError
 from biasband.files.series_files import load_series
 from biasband.margins.checks import Standing
-from biasband.margins.holding import Nominal, hold, looked_into, nominal, points_met, words
+from biasband.margins.holding import Nominal, hold, looked_into, nominal, points_met
 from biasband.margins.over_temperature import required_limits
 from biasband.margins.records import Evidence, Margin
 from biasband.margins.requirements import joint_yield

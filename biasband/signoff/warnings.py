@@ -7,9 +7,9 @@ from collections.abc import Iterator, Mapping, Sequence
 from biasband.boards.outside import Outside
 from biasband.circuit.most_swing import most_swing
 from biasband.circuit.operating_point import Region
+from biasband.circuit.quantities import words
 from biasband.circuit.reading import read
 from biasband.constants import ASSUMED_SATURATION_VOLTAGE
-from biasband.margins.holding import words
 from biasband.margins.records import Evidence
 from biasband.quantity import Kind, format_quantity
 from biasband.stage import Stage, Transistor

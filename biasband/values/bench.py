@@ -13,10 +13,9 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
-from biasband.circuit.quantities import Quantity
+from biasband.circuit.quantities import Quantity, words
 from biasband.circuit.scenarios import Array, chunks
 from biasband.margins.checks import Check, standing_checks
-from biasband.margins.holding import words
 from biasband.margins.records import Side
 from biasband.margins.requirements import limits_of
 from biasband.stage import Stage

@@ -17,9 +17,10 @@ import numpy as np
 from biasband.boards.draws import batch_size
 from biasband.boards.intervals import allowed_failures
 from biasband.circuit.operating_point import Region
+from biasband.circuit.quantities import words
 from biasband.circuit.scenarios import Array
 from biasband.constants import BOARDS
-from biasband.margins.holding import Holding, hold_all, nominal, words
+from biasband.margins.holding import Holding, hold_all, nominal
 from biasband.margins.records import NAN, Margin
 from biasband.stage import Stage, Target
 from biasband.values.bench import CURRENT, SWING, Bench, Indices, bench, hold_sets

@@ -16,8 +16,8 @@ from pathlib import Path
 import numpy as np
 from clock import shortest as shortest_of
 
+from biasband.circuit.quantities import words
 from biasband.files.stage_file import read_stage
-from biasband.margins.holding import words
 from biasband.signoff import study
 from biasband.variation.contributors import axes
 from biasband.variation.evaluation import cut_off_current, evaluate

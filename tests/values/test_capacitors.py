@@ -13,11 +13,10 @@ from variation.stages import coupled, ideal, limits, real, stage
 
 from biasband.boards.sampling import sample
 from biasband.circuit.low_corner import low_corner_frequency, seen_resistances
-from biasband.circuit.quantities import LOW_CORNER, vocabulary
+from biasband.circuit.quantities import LOW_CORNER, vocabulary, words
 from biasband.circuit.reading import read
 from biasband.errors import PhysicallyImpossible
 from biasband.files.series_files import load_all
-from biasband.margins.holding import words
 from biasband.parts.series import nearest
 from biasband.quantity import Kind, parse
 from biasband.stage import Capacitor, Limits, Requirement, Signal, Stage, Supply, Target
