@@ -6,6 +6,7 @@ from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
     from biasband.errors import BadlyWritten, BiasbandError, PhysicallyImpossible, UsageError
+    from biasband.signoff.contrasting import contrast
     from biasband.signoff.drifting import drift
     from biasband.signoff.intake import read_stage
     from biasband.signoff.spreading import spread
@@ -18,6 +19,7 @@ _ROOMS = {
     "PhysicallyImpossible": "errors",
     "Stage": "stage",
     "UsageError": "errors",
+    "contrast": "signoff.contrasting",
     "corners": "signoff.study",
     "design": "signoff.study",
     "drift": "signoff.drifting",
@@ -33,6 +35,7 @@ __all__ = [
     "PhysicallyImpossible",
     "Stage",
     "UsageError",
+    "contrast",
     "corners",
     "design",
     "drift",

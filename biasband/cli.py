@@ -7,14 +7,11 @@ needs it, so that `--help` is instant.
 
 from __future__ import annotations
 
-import functools
-import re
 from collections.abc import Callable, Sequence
 from contextlib import nullcontext
-from typing import TYPE_CHECKING, Annotated, Any, ParamSpec
+from typing import TYPE_CHECKING, Annotated, Any
 
 import typer
-from typer.core import TyperCommand
 
 from biasband.arguments import (
     AsJson,
@@ -39,7 +36,8 @@ from biasband.arguments import (
     Until,
 )
 from biasband.constants import BOARDS, VERSION
-from biasband.errors import BiasbandError, UsageError
+from biasband.entrance import BAD_INPUT, INTERRUPTED, NOT_PASSED, PASSED, app, command, complain
+from biasband.errors import UsageError
 
 if TYPE_CHECKING:
     from biasband.show.summary import Attempt
@@ -47,63 +45,10 @@ if TYPE_CHECKING:
     from biasband.signoff.intake import Additions
     from biasband.stage import Stage
 
-PASSED, NOT_PASSED, BAD_INPUT, INTERRUPTED = 0, 1, 2, 130
-
 _ENDINGS = {
     "complete": PASSED, "good enough": PASSED, "not good enough": NOT_PASSED, "interrupted": INTERRUPTED
 }  # fmt: skip
 """The status of a run of boards by how it ended."""
-
-app = typer.Typer(
-    add_completion=False,
-    pretty_exceptions_enable=False,
-    rich_markup_mode=None,
-    no_args_is_help=True,
-    help="From a hand-computed bias network to buyable parts and a signed-off margin table.",
-)
-
-Arguments = ParamSpec("Arguments")
-
-
-class _Command(TyperCommand):
-    """A command to which "-1" is an argument below zero, so that it is told why it will not do."""
-
-    def parse_args(self, ctx: Any, args: list[str]) -> list[str]:
-        ctx.ignore_unknown_options = any(re.match(r"-\.?[0-9]", each) for each in args)
-        return super().parse_args(ctx, args)
-
-
-def command(work: Callable[Arguments, int]) -> Callable[Arguments, int]:
-    """Make a command of a function that returns an exit status; faults of the input are its status 2."""
-
-    @functools.wraps(work)
-    def guarded(*args: Arguments.args, **kwargs: Arguments.kwargs) -> None:
-        raise typer.Exit(_status(lambda: work(*args, **kwargs)))
-
-    app.command(cls=_Command)(guarded)
-    return work
-
-
-def _status(work: Callable[[], int]) -> int:
-    try:
-        return work()
-    except BiasbandError as error:
-        _complain(str(error))
-        return BAD_INPUT
-    except KeyboardInterrupt:
-        return INTERRUPTED
-    except RuntimeError as error:
-        # Where a class is being made, Python 3.11 makes a RuntimeError of an interruption.
-        if isinstance(error.__cause__, KeyboardInterrupt):
-            return INTERRUPTED
-        raise
-
-
-def _complain(text: str) -> None:
-    from biasband.show.output import complain
-
-    complain(text)
-
 
 @command
 def review(
@@ -133,7 +78,7 @@ def review(
         for path, progress in watched(paths, doing="reviewing")
     ]
     for each in attempts:
-        _complain(each.problem)
+        complain(each.problem)
     first = attempts[0].review
     if parts is not None and first is not None:
         write_parts(parts, first.parts_list, first.design)
@@ -251,7 +196,7 @@ def spread(
     with nullcontext() if save is None else draws_file(save, boards=most) as draws:
         found = spreading.spread(
             read, boards=most, seed=seed, sampling=sampling, until=until, cluster=cluster,
-            keep=draws.keep if draws else None, watch=bar, notice=_complain,
+            keep=draws.keep if draws else None, watch=bar, notice=complain,
         )  # fmt: skip
         if draws:
             draws.settle(found.boards, partial=found.ending == "interrupted")
@@ -280,6 +225,28 @@ def drift(
         found = drifting.drift(read, coldest=coldest, hottest=hottest, points=points, progress=progress)
     _put(json, lambda: export.drift_json(found), lambda: report.drift_report(found))
     return PASSED
+
+
+@command
+def contrast(
+    stage: StageFile,
+    json: AsJson = False,
+    boards: BoardCount = BOARDS,
+    seed: Seed = 1,
+    tables: Tables = None,
+    stock: StockList = None,
+    keep: Kept = None,
+) -> int:
+    """Design the same target in every topology, snap each by its worst case, and lay them side by side."""
+    from biasband.show import contrast_json, report
+    from biasband.show.output import bar
+    from biasband.signoff import contrasting
+
+    with bar("designing every topology") as progress:
+        read = _read(stage, tables, stock, keep)
+        found = contrasting.contrast(read, boards=boards, seed=seed, progress=progress)
+    _put(json, lambda: contrast_json.contrast_json(found), lambda: report.contrast_report(found))
+    return PASSED if found.passing else NOT_PASSED
 
 
 def _put(json: bool, as_data: Callable[[], Any], as_report: Callable[[], Report]) -> None:
@@ -321,7 +288,7 @@ def _stage_files(names: Sequence[str]) -> list[str]:
 
     found = [stage_files(name) for name in names]
     for path in (path for files in found for path in files.left_out):
-        _complain(f"{path}: left out, it has no [stage] section")
+        complain(f"{path}: left out, it has no [stage] section")
     return [path for files in found for path in files.stages]
 
 

@@ -27,11 +27,15 @@ from biasband.margins.over_temperature import Failure, HeldLimit
 from biasband.margins.records import Evidence, Margin
 from biasband.margins.verdict import Verdict
 from biasband.signoff.beyond import Beyond
+from biasband.signoff.contrasting import Contrast, Contrasted, Trial
 from biasband.signoff.drifting import Drift, DriftStudy, LimitDrift
+from biasband.signoff.merits import Merit, Strength
 from biasband.signoff.parts_list import CapacitorLine, PartLine
+from biasband.signoff.recasting import LeftOut, Recast
 from biasband.signoff.sampling_run import Run
 from biasband.signoff.snapping import Snapped, SnapStudy
 from biasband.signoff.spread_study import Held, SpreadStudy
+from biasband.signoff.steadiness import Steadiness
 from biasband.signoff.study import CornerStudy, Review
 from biasband.values.capacitors import CapacitorChoice, CapacitorStep
 from biasband.values.choosing import Design, PartChoice
@@ -53,6 +57,7 @@ RECORDS = (
     SpreadStudy, Standing, Verdict, Drift, DriftStudy, Failure, FiniteChange, HeldLimit, LimitDrift,
     Stability, Between, Beyond, Block, Bound, Estimate, Estimates, Farthest, Figures, Held, InUse, Job,
     Monotone, Outside, Rare, Run, Scale, Share, Summary, Tally, VarianceCauses, VarianceShares,
+    Contrast, Contrasted, LeftOut, Merit, Recast, Steadiness, Strength, Trial,
 )  # fmt: skip
 
 

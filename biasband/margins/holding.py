@@ -66,12 +66,27 @@ def nominal(stage: Stage, measures: Measures | None = None) -> Nominal:
     return Nominal(values, region)
 
 
-def hold(stage: Stage, measures: Measures, *, boards: int, seed: int, sides: Sides = BOTH) -> Holding:
+def hold(
+    stage: Stage,
+    measures: Measures,
+    *,
+    boards: int,
+    seed: int,
+    sides: Sides = BOTH,
+    found: cornering.Corners | None = None,
+) -> Holding:
     """Hold a stage, every resistor valued, against its requirements and the standing checks.
 
     `measures` are the quantities to find the spread of, those of the requirements among them; `sides`
-    names those of which one side alone is wanted.
+    names those of which one side alone is wanted. `found` are corners of the same stage, with these measures
+    and the standing checks, where they are known already.
     """
+    if found is not None:
+        cut_off = cut_off_current(stage)
+        standing = standing_checks(stage, cut_off=cut_off)
+        wanted = {name: found.ranges[name] for name in (*measures, *standing.measures)}
+        known = replace(found, ranges=wanted)
+        return _held(stage, measures, standing, known, cut_off=cut_off, boards=boards, seed=seed)
     return hold_all((stage,), measures, boards=boards, seed=seed, sides=sides)[0]
 
 
@@ -145,9 +160,7 @@ def points_met(stage: Stage, found: cornering.Corners, measures: Measures) -> tu
     return (*points_of_use(stage), *_interior_points(stage, found, measures))
 
 
-def _interior_points(
-    stage: Stage, found: cornering.Corners, measures: Measures
-) -> tuple[PointOfUse, ...]:
+def _interior_points(stage: Stage, found: cornering.Corners, measures: Measures) -> tuple[PointOfUse, ...]:
     """The in-use coordinates of interior extremes: points that boards must be solved at too."""
     inside = {axis.name for axis in use_axes(stage)}
     ranges = (found.ranges[name] for name in measures)

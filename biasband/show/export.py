@@ -68,7 +68,7 @@ def review_json(review: Review) -> Json:
         "rss": {name: {"low": evidence.rss[name].low, "high": evidence.rss[name].high} for name in words},
         "spread": _spread(boards),
         "causes": {name: causes_json(evidence.causes[name]) for name in words},
-        "margins": [_margin(row) for row in review.rows],
+        "margins": [margin_json(row) for row in review.rows],
         "checks": {
             "made": [check.name for check in standing.made],
             "not_made": [{"check": each.check, "missing": each.missing} for each in standing.not_made],
@@ -149,7 +149,7 @@ def _contender(contender: Contender, names: Sequence[str]) -> Json:
         "values": dict(zip(names, contender.values, strict=True)),
         "margin_share": contender.share,
         "corner_share": contender.corner_share,
-        "smallest_margin": _margin(contender.smallest),
+        "smallest_margin": margin_json(contender.smallest),
         "failing": [row.quantity if row.standing else row.id for row in contender.failing],
         "collector_current": contender.current,
         "symmetric_peak_swing": contender.swing,
@@ -267,7 +267,8 @@ def causes_json(causes: Causes) -> Json:
     return {"low": dict(causes.low), "high": dict(causes.high)}
 
 
-def _margin(row: Margin) -> Json:
+def margin_json(row: Margin) -> Json:
+    """One row of the margin table."""
     return {
         "id": None if row.standing else row.id,
         "quantity": row.quantity,

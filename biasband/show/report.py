@@ -13,6 +13,14 @@ from biasband.show.capacitor_tables import capacitor_parts, capacitor_values
 from biasband.show.cause_tables import cause_tables
 from biasband.show.cautions import CAUTIONS
 from biasband.show.choice_table import choice_table
+from biasband.show.contrast_table import (
+    contrast_table,
+    contrast_warnings,
+    lesson,
+    outcome,
+    target_text,
+    yields_on,
+)
 from biasband.show.drift_tables import drift_table, failure_table, first_to_fail, swept
 from biasband.show.parts_table import parts_table
 from biasband.show.prose import frozen_or_chosen, head, joint_yield, rss_assumption, sampled
@@ -24,9 +32,10 @@ from biasband.show.spread_pictures import histograms
 from biasband.show.spread_tables import estimate_tables
 from biasband.show.stability_table import stability_table
 from biasband.show.summary import Attempt
-from biasband.show.surroundings import surroundings
+from biasband.show.surroundings import circumstances, surroundings
 from biasband.show.table import OUTCOME_TONES, Passage, Report
 from biasband.show.yield_table import rss_passage, yield_table
+from biasband.signoff.contrasting import Contrast
 from biasband.signoff.drifting import DriftStudy
 from biasband.signoff.parts_list import parts_list
 from biasband.signoff.snapping import SnapStudy
@@ -117,6 +126,21 @@ def drift_report(study: DriftStudy) -> Report:
         stability_table(study.stability),
         *_warnings(study.design.warnings),
         first_to_fail(study),
+        _CAUTIONS,
+    )
+
+
+def contrast_report(contrast: Contrast) -> Report:
+    """The same target in every topology, side by side."""
+    stage = contrast.stage
+    told = lesson(contrast)
+    return (
+        Passage(stage.title, (*head(stage), yields_on(contrast), in_words(stage.derating))),
+        Passage("Held against", (*circumstances(stage), target_text(contrast))),
+        contrast_table(contrast),
+        *([Passage("Over h_FE and ambient alone", told)] if told else []),
+        *_warnings(contrast_warnings(contrast)),
+        outcome(contrast),
         _CAUTIONS,
     )
 

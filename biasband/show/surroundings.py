@@ -12,13 +12,17 @@ from biasband.stage import AnyTransistor, Distribution, Limits, Signal, Stage, S
 
 def surroundings(stage: Stage, nominal: Nominal) -> tuple[str, ...]:
     """Ambient and supplies, the transistor's limits, ageing, coupling, and the target reached."""
+    return (*circumstances(stage), *_target(stage, nominal))
+
+
+def circumstances(stage: Stage) -> tuple[str, ...]:
+    """The same without the target: what does not depend on any operating point."""
     return (
         "; ".join(_in_use(stage)),
         "; ".join(_transistor(stage.transistor)),
         _life_drift(stage),
         _coupling(stage),
         *_drawn(stage),
-        *_target(stage, nominal),
     )
 
 

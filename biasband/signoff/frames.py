@@ -14,6 +14,7 @@ if TYPE_CHECKING:
     import pandas as pd
 
     from biasband.circuit.scenarios import Array
+    from biasband.signoff.contrasting import Contrasted
     from biasband.signoff.drifting import Drift
 
 
@@ -82,3 +83,18 @@ def drift_frame(temperatures: Array, drifts: Mapping[str, Drift]) -> pd.DataFram
         for name, found in drifts.items()
     }
     return pd.concat(frames, names=["quantity", "temperature"])
+
+
+def contrast_frame(rows: Sequence[Contrasted]) -> pd.DataFrame:
+    """The contrast table: a row per topology; one that cannot be built has its problem and nothing else."""
+    import pandas as pd
+
+    table = {
+        row.topology: {
+            "verdict": None if row.trial is None else row.trial.verdict.outcome,
+            **({} if row.trial is None else row.trial.figures),
+            "problem": row.problem,
+        }
+        for row in rows
+    }
+    return pd.DataFrame.from_dict(table, orient="index").rename_axis("topology")

@@ -21,7 +21,7 @@ from biasband.values.candidates import candidate_sets, stock_warnings
 from biasband.values.capacitors import CapacitorChoice, choose_capacitors, with_capacitances
 from biasband.values.device import hand, refined
 from biasband.values.ideal import Ideal, Step, ideal
-from biasband.values.joint import Contest, Progress, contest, silent
+from biasband.values.joint import FINALISTS, Contest, Progress, contest, silent
 from biasband.values.pairing import Offer, offers
 from biasband.values.shelf import Shelf, shelves
 from biasband.values.snapping import snapped
@@ -84,14 +84,18 @@ class Design:
         return sum(part.chosen for part in self.parts) + sum(each.chosen for each in self.capacitors)
 
 
-def choose(stage: Stage, series: Mapping[str, Series], *, progress: Progress = silent) -> Design:
+def choose(
+    stage: Stage, series: Mapping[str, Series], *, finalists: int = FINALISTS, progress: Progress = silent
+) -> Design:
     """Give every free resistor a value that can be bought, then every free capacitor.
+
+    `finalists` sets of values are held against everything; of a single one, the best at the corners.
 
     Raises PhysicallyImpossible where no positive resistors meet the target, the stock list has no parts
     for them, or no capacitors meet the lowest frequency; UsageError where more than 200 000 sets of values
     would have to be compared.
     """
-    design = _choose_resistors(_with_capacitors_short(stage), series, progress)
+    design = _choose_resistors(_with_capacitors_short(stage), series, finalists, progress)
     if not stage.capacitors:
         return design
     valued = replace(design.stage, capacitors=stage.capacitors, requirements=stage.requirements)
@@ -110,7 +114,9 @@ def _with_capacitors_short(stage: Stage) -> Stage:
     return replace(stage, capacitors=(), requirements=asked) if stage.capacitors else stage
 
 
-def _choose_resistors(stage: Stage, series: Mapping[str, Series], progress: Progress) -> Design:
+def _choose_resistors(
+    stage: Stage, series: Mapping[str, Series], finalists: int, progress: Progress
+) -> Design:
     fixed = {r.name: r.value for r in stage.resistors if r.value is not None}
     target = stage.target
     if target is None or len(fixed) == len(stage.resistors):
@@ -122,7 +128,7 @@ def _choose_resistors(stage: Stage, series: Mapping[str, Series], progress: Prog
     room = shelves(stage, series)
     found, (values, warnings) = None, snapped(stage, target, fixed, exact, room)
     if stage.snapping == "margin":
-        found = _compared(stage, exact, room, values, progress)
+        found = _compared(stage, exact, room, values, finalists, progress)
         values = {**fixed, **dict(zip(found.names, found.contenders[0].values, strict=True))}
         warnings = []
     warnings += stock_warnings(stage, exact, room, values)
@@ -167,13 +173,18 @@ def _hand_steps(stage: Stage, target: Target, fixed: Mapping[str, float]) -> Map
 
 
 def _compared(
-    stage: Stage, exact: Ideal, room: Mapping[str, Shelf], nearest: Mapping[str, float], progress: Progress
+    stage: Stage,
+    exact: Ideal,
+    room: Mapping[str, Shelf],
+    nearest: Mapping[str, float],
+    finalists: int,
+    progress: Progress,
 ) -> Contest:
     """Hold the sets around the ideal values against each other."""
     names, home = tuple(room), tuple(nearest[name] for name in room)
     sets = candidate_sets(stage, exact, room, home)
     place = sets.index(home) if home in sets else None
-    return contest(stage, names, np.array(sets), nearest=place, progress=progress)
+    return contest(stage, names, np.array(sets), nearest=place, finalists=finalists, progress=progress)
 
 
 def _frozen_away(stage: Stage, fixed: Mapping[str, float]) -> Iterator[str]:

@@ -24,6 +24,7 @@ from biasband.margins.holding import Holding, hold_all, nominal
 from biasband.margins.records import NAN, Margin
 from biasband.stage import Stage, Target
 from biasband.values.bench import CURRENT, SWING, Bench, Indices, bench, hold_sets
+from biasband.variation.corners import Corners
 
 FINALISTS = 3
 """How many sets are held against everything and shown side by side."""
@@ -58,7 +59,8 @@ class Contender:
     corners; both are −inf where a nominal value fails. `smallest` is the row with the smallest share,
     `failing` are those that fail. `current` [A] is the nominal collector current, `swing` [V] the
     smallest symmetric swing at any corner, NaN where neither a requirement nor the choice is about it.
-    `regions` are runaway and unsolved, where a corner lies there: then every row counts as failing.
+    `corners` are those that it was held at. `regions` are runaway and unsolved, where a corner lies there:
+    then every row counts as failing.
     """
 
     values: tuple[float, ...]
@@ -69,6 +71,7 @@ class Contender:
     failing_at_corners: int
     current: float
     swing: float
+    corners: Corners
     regions: tuple[Region, ...] = ()
 
 
@@ -77,9 +80,9 @@ class Contest:
     """What the joint choice found: contenders for the resistors `names`, the best first.
 
     `nearest` is the set that nearness alone gives, among the contenders or behind them; None where the
-    stock list has too few pieces for it. `sets` is how many were compared; `by_swing` says that it was
-    by their swing, the stage having no requirements. `proved` is False where the search was given up,
-    so that a better set is not ruled out.
+    stock list has too few pieces for it, or a single contender was asked for. `sets` is how many were
+    compared; `by_swing` says that it was by their swing, the stage having no requirements. `proved` is
+    False where the search was given up, so that a better set is not ruled out.
     """
 
     names: tuple[str, ...]
@@ -95,22 +98,31 @@ def silent(done: float) -> None:
 
 
 def contest(
-    stage: Stage, names: tuple[str, ...], values: Array, *, nearest: int | None, progress: Progress = silent
+    stage: Stage,
+    names: tuple[str, ...],
+    values: Array,
+    *,
+    nearest: int | None,
+    finalists: int = FINALISTS,
+    progress: Progress = silent,
 ) -> Contest:
     """Compare S sets of values [Ω] for the resistors `names`, shape (S, P); `nearest` is the row of one.
+
+    With a single one of the `finalists` the best at the corners wins, whatever requirements are judged by,
+    and the nearest set is not held against it.
 
     With requirements, the smallest margin share over them and the standing checks decides. Without, it is
     failing checks, then how many tenths the collector current is off its target, then the swing. Then
     come nearness of the collector current to its target and fewer distinct values. The other resistors
     of the stage have values.
     """
-    search = _Search(bench(_valued(stage, names, values[nearest or 0]), names), values, progress)
-    home = [] if nearest is None else [nearest]
+    search = _Search(bench(_valued(stage, names, values[nearest or 0]), names), values, finalists, progress)
+    home = [] if nearest is None or finalists == 1 else [nearest]
     known = {*search.finalists(beside=home), *home}
     return Contest(
         names=names,
-        contenders=tuple(sorted((search.exact[row] for row in known), key=search.rule.own_key)[:FINALISTS]),
-        nearest=None if nearest is None else search.exact[nearest],
+        contenders=tuple(sorted((search.exact[row] for row in known), key=search.rule.own_key)[:finalists]),
+        nearest=search.exact[home[0]] if home else None,
         sets=len(values),
         by_swing=search.rule.by_swing,
         proved=search.proved,
@@ -152,8 +164,8 @@ class _Rule:
 class _Search:
     """A branch and bound under way: bounds for all sets, exact figures for those that needed them."""
 
-    def __init__(self, bench: Bench, values: Array, progress: Progress) -> None:
-        self.bench, self.values, self.progress = bench, values, progress
+    def __init__(self, bench: Bench, values: Array, count: int, progress: Progress) -> None:
+        self.bench, self.values, self.count, self.progress = bench, values, count, progress
         self.rule = _rule(bench.stage)
         self.everywhere = np.arange(len(bench.corners))
         self.pool = self._telling_corners()
@@ -166,7 +178,7 @@ class _Search:
         """The best sets, the best first, all held against everything, as are those `beside` them."""
         while True:
             order = self._order()
-            leading = order[:FINALISTS]
+            leading = order[: self.count]
             if not self.held_everywhere[leading].all():
                 self._hold_everywhere(order[~self.held_everywhere[order]][:_BATCH])
                 continue
@@ -175,7 +187,7 @@ class _Search:
                 return [int(row) for row in leading]
             if len(self.exact) >= MOST_HELD:
                 self.proved = False
-                return sorted(self.exact, key=lambda row: self.rule.corner_key(self.exact[row]))[:FINALISTS]
+                return sorted(self.exact, key=lambda row: self.rule.corner_key(self.exact[row]))[: self.count]
             self.hold_exactly([*bounded, *beside])
 
     def hold_exactly(self, rows: Sequence[int]) -> None:
@@ -253,6 +265,7 @@ def _contender(values: Array, current: float, held: Holding) -> Contender:
         failing=held.rows if lost else tuple(row for row in held.rows if row.verdict == "fail"),
         failing_at_corners=sum(bool(lost) or not row.passes_at_corners for row in held.rows),
         current=current,
+        corners=corners,
         swing=corners.ranges[SWING].low.value if SWING in corners.ranges and not lost else NAN,
         regions=tuple(sorted(lost)),
     )
