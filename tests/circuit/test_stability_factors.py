@@ -83,7 +83,7 @@ def cold(case: Case) -> Case:
     return replace(case, transistor=transistor, temperature=1e-3)
 
 
-@settings(max_examples=60)
+@settings(max_examples=40)
 @given(case=ideal_cases(), leakage=st.sampled_from([0.0, 1e-7]))
 def test_slope_of_current_against_leakage_is_the_factor(case: Case, leakage: float) -> None:
     case = replace(cold(case), leakage=leakage)
@@ -96,7 +96,10 @@ def test_slope_of_current_against_leakage_is_the_factor(case: Case, leakage: flo
     ports_move = step * expected.leakage * sum(case.resistances.values())
     assume(ports_move > 1e-2)  # 1e-9 V beside it is 1e-7
     found = slope(case, leakage=(leakage + step, step))
-    assert found == pytest.approx(expected.leakage, rel=1e-5 if ports_move < 0.1 else CLOSE)
+    # However cold, V_T is there: 86 nV beside the volts that drive the base.
+    drive = point.collector_current[0] / -expected.base_emitter
+    slack = (1e-5 if ports_move < 0.1 else CLOSE) + 86e-9 / drive
+    assert found == pytest.approx(expected.leakage, rel=slack)
 
 
 def test_factors_with_leakage_flowing_are_those_of_the_equation() -> None:
