@@ -94,20 +94,21 @@ class Scrambled:
 
     @property
     def tasks(self) -> int:
-        """A task for each stretch of each scrambling."""
+        """A task for each stretch of each scrambling, in turns: an interrupted run has some of every one."""
         return SCRAMBLINGS * -(-self.each // STRETCH)
 
     def group(self, task: int) -> int:
         """The scrambling that a task belongs to."""
-        return task * SCRAMBLINGS // self.tasks
+        return task % SCRAMBLINGS
 
     def blocks(self, numbers: Sequence[Number], task: int) -> Iterator[Block]:
         """The boards of one stretch."""
         stretch = min(STRETCH, self.each)
-        points = self._points_from(task * stretch)
+        first = self.group(task) * self.each + task // SCRAMBLINGS * stretch
+        points = self._points_from(first)
         for rows in chunks(stretch, BLOCK):
             drawn = points.random(rows.stop - rows.start)
-            yield Block(task * stretch + rows.start, self._seated(numbers, drawn))
+            yield Block(first + rows.start, self._seated(numbers, drawn))
 
     def board(self, numbers: Sequence[Number], board: int) -> Mapping[str, Array]:
         """The uniform numbers of one board, (1,) each."""

@@ -125,7 +125,7 @@ def _held(
     evidence = Evidence(
         nominal=middle.values,
         corners=wide.corners,
-        rss=summing.rss(stage, measures, cut_off=cut_off),
+        rss=summing.rss(stage, measures, cut_off=cut_off, points=points),
         boards=sampled,
         causes=causing.causes(stage, ranges, everything, cut_off=cut_off),
         outside=wide.outside,

@@ -40,7 +40,7 @@ def _words(each: Beyond, corners: int, boards: int) -> str:
 def _claim(name: str, found: Monotone) -> str:
     if found.holds:
         looked = f"wherever it was looked at ({found.looked_at} places)"
-        return f"zero claimed, since {name} was monotone over the box {looked}"
+        return f"zero claimed, since {name} was monotone along all that differs between boards, {looked}"
     why = [] if found.breaks_along is None else [f"{name} turns along {contributor(found.breaks_along)}"]
     why += [f"{found.unsolved} of {found.looked_at} places were not solved"] if found.unsolved else []
     return f"not proved between them: {', '.join(why)}"
@@ -54,7 +54,7 @@ def _rare(found: Rare) -> str:
     if not found.resolved:
         return f"below {high} (95 %), too few for a figure: {how}, {draws}"
     error = percent(found.standard_error / found.probability)
-    return f"{_ppm(found.probability)} ± {error} (95 %: {low} to {high}), {how}, {draws}"
+    return f"{_ppm(found.probability)} (standard error {error}; 95 %: {low} to {high}), {how}, {draws}"
 
 
 def _ppm(share: float) -> str:

@@ -7,6 +7,7 @@ from collections.abc import Iterator, Mapping
 from biasband.boards.quasi import SCRAMBLINGS
 from biasband.circuit.operating_point import Region
 from biasband.constants import VERSION
+from biasband.margins.holding import nominal
 from biasband.show.table import REGION_WORDS, Passage, Report, Tone
 from biasband.signoff.goals import DigitsGoal
 from biasband.signoff.spread_study import SpreadStudy
@@ -21,7 +22,7 @@ _LEFT_OUT = "Boards without a point count as failing; means and quantiles leave 
 
 def alarms(study: SpreadStudy) -> Report:
     """What a reader must know before any figure: that the run is partial, that points are missing."""
-    return (*_partial(study), *_without_point(study))
+    return (*_partial(study), *_nominal(study), *_without_point(study))
 
 
 def _partial(study: SpreadStudy) -> Iterator[Passage]:
@@ -31,6 +32,12 @@ def _partial(study: SpreadStudy) -> Iterator[Passage]:
     elif study.ending == "interrupted":
         title = f"PARTIAL: interrupted after {study.boards} of {study.job.source.boards} boards"
         yield Passage(title, ("All that follows rests on the boards so far.",), "fail")
+
+
+def _nominal(study: SpreadStudy) -> Iterator[Passage]:
+    region = nominal(study.job.stage, {}).region
+    if region in (Region.SATURATED, Region.CUT_OFF):
+        yield Passage(f"THE NOMINAL POINT ITSELF IS {REGION_WORDS[region].upper()}", (), "fail")
 
 
 def _without_point(study: SpreadStudy) -> Iterator[Passage]:
@@ -66,11 +73,16 @@ def _source(study: SpreadStudy) -> str:
         return "plain: each board drawn at random"
     boards = study.job.source.boards
     rounded = f", rounded up from {study.asked} boards" if boards != study.asked else ""
+    if study.boards != boards:
+        each = study.tallies[0].boards
+        return f"quasi-random: {len(study.tallies)} scramblings, the first {each} points of each"
     each = (boards // SCRAMBLINGS).bit_length() - 1
     return f"quasi-random: {SCRAMBLINGS} scramblings of 2^{each} points{rounded}"
 
 
 def _ending(study: SpreadStudy) -> str:
+    if study.ending == "interrupted" and study.boards == study.job.source.boards:
+        return "run complete, but causes not looked for"
     if study.ending == "interrupted":
         return f"interrupted after {study.boards} of {study.job.source.boards} boards"
     if study.goal is None:

@@ -7,7 +7,6 @@ from collections.abc import Iterator
 
 from biasband.boards.estimates import Estimate, Figures
 from biasband.boards.in_use import PLACES
-from biasband.boards.quasi import SCRAMBLINGS
 from biasband.boards.sampling import QUANTILES
 from biasband.boards.tally import BINS
 from biasband.quantity import Kind
@@ -79,7 +78,7 @@ def _estimate_notes(study: SpreadStudy) -> Iterator[str]:
             f"statistics{batches}; with a + or −: too few boards for the other side."
         )
     else:
-        yield f"±: the 95 % interval by Student's t over the {SCRAMBLINGS} scramblings."
+        yield f"±: the 95 % interval by Student's t over the {len(study.tallies)} scramblings."
     worst = max(_resolutions(study), default=None)
     if worst is not None:
         _, name, width = worst

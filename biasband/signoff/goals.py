@@ -11,7 +11,7 @@ import numpy as np
 from biasband.boards.in_use import PLACES
 from biasband.boards.job import Job
 from biasband.boards.sampling import QUANTILES
-from biasband.boards.stopping import SequenceFigures, narrow, stable
+from biasband.boards.stopping import SequenceFigures, least_sequence, narrow, stable
 from biasband.boards.summary import summary
 from biasband.boards.tally import Tally
 from biasband.circuit.scenarios import Array
@@ -62,6 +62,8 @@ class DigitsGoal:
 
     def met(self, job: Job, total: Tally, sequence: Tally) -> bool:
         """Whether one more sequence would no longer change the digits."""
+        if sequence.boards < least_sequence(QUANTILES[-1] - QUANTILES[0]):
+            return False
         self.seen.append(_figures(job, sequence))
         if len(self.seen) < FEWEST_SEQUENCES:
             return False
@@ -88,9 +90,11 @@ def read_goal(text: str, *, boards_per_batch: int = 1) -> Goal:
     Raises UsageError for anything but a joint yield with its ±, or one or two digits.
     """
     tidy = " ".join(text.split())
-    if found := re.fullmatch(r"yield ?(?:±|\+/-) ?(.+)", tidy):
+    if found := re.fullmatch(r"yield ?(?:±|\+/-) ?(.+%)", tidy):
         return YieldGoal(tidy, _half_width(text, found.group(1)), boards_per_batch)
     if found := re.fullmatch(r"([12]) ?digits?", tidy):
+        if boards_per_batch > 1:
+            raise UsageError("--until: digits need independent boards, not batches: ask for a yield")
         return DigitsGoal(tidy, int(found.group(1)))
     raise UsageError(f"--until: read {text!r}; {_ALLOWED}")
 

@@ -6,7 +6,7 @@ from collections.abc import Callable, Mapping
 from concurrent.futures import Executor
 from contextlib import AbstractContextManager, nullcontext
 from dataclasses import dataclass
-from typing import TYPE_CHECKING
+from typing import get_args
 
 from biasband.boards.draws import batch_size, coordinates_from, numbers
 from biasband.boards.estimates import from_plain, from_scramblings
@@ -35,11 +35,11 @@ from biasband.variation.corners import Corners, corners
 from biasband.variation.evaluation import cut_off_current
 from biasband.variation.rss import Interval, rss
 
-if TYPE_CHECKING:
-    pass
-
 Watch = Callable[[str, int], AbstractContextManager[Callable[[float], None]]]
 """Shows what is being done, for how many boards (0: none), and is told the share that is done."""
+
+MOST = 10**18
+"""More boards than this have no numbers of their own."""
 
 MOST_UNTIL = 2**24
 """Boards at which a run with a goal gives up, unless the caller says otherwise."""
@@ -69,7 +69,11 @@ def spread(
     Raises UsageError for boards or a seed that cannot be sampled with, a goal that cannot be read, or a
     cluster that cannot be reached; PhysicallyImpossible where the target cannot be met.
     """
-    check_sampling(BOARDS if boards is None else boards, seed, most=None)
+    check_sampling(BOARDS if boards is None else boards, seed, most=MOST)
+    if sampling not in get_args(Sampling):
+        raise UsageError(f"sampling: one of {', '.join(get_args(Sampling))}; read {sampling!r}")
+    if keep is not None and (executor is not None or cluster is not None):
+        raise UsageError("keep: boards are handed over in this process, without an executor or a cluster")
     goal = None if until is None else read_goal(until, boards_per_batch=batch_size(stage))
     if goal is not None and sampling != "plain":
         raise UsageError("--until: judged on plain boards only, not on quasi-random ones")
@@ -101,7 +105,8 @@ def _prepare(stage: Stage, sampling: Sampling, boards: int, seed: int) -> _Prepa
     measures, cut_off = looked_into(stage), cut_off_current(stage)
     found = corners(stage, measures, cut_off=cut_off)
     limits = required_limits(stage.requirements, words(stage), nominal(stage, measures).values)
-    summed = rss(stage, measures, cut_off=cut_off)
+    points = points_met(stage, found, measures)
+    summed = rss(stage, measures, cut_off=cut_off, points=points)
     names = dict.fromkeys(limit.measure.name for limit in limits)
     source: Source = (
         Plain(boards, seed, batch_size(stage))
@@ -115,7 +120,7 @@ def _prepare(stage: Stage, sampling: Sampling, boards: int, seed: int) -> _Prepa
             *map(_bound, limits),
             *(Bound(name, summed[name].low, summed[name].high, required=False) for name in names),
         ),
-        points=points_met(stage, found, measures),
+        points=points,
         source=source,
         seed=seed,
         cut_off=cut_off,

@@ -27,14 +27,16 @@ class Interval:
     high: float
 
 
-def rss(stage: Stage, measures: Measures, *, cut_off: float) -> Mapping[str, Interval]:
-    """The RSS interval of every measure, the envelope over the points of use.
+def rss(
+    stage: Stage, measures: Measures, *, cut_off: float, points: tuple[PointOfUse, ...] = ()
+) -> Mapping[str, Interval]:
+    """The RSS interval of every measure, the envelope over `points`; without any, over the points of use.
 
     `high = max over points of: centre + sqrt(Σ max(δ_low, δ_high, 0)²)`; low likewise. Worked case:
     2.5 V·(1 + R1/R2), 121 k and 10 k at 1 %, moved in full, gives 32.324 V to 33.180 V.
     Source: root-sum-square tolerance analysis, "common practice".
     """
-    points, boards = points_of_use(stage), board_axes(stage)
+    points, boards = points or points_of_use(stage), board_axes(stage)
     outcome = evaluate(stage, _moves(stage, points, boards), measures, cut_off=cut_off)
     shape = (len(points), 1 + 2 * len(boards))
     return {

@@ -97,7 +97,7 @@ def test_points_do_not_depend_on_the_stretch_and_stay_with_their_scrambling(monk
     monkeypatch.setattr(quasi, "BLOCK", block)
     assert source.tasks == 1024 // stretch
     groups = [source.group(task) for task in range(source.tasks)]
-    assert groups == np.repeat(np.arange(16), 64 // stretch).tolist()
+    assert groups == np.tile(np.arange(16), 64 // stretch).tolist()
     mine = [drawn(of, source, task) for task in range(source.tasks) if source.group(task) == 2]
     for name, values in whole.items():
         assert np.concatenate([part[name] for part in mine]).tobytes() == values.tobytes(), name

@@ -292,8 +292,8 @@ def beyond(rare: Rare) -> str:
 
 def test_rare_failures_come_with_their_error_and_what_stands_behind_them() -> None:
     assert (
-        "R-1 collector_voltage ≥ 3 V: some corner fails, of 2048 boards none: 12.5 ppm ± 4.8 % "
-        "(95 %: 11.4 ppm to 13.7 ppm), importance sampling, 840 effective failures of 32768 draws"
+        "R-1 collector_voltage ≥ 3 V: some corner fails, of 2048 boards none: 12.5 ppm (standard error "
+        "4.8 %; 95 %: 11.4 ppm to 13.7 ppm), importance sampling, 840 effective failures of 32768 draws"
     ) in beyond(FEW)
 
 
@@ -361,7 +361,7 @@ def test_rss_is_not_judged_on_quasi_random_boards() -> None:
 def test_claim_says_how_often_was_looked_or_why_it_is_not_proved() -> None:
     of = spread_of(HIVE)
     held = replace(of.beyond[0], standing="none", monotone=Monotone(True, 312, 0, None))
-    assert "since collector_voltage was monotone over the box wherever it was looked at (312 places)" in text(
+    assert "since collector_voltage was monotone along all that differs between boards, wherever" in text(
         replace(of, beyond=(held,))
     )
     bent = replace(held, standing="none found", monotone=Monotone(False, 312, 4, "gain"))

@@ -145,11 +145,11 @@ def test_yield_goal_stops_as_soon_as_it_is_known(monkeypatch):
 
 
 def test_digits_goal_leaves_the_digits_steady(monkeypatch):
-    monkeypatch.setattr(streams, "SEQUENCE", 4096)
+    monkeypatch.setattr(streams, "SEQUENCE", 38_000)  # 37 038 at least (JCGM 101:2008, 7.9.4 b)
     of = plainly()
     one, other = (bb.spread(of, until="1 digit", seed=seed, boards=400_000) for seed in (1, 2))
     assert {one.ending, other.ending} == {"good enough"}
-    assert one.boards >= 4 * 4096  # fewer sequences are steady by luck
+    assert one.boards >= 4 * 38_000  # fewer sequences are steady by luck
     here, there = (each.estimates["collector_voltage"].nominal_use for each in (one, other))
     # One digit of a deviation of some 3.8 V is 0.5 V (JCGM 101:2008, 7.9.2); both are off by as much at most.
     assert here.sd == pytest.approx(there.sd, abs=1.0)
@@ -161,8 +161,29 @@ def test_goal_that_is_out_of_reach_is_said_to_be():
     assert (found.ending, found.boards, found.asked) == ("not good enough", 512, 512)
 
 
+def test_short_sequences_say_nothing_of_digits():
+    found = bb.spread(plainly(), until="1 digit", boards=30_000)
+    assert (found.ending, found.boards) == ("not good enough", 30_000)
+
+
+def test_digits_are_refused_where_boards_come_in_batches():
+    with pytest.raises(UsageError, match="batches"):
+        bb.spread(bb.read_stage(SAMPLES / "ice_warner.toml"), until="1 digit")
+
+
+def test_kept_boards_stay_in_this_process():
+    with ThreadPoolExecutor(1) as one, pytest.raises(UsageError, match="keep"):
+        bb.spread(plainly(), boards=64, executor=one, keep=lambda stage, block: None)
+
+
+def test_unknown_sampling_is_refused():
+    with pytest.raises(UsageError, match="one of plain, quasi-random; read 'even'"):
+        bb.spread(plainly(), boards=64, sampling="even")
+
+
 @pytest.mark.parametrize(
-    "text", ["yield", "yield ± 0 %", "yield ± 60 %", "3 digits", "yield ± soon", "", "mean ± 1 %"]
+    "text",
+    ["yield", "yield ± 0.1", "yield ± 0 %", "yield ± 60 %", "3 digits", "yield ± soon", "", "mean ± 1 %"],
 )
 def test_goal_that_cannot_be_read_is_refused(text):
     with pytest.raises(UsageError, match="--until"):
@@ -189,17 +210,17 @@ def test_interrupted_run_gives_what_it_has(monkeypatch):
     assert differences(found.total, whole.total) == []
 
 
-def test_interrupted_scrambling_is_left_out(monkeypatch):
+def test_scramblings_that_are_behind_when_interrupted_are_left_out(monkeypatch):
     monkeypatch.setattr("biasband.boards.quasi.STRETCH", 16)
     done: list[float] = []
 
     def impatient(share: float) -> None:
         done.append(share)
-        if len(done) == 10:  # two scramblings of four stretches each, and half of a third
+        if len(done) == 20:  # a stretch of every scrambling, and another one of four
             raise KeyboardInterrupt
 
     found = bb.spread(plainly(), boards=1024, sampling="quasi-random", watch=watching(impatient))
-    assert [tally.boards for tally in found.tallies] == [64, 64]
+    assert [tally.boards for tally in found.tallies] == [32] * 4
 
 
 def test_interruption_before_any_board_is_one(monkeypatch):

@@ -247,3 +247,70 @@ def test_monotone_stage_has_no_further_points_of_use():
         limits(17.1, 18.0, 18.9), ambient=Limits.exactly(298.15),
     )  # fmt: skip
     assert review(of, boards=4).evidence.boards.points == 3
+
+
+STILL = """
+[stage]
+title = "Relay sniffer, invented"
+topology = "collector-feedback"
+polarity = "npn"
+[supply]
+voltage = "5 V ± 5 %"
+[ambient]
+min = "0 degC"
+nominal = "25 degC"
+max = "70 degC"
+[transistor]
+type = "invented"
+gain = { min = 200, typ = 200, max = 200 }
+test_current = "1 mA"
+test_voltage = "5 V"
+base_emitter_voltage = "0.65 V"
+leakage = "0 A"
+saturation_voltage = "0.2 V"
+early_voltage = "80 V"
+thermal_resistance = "250 K/W"
+max_collector_emitter = "45 V"
+max_current = "100 mA"
+max_power = "500 mW"
+max_junction = "150 degC"
+source = "invented"
+[target]
+collector_current = "1 mA"
+collector = "2.4 V"
+[signal]
+load = "22k"
+[resistors]
+series = "E12"
+tolerance = "0 %"
+tempco = "0 ppm/K"
+life_drift = "0 %"
+power_rating = "0.25 W"
+[[require]]
+id = "F-1"
+quantity = "collector_voltage"
+at_least = "1.8 V"
+at_most = "3 V"
+reason = "next stage"
+[[require]]
+id = "F-2"
+quantity = "supply_current"
+at_most = "1.5 mA"
+reason = "battery"
+[[require]]
+id = "F-3"
+quantity = "symmetric_peak_swing"
+at_least = "1 V"
+reason = "swing"
+"""
+
+
+def test_rss_meets_every_point_that_boards_meet(tmp_path):
+    # No board differs from another, so RSS, which moves nothing, spans just what each of them meets in use.
+    (tmp_path / "still.toml").write_text(STILL, encoding="utf-8")
+    of = review(bb.read_stage(tmp_path / "still.toml"), boards=4)
+    assert of.evidence.boards.points > 5  # the swing has an extreme inside the range of use
+    for name, interval in of.evidence.rss.items():
+        met = of.spread[name]
+        assert interval.low == pytest.approx(met.lowest_in_use.lowest, rel=1e-12), name
+        assert interval.high == pytest.approx(met.highest_in_use.highest, rel=1e-12), name
