@@ -128,7 +128,8 @@ def test_folder_stands_for_its_stage_files(tmp_path):
     (tmp_path / "folder.toml").mkdir()
     result = run("review", tmp_path, *FEW)
     assert result.exit_code == 0
-    assert re.findall(r"(\w+)\.toml", result.stdout) == ["a", "b"]
+    shown = "".join(result.stdout.split())  # a long temporary folder breaks the lines anywhere
+    assert re.findall(r"(\w+)\.toml", shown) == ["a", "b"]
     assert "part.toml: left out" in result.stderr and "folder.toml: left out" in result.stderr
 
 
