@@ -13,6 +13,7 @@ from pathlib import Path
 import pytest
 from hypothesis import HealthCheck, given, settings
 from hypothesis import strategies as st
+from terminal import Terminal
 from typer.testing import CliRunner
 
 from biasband import cli
@@ -389,22 +390,6 @@ def test_interrupt_leaves_without_a_traceback(monkeypatch):
     monkeypatch.setattr(study, "review", interrupted)
     result = run("review", HIVE)
     assert (result.exit_code, result.stdout) == (130, "")  # 128 + SIGINT, as shells count
-
-
-class Terminal:
-    encoding = "utf-8"
-
-    def __init__(self):
-        self.text = ""
-
-    def isatty(self):
-        return True
-
-    def write(self, text):
-        self.text += text
-
-    def flush(self):
-        pass
 
 
 @pytest.mark.parametrize("paths", [[HIVE], [HIVE, FAILING]])

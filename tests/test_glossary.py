@@ -23,7 +23,8 @@ from biasband.boards.tally import Bound, Scale, Tally
 from biasband.boards.variance import VarianceCauses
 from biasband.margins.checks import NotMade, Standing
 from biasband.margins.holding import Holding, Nominal
-from biasband.margins.over_temperature import Failure, HeldLimit
+from biasband.margins.limits import HeldLimit
+from biasband.margins.over_temperature import Failure
 from biasband.margins.records import Evidence, Margin
 from biasband.margins.verdict import Verdict
 from biasband.signoff.beyond import Beyond

@@ -24,6 +24,10 @@ class Estimate:
     value: float
     interval: Between
 
+    def named(self, name: str) -> dict[str, float]:
+        """The figure under a name, and the ends of its interval beside it."""
+        return {name: self.value, f"{name}_low": self.interval.low, f"{name}_high": self.interval.high}
+
 
 @dataclass(frozen=True)
 class Figures:

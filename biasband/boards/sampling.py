@@ -76,11 +76,6 @@ class Spread:
         held = (self.lowest_in_use.values >= low) & (self.highest_in_use.values <= high)
         return float(np.mean(held))
 
-    def failures(self, limit: float, *, lower: bool) -> int:
-        """How many boards pass a lower (or upper) limit [SI] at any point of use, or did not solve."""
-        values = self.lowest_in_use.values if lower else -self.highest_in_use.values
-        return int(np.count_nonzero(~(values >= (limit if lower else -limit))))
-
 
 @dataclass(frozen=True)
 class Boards:

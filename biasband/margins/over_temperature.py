@@ -2,21 +2,14 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterator, Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
 from itertools import pairwise
 from math import isfinite
 from typing import Literal
 
 from biasband.circuit.operating_point import Region
-from biasband.circuit.quantities import Quantity
-from biasband.margins.checks import Standing
-from biasband.margins.records import NAN, Side
-from biasband.margins.requirements import limits_of
-from biasband.quantity import Kind
-from biasband.stage import Requirement
-from biasband.variation.corners import Corners
-from biasband.variation.sweep import without_point
+from biasband.margins.records import NAN
 
 Ending = Literal["holds", "fails", "fails at start", "runaway", "unsolved", "not known", "not swept"]
 
@@ -24,73 +17,6 @@ EXACT = 1e-4
 """[K] A temperature of failure is found this exactly."""
 
 _ENDINGS: Mapping[Region, Ending] = {Region.RUNAWAY: "runaway", Region.UNSOLVED: "unsolved"}
-
-
-@dataclass(frozen=True)
-class HeldLimit:
-    """A limit as the worst case meets it: the end of a measure's range that may not pass `bound` [SI].
-
-    `limit` is as it was required, NaN for a standing check, whose measure is its slack. `lower` says that the
-    lowest value counts.
-    """
-
-    id: str
-    quantity: str
-    kind: Kind
-    limit: float
-    side: Side
-    measure: Quantity
-    lower: bool
-    bound: float
-
-    @property
-    def standing(self) -> bool:
-        """Whether this is a standing check."""
-        return not self.id
-
-    def margin(self, found: Corners) -> float:
-        """How far the worst value is from the bound, negative beyond it; NaN where none is known."""
-        if without_point(found) is not None:
-            return NAN
-        ends = found.ranges[self.measure.name]
-        return ends.low.value - self.bound if self.lower else self.bound - ends.high.value
-
-
-def required_limits(
-    requirements: Sequence[Requirement], vocabulary: Mapping[str, Quantity], nominal: Mapping[str, float]
-) -> tuple[HeldLimit, ...]:
-    """Every limit of the requirements, whatever they are judged by."""
-    return tuple(
-        _required(requirement, side, limit, vocabulary[requirement.quantity], nominal)
-        for requirement in requirements
-        for side, limit in limits_of(requirement)
-    )
-
-
-def held_limits(
-    requirements: Sequence[Requirement],
-    standing: Standing,
-    vocabulary: Mapping[str, Quantity],
-    nominal: Mapping[str, float],
-) -> tuple[HeldLimit, ...]:
-    """Every limit of the requirements, whatever they are judged by, and every standing check made."""
-    return (*required_limits(requirements, vocabulary, nominal), *_checked(standing))
-
-
-def _required(
-    requirement: Requirement, side: Side, limit: float, quantity: Quantity, nominal: Mapping[str, float]
-) -> HeldLimit:
-    """One limit; one on the magnitude of what inverts is a limit of the other sign on the other side."""
-    inverted = quantity.by_magnitude and nominal[quantity.name] < 0.0
-    return HeldLimit(
-        id=requirement.id, quantity=quantity.name, kind=quantity.kind, limit=limit, side=side,
-        measure=quantity, lower=(side == "at_least") is not inverted, bound=-limit if inverted else limit,
-    )  # fmt: skip
-
-
-def _checked(standing: Standing) -> Iterator[HeldLimit]:
-    for check in standing.made:
-        yield HeldLimit("", check.name, check.value.kind, NAN, check.side, check.slack, True, 0.0)
 
 
 @dataclass(frozen=True)

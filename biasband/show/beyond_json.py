@@ -5,7 +5,7 @@ from __future__ import annotations
 from dataclasses import asdict
 from typing import Any
 
-from biasband.margins.over_temperature import HeldLimit
+from biasband.margins.limits import HeldLimit
 from biasband.signoff.beyond import Beyond
 
 

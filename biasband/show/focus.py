@@ -7,7 +7,7 @@ from dataclasses import dataclass
 from biasband.boards.estimates import Estimates, Figures
 from biasband.circuit.quantities import Quantity
 from biasband.circuit.topology import TOPOLOGIES, Node
-from biasband.margins.over_temperature import HeldLimit
+from biasband.margins.limits import HeldLimit
 from biasband.show.prose import limit_on, limit_text
 from biasband.signoff.spread_study import SpreadStudy
 

@@ -10,7 +10,7 @@ from biasband.boards.sampling import Boards
 from biasband.circuit.topology import EMITTER_PARTS, Node
 from biasband.constants import VERSION
 from biasband.coupling import BYPASS, INPUT, OUTPUT
-from biasband.margins.over_temperature import HeldLimit
+from biasband.margins.limits import HeldLimit
 from biasband.margins.records import Margin
 from biasband.quantity import Kind
 from biasband.show.table import figure, percent, whole_percent, yield_percent

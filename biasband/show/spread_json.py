@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from dataclasses import asdict
 
-from biasband.boards.estimates import Estimate, Estimates, Figures
+from biasband.boards.estimates import Estimates, Figures
 from biasband.boards.in_use import PLACES
 from biasband.boards.variance import VarianceCauses
 from biasband.circuit.operating_point import Region
@@ -70,19 +70,15 @@ def _places(found: Estimates) -> Json:
 
 
 def _figures(found: Figures) -> Json:
-    quantiles = (_with_interval(f"p{100 * share:g}", each) for share, each in found.quantiles.items())
+    quantiles = (each.named(f"p{100 * share:g}") for share, each in found.quantiles.items())
     return {
-        **_with_interval("mean", found.mean),
+        **found.mean.named("mean"),
         "sd": found.sd,
         **{key: value for each in quantiles for key, value in each.items()},
         "lowest": found.lowest,
         "highest": found.highest,
         "resolution": found.resolution,
     }
-
-
-def _with_interval(name: str, found: Estimate) -> Json:
-    return {name: found.value, f"{name}_low": found.interval.low, f"{name}_high": found.interval.high}
 
 
 def _held(held: Held) -> Json:

@@ -7,7 +7,7 @@ from dataclasses import replace
 
 from biasband.boards.sampling import QUANTILES
 from biasband.boards.summary import NAN
-from biasband.margins.over_temperature import HeldLimit
+from biasband.margins.limits import HeldLimit
 from biasband.show.focus import Focus, focuses
 from biasband.show.histogram import legend, picture_of
 from biasband.show.pictures import off_axis

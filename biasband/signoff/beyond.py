@@ -8,7 +8,7 @@ from typing import Literal
 
 from biasband.boards.monotone import Monotone, monotone
 from biasband.boards.rare import Rare, rare_failures
-from biasband.margins.over_temperature import HeldLimit
+from biasband.margins.limits import HeldLimit
 from biasband.stage import Stage
 from biasband.variation.corners import Corners
 from biasband.variation.points_of_use import PointOfUse

@@ -14,7 +14,7 @@ from biasband.circuit.topology import TOPOLOGIES, Topology
 from biasband.constants import BOARDS
 from biasband.errors import PhysicallyImpossible, UsageError
 from biasband.margins.holding import Holding, Nominal, hold, nominal
-from biasband.margins.over_temperature import required_limits
+from biasband.margins.limits import required_limits
 from biasband.margins.records import Margin
 from biasband.margins.verdict import Verdict, judge
 from biasband.signoff.intake import known_series

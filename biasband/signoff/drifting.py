@@ -15,14 +15,8 @@ from biasband.circuit.quantities import Quantity, words
 from biasband.circuit.reading import wiring_of
 from biasband.circuit.scenarios import Array
 from biasband.margins.checks import Standing, standing_checks
-from biasband.margins.over_temperature import (
-    EXACT,
-    Failure,
-    HeldLimit,
-    Seen,
-    first_failure,
-    held_limits,
-)
+from biasband.margins.limits import HeldLimit, held_limits
+from biasband.margins.over_temperature import EXACT, Failure, Seen, first_failure
 from biasband.quantity import Kind
 from biasband.signoff.study import CHOOSING, design
 from biasband.signoff.sweep_range import SAME, SweepRange, Temperature, sweep_range

@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Mapping, Sequence
 from typing import TYPE_CHECKING
 
-from biasband.boards.estimates import Estimate, Estimates
+from biasband.boards.estimates import Estimates
 from biasband.boards.in_use import PLACES
 from biasband.margins.records import Margin
 from biasband.variation.corners import Corners
@@ -54,23 +54,18 @@ def estimates_frame(estimates: Mapping[str, Estimates]) -> pd.DataFrame:
 
     rows = {
         (name, place): {
-            **_with_interval("mean", found.mean),
+            **found.mean.named("mean"),
             "sd": found.sd,
             **{
                 key: value
                 for share, quantile in found.quantiles.items()
-                for key, value in _with_interval(f"p{100 * share:g}", quantile).items()
+                for key, value in quantile.named(f"p{100 * share:g}").items()
             },
         }
         for name, each in estimates.items()
         for place, found in ((place, getattr(each, place)) for place in PLACES)
     }
     return pd.DataFrame.from_dict(rows, orient="index").rename_axis(["quantity", "place"])
-
-
-def _with_interval(name: str, estimate: Estimate) -> dict[str, float]:
-    interval = estimate.interval
-    return {name: estimate.value, f"{name}_low": interval.low, f"{name}_high": interval.high}
 
 
 def drift_frame(temperatures: Array, drifts: Mapping[str, Drift]) -> pd.DataFrame:

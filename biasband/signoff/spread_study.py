@@ -17,7 +17,7 @@ from biasband.boards.summary import NAN, Summary, summary
 from biasband.boards.tally import Tally
 from biasband.boards.variance import VarianceCauses
 from biasband.margins.holding import nominal
-from biasband.margins.over_temperature import HeldLimit
+from biasband.margins.limits import HeldLimit
 from biasband.signoff.beyond import Beyond
 from biasband.signoff.goals import Goal
 from biasband.signoff.sampling_run import Ending

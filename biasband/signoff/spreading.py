@@ -21,7 +21,7 @@ from biasband.circuit.quantities import words
 from biasband.constants import BOARDS
 from biasband.errors import UsageError
 from biasband.margins.holding import looked_into, nominal, points_met
-from biasband.margins.over_temperature import HeldLimit, required_limits
+from biasband.margins.limits import HeldLimit, required_limits
 from biasband.signoff.beyond import Beyond, beyond
 from biasband.signoff.crew import crew
 from biasband.signoff.goals import Goal, read_goal
@@ -117,7 +117,7 @@ def _prepare(stage: Stage, sampling: Sampling, boards: int, seed: int) -> _Prepa
         stage=stage,
         scales={name: Scale(each.low.value, each.high.value) for name, each in found.ranges.items()},
         bounds=(
-            *map(_bound, limits),
+            *(limit.as_bound for limit in limits),
             *(Bound(name, summed[name].low, summed[name].high, required=False) for name in names),
         ),
         points=points,
@@ -126,12 +126,6 @@ def _prepare(stage: Stage, sampling: Sampling, boards: int, seed: int) -> _Prepa
         cut_off=cut_off,
     )
     return _Prepared(job, found, limits, summed)
-
-
-def _bound(limit: HeldLimit) -> Bound:
-    if limit.lower:
-        return Bound(limit.measure.name, low=limit.bound)
-    return Bound(limit.measure.name, high=limit.bound)
 
 
 def _study(chosen: Design, prepared: _Prepared, found: Run, *, asked: int, goal: Goal | None) -> SpreadStudy:

@@ -9,14 +9,17 @@ from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
+import numpy as np
+
 from biasband.boards import sampling
+from biasband.boards.tally import Bound
 from biasband.circuit.quantities import Quantity, words
 from biasband.constants import BOARDS, MOST_BOARDS
 from biasband.errors import UsageError
 from biasband.files.series_files import load_series
 from biasband.margins.checks import Standing
 from biasband.margins.holding import Nominal, hold, looked_into, nominal, points_met
-from biasband.margins.over_temperature import required_limits
+from biasband.margins.limits import required_limits
 from biasband.margins.records import Evidence, Margin
 from biasband.margins.requirements import joint_yield
 from biasband.margins.verdict import Verdict, judge
@@ -173,9 +176,15 @@ def review(stage: Stage, *, boards: int = BOARDS, seed: int = 1, progress: Progr
 def _beyond(stage: Stage, evidence: Evidence, seed: int) -> tuple[Beyond, ...]:
     """What the corners and the drawn boards leave open."""
     limits = required_limits(stage.requirements, words(stage), evidence.nominal)
-    spread = evidence.boards.spread
-    failures = [spread[limit.measure.name].failures(limit.bound, lower=limit.lower) for limit in limits]
+    failures = [_failures(evidence.boards, limit.as_bound) for limit in limits]
     points = points_met(stage, evidence.corners, looked_into(stage))
     return beyond(
         stage, limits, evidence.corners, points, failures, seed=seed, cut_off=cut_off_current(stage)
     )
+
+
+def _failures(boards: sampling.Boards, bound: Bound) -> int:
+    """How many boards do not hold a bound at every point of use, or did not solve."""
+    met = boards.spread[bound.measure]
+    holds = bound.holds(met.lowest_in_use.values, met.highest_in_use.values)
+    return boards.boards - int(np.count_nonzero(holds))

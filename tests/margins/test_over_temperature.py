@@ -12,7 +12,8 @@ from hypothesis import strategies as st
 from biasband.circuit.operating_point import Region
 from biasband.circuit.quantities import Quantity
 from biasband.margins.checks import standing_checks
-from biasband.margins.over_temperature import EXACT, Failure, HeldLimit, Seen, first_failure, held_limits
+from biasband.margins.limits import HeldLimit, held_limits
+from biasband.margins.over_temperature import EXACT, Failure, Seen, first_failure
 from biasband.quantity import Kind
 from biasband.stage import Requirement
 from biasband.variation.corners import Corners, Extreme, Range

@@ -7,26 +7,11 @@ import sys
 import time
 
 import pytest
+from terminal import Terminal
 
 from biasband.show import output, progress_bar
 
 STEERING = re.compile(r"\x1b\[[0-9;?]*[A-Za-z]")
-
-
-class Terminal:
-    encoding = "utf-8"
-
-    def __init__(self):
-        self.text = ""
-
-    def isatty(self):
-        return True
-
-    def write(self, text):
-        self.text += text
-
-    def flush(self):
-        pass
 
 
 def on_terminal(monkeypatch, patience=0.0):
